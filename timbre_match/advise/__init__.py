@@ -1,0 +1,1 @@
+"""Comparison to what the trade tries."""

@@ -1,0 +1,1 @@
+"""Profile and target to comparison."""

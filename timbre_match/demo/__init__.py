@@ -1,0 +1,1 @@
+"""An invented workshop: physical models of instruments with a known truth."""

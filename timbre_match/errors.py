@@ -1,0 +1,77 @@
+"""The whole error tree on one page.
+
+Every error that a maker can cause or mend derives from :class:`TimbreMatchError`. Its message says what went wrong,
+where, the likely cause and what to do next; the command line prints that message and exits with status 1.
+"""
+
+
+class TimbreMatchError(Exception):
+    """Base of every error that this package raises on purpose.
+
+    Parameters
+    ----------
+    what : str
+        What went wrong, with the offending value where there is one.
+    where : str
+        The file, option or place inside a file; may be empty.
+    cause : str
+        The likely cause; may be empty.
+    remedy : str
+        What to do next; may be empty.
+    """
+
+    def __init__(self, what: str, *, where: str = "", cause: str = "", remedy: str = "") -> None:
+        self.what = what
+        self.where = where
+        self.cause = cause
+        self.remedy = remedy
+        super().__init__(what, where, cause, remedy)
+
+    def __str__(self) -> str:
+        first = f"{self.where}: {self.what}" if self.where else self.what
+        lines = [first]
+        if self.cause:
+            lines.append(f"  likely cause: {self.cause}")
+        if self.remedy:
+            lines.append(f"  what to do: {self.remedy}")
+        return "\n".join(lines)
+
+
+class RecordingError(TimbreMatchError):
+    """A recording cannot be read, or nothing in it can be measured."""
+
+
+class NoHeldNoteError(RecordingError):
+    """A recording was read, but holds no note that is steady for long enough."""
+
+
+class SavedFileError(TimbreMatchError):
+    """A saved profile, target or comparison cannot be read: not JSON, a missing key, a wrong type."""
+
+
+class FileVersionError(SavedFileError):
+    """A saved file was written by a later major version of the format."""
+
+
+class OutputError(TimbreMatchError):
+    """A result cannot be written where it was asked for."""
+
+
+class ComparisonError(TimbreMatchError):
+    """Two profiles have nothing in common that could be compared."""
+
+
+class UnknownNameError(TimbreMatchError):
+    """A note name, family or option value that this package does not know."""
+
+
+__all__ = [
+    "ComparisonError",
+    "FileVersionError",
+    "NoHeldNoteError",
+    "OutputError",
+    "RecordingError",
+    "SavedFileError",
+    "TimbreMatchError",
+    "UnknownNameError",
+]

@@ -1,0 +1,1 @@
+"""File or live blocks to recordings, held notes and cycles."""

@@ -1,0 +1,1 @@
+"""What is written down: profiles, targets and comparisons as files."""

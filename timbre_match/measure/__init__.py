@@ -1,0 +1,1 @@
+"""Cycles to recipe to profile."""

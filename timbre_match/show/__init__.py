@@ -1,0 +1,1 @@
+"""For human eyes: tables and figures."""
