@@ -60,7 +60,7 @@ def synthesise(coefficients: ArrayLike) -> NDArray[np.complex128]:
 
 
 def coefficient(cycles: ArrayLike, k: int) -> NDArray[np.complex128]:
-    """The single coefficient a_k by the analysis equation as it is written, for any integer k.
+    """Sum the analysis equation as it is written, for a single coefficient a_k with any integer k.
 
     Parameters
     ----------

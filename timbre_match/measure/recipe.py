@@ -59,7 +59,7 @@ class Recipe:
 
     def __post_init__(self) -> None:
         for name, kind in _ARRAYS.items():
-            array = np.array(getattr(self, name), dtype=kind)
+            array: NDArray[np.generic] = np.array(getattr(self, name), dtype=kind)
             if array.shape != np.shape(self.k):
                 raise ValueError(f"{name} has shape {array.shape}, but k has shape {np.shape(self.k)}")
             array.setflags(write=False)
