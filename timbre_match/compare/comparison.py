@@ -1,92 +1,238 @@
 """Profile and target in, comparison out."""
 
-from dataclasses import dataclass
-from typing import Literal
+import numpy as np
+from numpy.typing import NDArray
 
-Verdict = Literal["stronger", "weaker", "alike", "unsettled"]
+from timbre_match.compare import body_curve, colour, model, verdicts
+from timbre_match.compare.estimates import Estimates, estimate
+from timbre_match.compare.playing import Evidence, gather
+from timbre_match.compare.records import (
+    ColourDistance,
+    Comparison,
+    CurvePoint,
+    HarmonicDifference,
+    Interval,
+    Region,
+    Repeatability,
+    Verdict,
+)
+from timbre_match.compare.target import Target, as_target
+from timbre_match.measure.profile import Profile
+
+__all__ = [
+    "ColourDistance",
+    "Comparison",
+    "CurvePoint",
+    "HarmonicDifference",
+    "Interval",
+    "Region",
+    "Repeatability",
+    "Verdict",
+    "compare",
+    "tolerance_db",
+]
+
+Array = NDArray[np.float64]
+
+DEFAULT_MARGIN_DB = 3.0
+
+_SEED = 20261
+_Z95 = 1.959963984540054
+_CORE = 0.7
 
 
-@dataclass(frozen=True, kw_only=True, slots=True)
-class Interval:
-    """A value with its 95 % interval."""
+def compare(
+    profile: Profile,
+    target: Profile | Target,
+    *,
+    margin_db: float = DEFAULT_MARGIN_DB,
+    rng: np.random.Generator | None = None,
+) -> Comparison:
+    """Compare an instrument with a target: verdicts, body curve, regions, colour distance and closeness.
 
-    value: float
-    low: float
-    high: float
+    Parameters
+    ----------
+    profile : Profile
+        The instrument.
+    target : Profile or Target
+        What to match; a plain profile is a target with one member.
+    margin_db : float
+        Differences within +-margin count as alike where that is certain enough.
+    rng : numpy Generator, optional
+        Source of the draws behind bands and intervals. By default a new generator with a fixed seed, so that the same
+        input gives the same answer.
 
+    Returns
+    -------
+    Comparison
+        All differences are instrument minus target, from the reference level that
+        :mod:`timbre_match.compare.body_curve` describes.
 
-@dataclass(frozen=True, kw_only=True, slots=True)
-class ColourDistance:
-    """Colour distance in dB with its 95 % interval, and the same number between the instrument's own takes.
-
-    `own_db` is None where one take alone says nothing about it and the prior is silent.
+    Raises
+    ------
+    ComparisonError
+        If the two have no note, or no heard harmonic, in common.
+    ValueError
+        If `margin_db` is not positive.
     """
+    if not margin_db > 0:
+        raise ValueError(f"margin_db is {margin_db}; a margin in dB is positive")
+    generator = np.random.default_rng(_SEED) if rng is None else rng
+    whole = as_target(target)
+    evidence = gather(profile, whole)
+    grid_hz, estimates = _estimated(evidence, generator)
+    curve = _curve(grid_hz, estimates)
+    bands = colour.all_bands(evidence.note_index, evidence.freq_hz, evidence.target_db, estimates.harmonic_draws_db)
+    own = colour.distance_between_takes(
+        evidence.note_index, evidence.freq_hz, evidence.instrument_db, evidence.instrument_takes_db
+    )
+    harmonics = _harmonics(evidence, estimates, margin_db)
+    return Comparison(
+        instrument=profile.instrument,
+        stage=profile.stage,
+        family=profile.family,
+        target=whole.name,
+        margin_db=margin_db,
+        colour_distance=ColourDistance(distance_db=_interval(colour.colour_distance(bands)), own_db=own),
+        closeness_percent=_interval(colour.closeness(bands, margin_db)),
+        repeatability=Repeatability(
+            source="both" if evidence.repeats else "prior",
+            takes=len(profile.takes),
+            target_takes=sum(len(member.takes) for member in whole.members),
+        ),
+        harmonics=harmonics,
+        body_curve=curve,
+        regions=_regions(evidence, estimates, curve),
+        remarks=evidence.remarks + _remarks(harmonics),
+    )
 
-    distance_db: Interval
-    own_db: float | None
 
+def tolerance_db(target: Target) -> float | None:
+    """How far a target's members lie from the blend of the others: their root-mean-square colour distance in dB.
 
-@dataclass(frozen=True, kw_only=True, slots=True)
-class Repeatability:
-    """Where the scatter came from, and from how many takes."""
-
-    source: Literal["takes", "prior", "both"]
-    takes: int
-    target_takes: int
-
-
-@dataclass(frozen=True, kw_only=True, slots=True)
-class HarmonicDifference:
-    """Instrument minus target for one harmonic of one note, dB with a 95 % interval.
-
-    `p` is the two-sided p-value of "no difference"; `takes_needed` the number of takes a side that would settle an
-    unsettled verdict (None where it is settled, or where no practicable number would settle it).
+    None where the target has one member, or members without a note in common.
     """
-
-    note: str
-    k: int
-    freq_hz: float
-    difference_db: Interval
-    p: float
-    verdict: Verdict
-    takes_needed: int | None
-
-
-@dataclass(frozen=True, kw_only=True, slots=True)
-class CurvePoint:
-    """The body curve at one frequency: pointwise 95 % interval and the simultaneous 95 % band."""
-
-    freq_hz: float
-    difference_db: Interval
-    simultaneous_low_db: float
-    simultaneous_high_db: float
+    if len(target.members) < 2:
+        return None
+    found = []
+    for place, member in enumerate(target.members):
+        others = target.members[:place] + target.members[place + 1 :]
+        evidence = gather(member, Target(name=target.name, members=others))
+        estimates = _estimated(evidence, np.random.default_rng(_SEED))[1]
+        bands = colour.all_bands(evidence.note_index, evidence.freq_hz, evidence.target_db, estimates.harmonic_draws_db)
+        found.append(_interval(colour.colour_distance(bands)).value)
+    return float(np.sqrt(np.mean(np.square(found))))
 
 
-@dataclass(frozen=True, kw_only=True, slots=True)
-class Region:
-    """A stretch of frequency where the simultaneous band leaves zero."""
-
-    low_hz: float
-    high_hz: float
-    difference_db: Interval
-    verdict: Verdict
-    harmonics: int
-    notes: int
+def _estimated(evidence: Evidence, rng: np.random.Generator) -> tuple[Array, Estimates]:
+    """Grid in Hz, and the fitted model's estimates on it."""
+    fit = model.fit(evidence.differences, list(evidence.repeats), evidence.prior, rng)
+    grid_hz = body_curve.frequency_grid(evidence.freq_hz)
+    octave, smooth = evidence.curve_columns(grid_hz)
+    return grid_hz, estimate(fit, evidence.differences, grid_hz, octave, smooth, rng)
 
 
-@dataclass(frozen=True, kw_only=True, slots=True)
-class Comparison:
-    """How an instrument differs from a target; all differences are instrument minus target."""
+def _interval(draws: Array) -> Interval:
+    low, middle, high = np.quantile(draws, [0.025, 0.5, 0.975])
+    return Interval(value=float(middle), low=float(low), high=float(high))
 
-    instrument: str
-    stage: str
-    family: str
-    target: str
-    margin_db: float
-    colour_distance: ColourDistance
-    closeness_percent: Interval
-    repeatability: Repeatability
-    harmonics: tuple[HarmonicDifference, ...]
-    body_curve: tuple[CurvePoint, ...]
-    regions: tuple[Region, ...]
-    remarks: tuple[str, ...]
+
+def _normal_interval(value: float, sd: float) -> Interval:
+    return Interval(value=value, low=value - _Z95 * sd, high=value + _Z95 * sd)
+
+
+def _harmonics(evidence: Evidence, estimates: Estimates, margin_db: float) -> tuple[HarmonicDifference, ...]:
+    difference, sd = estimates.harmonic_db, estimates.harmonic_sd_db
+    p = verdicts.difference_p(difference, sd)
+    threshold = verdicts.false_discovery_threshold(p)
+    different = p <= threshold
+    alike = verdicts.equivalence_p(difference, sd, margin_db) <= verdicts.EQUIVALENCE_LEVEL
+    needed = verdicts.takes_needed(
+        difference,
+        estimates.scatter_variance,
+        estimates.own_variance,
+        estimates.shared_variance,
+        takes=evidence.takes,
+        margin_db=margin_db,
+        threshold=threshold or verdicts.FALSE_DISCOVERY_RATE,
+    )
+    found = []
+    for i in range(difference.size):
+        verdict: Verdict = "unsettled"
+        if different[i]:
+            verdict = "stronger" if difference[i] > 0 else "weaker"
+        elif alike[i]:
+            verdict = "alike"
+        found.append(
+            HarmonicDifference(
+                note=evidence.notes[evidence.note_index[i]],
+                k=int(evidence.k[i]),
+                freq_hz=float(evidence.freq_hz[i]),
+                difference_db=_normal_interval(float(difference[i]), float(sd[i])),
+                p=float(p[i]),
+                verdict=verdict,
+                takes_needed=int(needed[i]) if verdict == "unsettled" and needed[i] else None,
+            )
+        )
+    return tuple(found)
+
+
+def _curve(grid_hz: Array, estimates: Estimates) -> tuple[CurvePoint, ...]:
+    centre, sd = estimates.curve_db, estimates.curve_sd_db
+    factor = max(body_curve.simultaneous_factor(estimates.curve_draws_db, centre, sd), _Z95)
+    return tuple(
+        CurvePoint(
+            freq_hz=float(hz),
+            difference_db=_normal_interval(float(value), float(one)),
+            simultaneous_low_db=float(value - factor * one),
+            simultaneous_high_db=float(value + factor * one),
+        )
+        for hz, value, one in zip(grid_hz, centre, sd, strict=True)
+    )
+
+
+def _regions(evidence: Evidence, estimates: Estimates, curve: tuple[CurvePoint, ...]) -> tuple[Region, ...]:
+    """Stretches where the simultaneous band leaves zero and at least one harmonic was measured.
+
+    A region's size is the mean of the curve over its core, where it exceeds 0.7 of its largest value in the region.
+    """
+    low = np.array([point.simultaneous_low_db for point in curve])
+    high = np.array([point.simultaneous_high_db for point in curve])
+    hz = np.array([point.freq_hz for point in curve])
+    half_step = np.sqrt(hz[1] / hz[0]) if hz.size > 1 else 1.0
+    found = []
+    for stretch in body_curve.stretches(low, high):
+        inside = slice(stretch.first, stretch.last + 1)
+        bounds = hz[stretch.first] / half_step, hz[stretch.last] * half_step
+        members = (evidence.freq_hz >= bounds[0]) & (evidence.freq_hz <= bounds[1])
+        if not np.any(members):
+            continue
+        values = estimates.curve_db[inside]
+        core = np.abs(values) >= _CORE * np.max(np.abs(values))
+        value = float(np.mean(values[core]))
+        sd = float(np.std(np.mean(estimates.curve_draws_db[:, inside][:, core], axis=1)))
+        found.append(
+            Region(
+                low_hz=float(max(bounds[0], hz[0])),
+                high_hz=float(min(bounds[1], hz[-1])),
+                difference_db=_normal_interval(value, sd),
+                verdict="stronger" if value > 0 else "weaker",
+                harmonics=int(np.count_nonzero(members)),
+                notes=int(np.unique(evidence.note_index[members]).size),
+            )
+        )
+    return tuple(found)
+
+
+def _remarks(harmonics: tuple[HarmonicDifference, ...]) -> tuple[str, ...]:
+    """Say what more takes would buy."""
+    unsettled = [one for one in harmonics if one.verdict == "unsettled"]
+    needed = [one.takes_needed for one in unsettled if one.takes_needed is not None]
+    if not needed:
+        return ()
+    fewest = min(needed)
+    count = sum(1 for one in needed if one <= fewest)
+    return (
+        f"{len(unsettled)} of {len(harmonics)} harmonics are unsettled; "
+        f"with {fewest} takes a side about {count} of them should settle",
+    )

@@ -1,12 +1,33 @@
 """Held notes: where in a recording a note is steady, and how steady."""
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Literal
 
 import numpy as np
+import scipy.ndimage
 from numpy.typing import NDArray
 
+from timbre_match import units
+from timbre_match.errors import NoHeldNoteError
+from timbre_match.intake.envelope import Envelope, is_ringing, level_envelope, steady_stretch
+from timbre_match.intake.octave import settle_octave
+from timbre_match.intake.pitch import HOP_S, PitchTrack, reduce_rate, track_pitch
+from timbre_match.intake.recording import Recording
+from timbre_match.intake.warp import BandLimited, Clock, refine_clock
+
 NoteKind = Literal["held", "ringing"]
+
+_SHORTEST_SEGMENT_S = 0.1
+_SHORTEST_S = 0.06
+_FEWEST_CYCLES = 4
+_VOICED = 0.35
+_QUIETEST_DB = 50.0
+_ABOVE_FLOOR_DB = 6.0
+_STEP_CENTS = 65.0
+_STEP_FRAMES = 8
+_SETTLE_S = 1.5
+_NAMED_WITHIN_CENTS = 70.0
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
@@ -37,3 +58,204 @@ class HeldNote:
     kind: NoteKind
     track_s: NDArray[np.float64]
     track_hz: NDArray[np.float64]
+
+    def __post_init__(self) -> None:
+        for name in ("track_s", "track_hz"):
+            array = np.array(getattr(self, name), dtype=np.float64)
+            array.setflags(write=False)
+            object.__setattr__(self, name, array)
+
+
+def held_notes(
+    recording: Recording, *, notes: Sequence[str] | None = None, a4_hz: float = units.STANDARD_A4_HZ
+) -> tuple[HeldNote, ...]:
+    """Find the held and ringing notes of a recording, in order of time.
+
+    Parameters
+    ----------
+    recording : Recording
+    notes : sequence of str, optional
+        The notes that were played. A note found an octave or a twelfth off one of these is moved to it; other notes
+        are left out.
+    a4_hz : float
+        Tuning reference for the note names, Hz.
+
+    Returns
+    -------
+    tuple of HeldNote
+        Attack, release and bow changes are left out of each.
+
+    Raises
+    ------
+    NoHeldNoteError
+        If no note is steady for long enough, or none of `notes` is there.
+    """
+    samples, rate = reduce_rate(recording.samples, recording.sample_rate_hz)
+    track = track_pitch(samples, rate)
+    envelope = level_envelope(samples, rate)
+    signal = BandLimited(samples, rate, oversample=1)
+    wanted_hz = None if notes is None else [units.note_to_hz(name, a4_hz) for name in notes]
+    settled = []
+    for first, last in _segments(track, envelope):
+        f0_hz = _settled_hz(signal, rate, track, first, last)
+        if wanted_hz is not None:
+            f0_hz *= _factor_to(f0_hz, wanted_hz)
+        settled.append((first, last, f0_hz))
+    found = []
+    for first, last, f0_hz in _merged(settled, envelope):
+        note = _measured(signal, rate, track, envelope, first, last, f0_hz, a4_hz)
+        if note is not None and (wanted_hz is None or _is_one_of(note.f0_hz, wanted_hz)):
+            found.append(note)
+    if not found:
+        raise NoHeldNoteError(
+            "no held note found" if notes is None else f"none of the notes {' '.join(notes)} found",
+            where=recording.file,
+            cause="noise, silence, chords, or notes shorter than about 0.2 s",
+            remedy="record single notes, each held for a second or more, close to the microphone",
+        )
+    return tuple(found)
+
+
+def _segments(track: PitchTrack, envelope: Envelope) -> list[tuple[int, int]]:
+    """First and last frame of each stretch of one pitch without a new attack."""
+    floor_db = float(np.percentile(track.level_db, 5))
+    loudest_db = float(track.level_db.max())
+    threshold_db = max(loudest_db - _QUIETEST_DB, min(floor_db + _ABOVE_FLOOR_DB, loudest_db - 20.0))
+    voiced = (track.strength > _VOICED) & (track.level_db > threshold_db)
+    # One or two doubtful frames do not end a note.
+    voiced = scipy.ndimage.binary_closing(np.pad(voiced, 3), iterations=2)[3:-3]
+    cuts = np.zeros(len(voiced), dtype=bool)
+    cuts[_pitch_steps(track, voiced)] = True
+    for instant in envelope.renewals_s:
+        cuts[min(len(cuts) - 1, round(instant / HOP_S))] = True
+    segments, first = [], None
+    for frame in range(len(voiced) + 1):
+        inside = frame < len(voiced) and bool(voiced[frame])
+        if first is not None and (not inside or cuts[frame]):
+            segments.append((first, frame - 1))
+            first = frame if inside else None
+        elif first is None and inside:
+            first = frame
+    return [(a, b) for a, b in segments if (b - a + 1) * HOP_S >= _SHORTEST_SEGMENT_S]
+
+
+def _pitch_steps(track: PitchTrack, voiced: NDArray[np.bool_]) -> NDArray[np.int64]:
+    """Frames at which the pitch steps to another note and stays there; vibrato is averaged away."""
+    width = _STEP_FRAMES
+    if len(voiced) < 2 * width + 1 or not voiced.any():
+        return np.zeros(0, dtype=np.int64)
+    frames = np.arange(len(voiced))
+    cents = np.interp(frames, frames[voiced], 1200.0 * np.log2(track.f0_hz[voiced]))
+    cents = scipy.ndimage.median_filter(cents, 3, mode="nearest")
+    middle = np.lib.stride_tricks.sliding_window_view(cents, width).mean(axis=1)
+    # middle[i] speaks for frames i ... i + width - 1: compare what comes before frame n with what comes after it.
+    step = np.zeros(len(cents))
+    step[width : len(cents) - width + 1] = np.abs(middle[width:] - middle[:-width])
+    step[~voiced] = 0.0
+    peak = (step > _STEP_CENTS) & (step == scipy.ndimage.maximum_filter1d(step, 2 * width + 1))
+    # A plateau of equal medians is one step, at its middle.
+    labels, count = scipy.ndimage.label(peak)
+    return np.array([int(round(float(np.mean(np.nonzero(labels == i + 1)[0])))) for i in range(count)], dtype=np.int64)
+
+
+def _settled_hz(signal: BandLimited, rate: float, track: PitchTrack, first: int, last: int) -> float:
+    """Fundamental in Hz of a segment, its octave decided over the loudest second and a half."""
+    frames = np.arange(first, last + 1)
+    f0_hz = _folded(track.f0_hz[frames], _middle_hz(track.f0_hz[frames], track.strength[frames]))
+    part = _loudest_part(track.level_db[frames])
+    clock = settle_octave(signal, rate, Clock(track.time_s[frames][part], f0_hz[part]))
+    return float(np.median(clock.f0_hz))
+
+
+def _merged(segments: list[tuple[int, int, float]], envelope: Envelope) -> list[tuple[int, int, float]]:
+    """Segments with neighbours joined that turned out to be one note: the track had slipped an octave between them."""
+    joined: list[tuple[int, int, float]] = []
+    for first, last, f0_hz in segments:
+        if joined:
+            before, until, before_hz = joined[-1]
+            renewed = any(until - 1 <= instant / HOP_S <= first + 1 for instant in envelope.renewals_s)
+            same = abs(units.cents_between(f0_hz, before_hz)) < _STEP_CENTS
+            if first - until <= 2 and same and not renewed:
+                joined[-1] = (before, last, f0_hz if last - first > until - before else before_hz)
+                continue
+        joined.append((first, last, f0_hz))
+    return joined
+
+
+def _measured(
+    signal: BandLimited,
+    rate: float,
+    track: PitchTrack,
+    envelope: Envelope,
+    first: int,
+    last: int,
+    f0_hz: float,
+    a4_hz: float,
+) -> HeldNote | None:
+    """The held note between two frames, or None where too little of it is steady."""
+    begin_s, end_s = float(track.time_s[first]), float(track.time_s[last])
+    ringing = is_ringing(envelope, begin_s, end_s)
+    start_s, stop_s = steady_stretch(envelope, begin_s, end_s, ringing=ringing)
+    frames = np.flatnonzero((track.time_s >= start_s) & (track.time_s <= stop_s))
+    if stop_s - start_s < _SHORTEST_S or len(frames) < 3:
+        return None
+    time_s = track.time_s[frames].copy()
+    # The track reaches to both ends of the stretch.
+    time_s[0], time_s[-1] = start_s, stop_s
+    clock = refine_clock(signal, Clock(time_s, _folded(track.f0_hz[frames], f0_hz)), rate)
+    if clock.cycles < _FEWEST_CYCLES:
+        return None
+    mean_hz = clock.turns / (stop_s - start_s)
+    name, cents = units.nearest_note(mean_hz, a4_hz)
+    return HeldNote(
+        note=name,
+        f0_hz=mean_hz,
+        cents=cents,
+        start_s=start_s,
+        end_s=stop_s,
+        cycles=clock.cycles,
+        kind="ringing" if ringing else "held",
+        track_s=clock.time_s,
+        track_hz=clock.f0_hz,
+    )
+
+
+def _middle_hz(f0_hz: NDArray[np.float64], strength: NDArray[np.float64]) -> float:
+    """Median of the track, weighted by strength."""
+    order = np.argsort(f0_hz)
+    weight = np.cumsum(strength[order])
+    return float(f0_hz[order][np.searchsorted(weight, 0.5 * weight[-1])])
+
+
+def _folded(f0_hz: NDArray[np.float64], around_hz: float) -> NDArray[np.float64]:
+    """The track with frames that are octaves or twelfths off `around_hz` moved to it, and others bridged."""
+    factors = np.array([1.0, 2.0, 0.5, 3.0, 1.0 / 3.0, 4.0, 0.25])
+    off = np.abs(np.log2(f0_hz[:, None] * factors / around_hz))
+    best = off.argmin(axis=1)
+    good = off[np.arange(len(f0_hz)), best] < 1.5 / 12.0
+    if not good.any():
+        return np.full(len(f0_hz), around_hz)
+    index = np.arange(len(f0_hz))
+    return np.interp(index, index[good], (f0_hz * factors[best])[good])
+
+
+def _loudest_part(level_db: NDArray[np.float64]) -> slice:
+    """The frames of the loudest stretch of up to 1.5 s."""
+    width = max(4, int(_SETTLE_S / HOP_S))
+    if len(level_db) <= width:
+        return slice(0, len(level_db))
+    power = np.cumsum(np.concatenate([[0.0], 10.0 ** (level_db / 10.0)]))
+    first = int(np.argmax(power[width:] - power[:-width]))
+    return slice(first, first + width)
+
+
+def _factor_to(f0_hz: float, wanted_hz: list[float]) -> float:
+    """What moves `f0_hz` to one of the notes that were played: an octave or a twelfth at most."""
+    for factor in (1.0, 0.5, 2.0, 1.0 / 3.0, 3.0):
+        if _is_one_of(f0_hz * factor, wanted_hz):
+            return factor
+    return 1.0
+
+
+def _is_one_of(f0_hz: float, wanted_hz: list[float]) -> bool:
+    return any(abs(units.cents_between(f0_hz, hz)) < _NAMED_WITHIN_CENTS for hz in wanted_hz)

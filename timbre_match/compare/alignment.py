@@ -1,0 +1,302 @@
+"""Pairing notes and harmonics, and aligning takes in gain.
+
+Levels in dB. Arrays over paired harmonics have shape (n_harmonics,), those over takes as well (n_takes, n_harmonics);
+NaN stands where a harmonic was not heard. Notes are paired by name, since each profile's names go by its own tuning.
+"""
+
+import math
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from timbre_match.compare.repeatability import ScatterPrior
+from timbre_match.errors import ComparisonError
+from timbre_match.measure.profile import Profile, Take
+from timbre_match.units import note_number
+
+Array = NDArray[np.float64]
+IntArray = NDArray[np.int64]
+
+SET_ASIDE_WEIGHT = 0.3
+"""A level whose robust weight is below this counts as set aside; at a typical tail it lies 4 scales off its fellows."""
+
+_ROUNDS = 12
+_PRIOR_SCALE_DF = 10.0
+
+
+@dataclass(frozen=True, kw_only=True, slots=True, eq=False)
+class Pairing:
+    """Harmonics that the instrument and the target have in common, ordered by note and k.
+
+    Attributes
+    ----------
+    notes : tuple of str
+        Paired notes, low to high.
+    note_index : int64 array, shape (n_harmonics,)
+        Index into `notes`.
+    k : int64 array, shape (n_harmonics,)
+    freq_hz : float64 array, shape (n_harmonics,)
+        Geometric mean of the two sides' frequencies.
+    instrument, target : tuple of (level_db, se_db)
+        One pair of arrays, each of shape (n_takes, n_harmonics), for every profile of the side.
+    remarks : tuple of str
+        What was left out, and why.
+    """
+
+    notes: tuple[str, ...]
+    note_index: IntArray
+    k: IntArray
+    freq_hz: Array
+    instrument: tuple[tuple[Array, Array], ...]
+    target: tuple[tuple[Array, Array], ...]
+    remarks: tuple[str, ...]
+
+
+@dataclass(frozen=True, kw_only=True, slots=True, eq=False)
+class AlignedTakes:
+    """Takes of one profile after a robust gain alignment of every note.
+
+    Attributes
+    ----------
+    mean_db : array, shape (n_harmonics,)
+        Robust mean over the takes; NaN where no take has the harmonic.
+    spread : array, shape (n_harmonics,)
+        Variance of that mean in units of the squared scatter of a single take.
+    residual_db : array, shape (n_takes, n_harmonics)
+        Level less gain less mean; the takes' tilts are still in it. NaN where not heard or heard in one take alone.
+    weight : array, shape (n_takes, n_harmonics)
+        Robust weights, 1 on average for a Student t distribution; 0 where not heard.
+    variance_ratio, df : arrays, shape (n_harmonics,)
+        Robust variance within the takes (gain and tilt removed) over the prior's, and its degrees of freedom.
+    """
+
+    mean_db: Array
+    spread: Array
+    residual_db: Array
+    weight: Array
+    variance_ratio: Array
+    df: Array
+
+
+def pair(instrument: Profile, members: tuple[Profile, ...]) -> Pairing:
+    """Pair the notes and harmonics of an instrument with those of a target's members.
+
+    Held notes of the same name within one take count once: their levels are averaged. A harmonic is paired where each
+    side has heard it in at least half of the takes that hold the note.
+
+    Raises
+    ------
+    ComparisonError
+        If a side holds no notes, or no harmonic is heard on both sides.
+    """
+    ours = [_notes_of_take(take) for take in instrument.takes]
+    theirs = [[_notes_of_take(take) for take in member.takes] for member in members]
+    our_names = {name for take in ours for name in take}
+    their_names = {name for member in theirs for take in member for name in take}
+    common = sorted(our_names & their_names, key=note_number)
+    if not common:
+        raise ComparisonError(
+            f"no note in common: the instrument has {_listed(our_names)}, the target {_listed(their_names)}",
+            cause="different notes were recorded, or a note was measured under another name",
+            remedy="record the same notes on both sides, or name them when measuring (--notes)",
+        )
+    remarks = _one_sided_remarks(our_names, their_names) + _tuning_remarks(instrument, members)
+    size = {
+        name: max(notes[name][0].size for side in [ours, *theirs] for notes in side if name in notes) for name in common
+    }
+    note_index = np.repeat(np.arange(len(common)), [size[name] for name in common])
+    k = np.concatenate([np.arange(1, size[name] + 1) for name in common])
+
+    def stacked(takes: list[dict[str, tuple[Array, Array, float]]]) -> tuple[Array, Array, Array]:
+        rows = [[_padded(take.get(name), size[name]) for name in common] for take in takes]
+        level, se, f0 = (np.array([np.concatenate([part[i] for part in row]) for row in rows]) for i in range(3))
+        return level, se, f0
+
+    own = stacked(ours)
+    other = [stacked(member) for member in theirs]
+    keep = _heard_often(own[0]) & np.any([_heard_often(member[0]) for member in other], axis=0)
+    lone = int(np.sum(np.any(np.isfinite(own[0]), axis=0) & ~keep))
+    if not np.any(keep):
+        raise ComparisonError(
+            f"no harmonic of {_listed(set(common))} is heard on both sides",
+            cause="one of the recordings is very weak or very noisy",
+            remedy="record closer or louder, and measure again",
+        )
+    if lone:
+        remarks += (f"{lone} harmonics of the instrument have no counterpart that the target's takes let one hear",)
+    f0_hz = np.sqrt(
+        np.exp(_mean_log(own[2][:, keep])) * np.exp(_mean_log(np.concatenate([member[2] for member in other])[:, keep]))
+    )
+    used = np.unique(note_index[keep])
+    return Pairing(
+        notes=tuple(common[i] for i in used),
+        note_index=np.searchsorted(used, note_index[keep]),
+        k=k[keep],
+        freq_hz=k[keep] * f0_hz,
+        instrument=((own[0][:, keep], own[1][:, keep]),),
+        target=tuple((member[0][:, keep], member[1][:, keep]) for member in other),
+        remarks=remarks,
+    )
+
+
+def align_takes(
+    level_db: Array, note_index: IntArray, octave: Array, prior: ScatterPrior, scale_db: Array
+) -> AlignedTakes:
+    """Align the takes of one profile in gain, note by note, and average them.
+
+    Each note of each take has a gain and a tilt of its own, and each level a weight that falls with its distance from
+    the other takes: the expectation step of a Student t likelihood (Lange, Little & Taylor 1989, Robust statistical
+    modeling using the t distribution, *JASA* 84), so that one odd level neither moves the gain nor the mean.
+
+    Parameters
+    ----------
+    level_db : array, shape (n_takes, n_harmonics)
+        NaN where not heard.
+    note_index : int array, shape (n_harmonics,)
+        Ascending.
+    octave : array, shape (n_harmonics,)
+        log2 of frequency.
+    prior : ScatterPrior
+    scale_db : array, shape (n_harmonics,)
+        Prior scatter of each harmonic in a single take, dB.
+    """
+    fit = _fit_notes(level_db, note_index, octave, prior, scale_db)
+    factor = _scale_factor(fit.variance_ratio, fit.df)
+    return _fit_notes(level_db, note_index, octave, prior, scale_db * math.sqrt(factor))
+
+
+def _fit_notes(
+    level_db: Array, note_index: IntArray, octave: Array, prior: ScatterPrior, scale_db: Array
+) -> AlignedTakes:
+    mean = np.full(note_index.size, np.nan)
+    residual = np.full(level_db.shape, np.nan)
+    weight = np.zeros(level_db.shape)
+    ratio = np.zeros(note_index.size)
+    df = np.zeros(note_index.size)
+    tilt_sd = math.hypot(prior.take_tilt_db, prior.note_tilt_db)
+    for note in np.unique(note_index):
+        here = np.flatnonzero(note_index == note)
+        block = level_db[:, here]
+        heard = np.isfinite(block)
+        x = octave[here] - np.mean(octave[here])
+        gain, tilt, base, w = _fit_note(block, heard, x, scale_db[here], prior.tail_df, tilt_sd)
+        count = np.sum(heard, axis=0)
+        repeated = count > 1
+        plain = block - gain[:, None] - base
+        straight = np.where(heard & repeated, plain - np.outer(tilt, x), 0.0)
+        parameters = 2 * max(np.count_nonzero(np.any(heard, axis=1)) - 1, 0)
+        share = 1.0 - min(parameters / max(np.sum(count[repeated] - 1), 1), 0.8)
+        df[here] = np.where(repeated, (count - 1) * share, 0.0)
+        squares = np.sum(w * straight**2, axis=0)
+        ratio[here] = np.divide(squares, df[here], out=np.zeros(here.size), where=df[here] > 0) / scale_db[here] ** 2
+        mean[here] = base
+        weight[:, here] = w
+        residual[:, here] = np.where(heard & repeated, plain, np.nan)
+    count = np.sum(weight > 0, axis=0)
+    total = np.sum(weight, axis=0)
+    # Variance of a t location over that of a normal mean with the same scale: (df + 3) / (df + 1).
+    loss = np.where(count > 1, (prior.tail_df + 3.0) / (prior.tail_df + 1.0), 1.0)
+    spread = np.divide(loss, total, out=np.full(total.shape, np.nan), where=total > 0)
+    return AlignedTakes(mean_db=mean, spread=spread, residual_db=residual, weight=weight, variance_ratio=ratio, df=df)
+
+
+def _fit_note(
+    block: Array, heard: NDArray[np.bool_], x: Array, scale_db: Array, tail_df: float, tilt_sd: float
+) -> tuple[Array, Array, Array, Array]:
+    """Gains and tilts (n_takes,), means (n_harmonics,) and weights (n_takes, n_harmonics) of one note."""
+    takes = block.shape[0]
+    filled = np.where(heard, block, 0.0)
+    weight = heard.astype(np.float64)
+    count = np.sum(heard, axis=0)
+    sounding = np.any(heard, axis=1)
+    gain = np.zeros(takes)
+    tilt = np.zeros(takes)
+    base = np.sum(filled, axis=0) / np.maximum(count, 1)
+    if np.count_nonzero(sounding) < 2:
+        return gain, tilt, np.where(count > 0, base, np.nan), weight
+    for t in np.flatnonzero(sounding):
+        gain[t] = np.median((block[t] - base)[heard[t]])
+    inflation = np.where(count > 1, count / np.maximum(count - 1, 1), 0.0)
+    for _ in range(_ROUNDS):
+        pull = weight / scale_db**2
+        gap = filled - base
+        s0, s1, s2 = (np.sum(pull * x**power, axis=1) for power in range(3))
+        b0, b1 = (np.sum(pull * x**power * gap, axis=1) for power in range(2))
+        s2 = s2 + 1.0 / tilt_sd**2
+        determinant = np.where(sounding, s0 * s2 - s1**2, 1.0)
+        gain = np.where(sounding, (s2 * b0 - s1 * b1) / determinant, 0.0)
+        tilt = np.where(sounding, (s0 * b1 - s1 * b0) / determinant, 0.0)
+        gain[sounding] -= np.mean(gain[sounding])
+        tilt[sounding] -= np.mean(tilt[sounding])
+        straight = filled - gain[:, None] - np.outer(tilt, x)
+        base = np.sum(weight * straight, axis=0) / np.maximum(np.sum(weight, axis=0), 1e-12)
+        z2 = inflation * ((straight - base) / scale_db) ** 2
+        weight = np.where(heard, np.where(count > 1, (tail_df + 1.0) / (tail_df + z2), 1.0), 0.0)
+    return gain, tilt, np.where(count > 0, base, np.nan), weight
+
+
+def _scale_factor(ratio: Array, df: Array) -> float:
+    """Common factor on the prior variance, the prior itself counting as ten degrees of freedom."""
+    return float((_PRIOR_SCALE_DF + np.sum(df * ratio)) / (_PRIOR_SCALE_DF + np.sum(df)))
+
+
+def _notes_of_take(take: Take) -> dict[str, tuple[Array, Array, float]]:
+    """Levels, standard errors and mean fundamental by note name; repeated notes are averaged."""
+    found: dict[str, tuple[Array, Array, float]] = {}
+    for name in {recipe.note for recipe in take.notes}:
+        recipes = [recipe for recipe in take.notes if recipe.note == name]
+        size = max(int(recipe.k[-1]) for recipe in recipes if recipe.k.size) if any(r.k.size for r in recipes) else 0
+        level = np.full((len(recipes), size), np.nan)
+        se = np.full((len(recipes), size), np.nan)
+        for row, recipe in enumerate(recipes):
+            level[row, recipe.k - 1] = np.where(recipe.heard, recipe.level_db, np.nan)
+            se[row, recipe.k - 1] = np.where(recipe.heard, recipe.se_db, np.nan)
+        count = np.sum(np.isfinite(level), axis=0)
+        mean = np.where(count > 0, np.nansum(level, axis=0) / np.maximum(count, 1), np.nan)
+        error = np.sqrt(np.nansum(se**2, axis=0)) / np.maximum(count, 1)
+        f0 = math.exp(float(np.mean([math.log(recipe.f0_hz) for recipe in recipes])))
+        found[name] = (mean, error, f0)
+    return found
+
+
+def _padded(entry: tuple[Array, Array, float] | None, size: int) -> tuple[Array, Array, Array]:
+    level, se, f0 = np.full(size, np.nan), np.zeros(size), np.full(size, np.nan)
+    if entry is not None:
+        level[: entry[0].size] = entry[0]
+        se[: entry[1].size] = entry[1]
+        f0[:] = entry[2]
+    return level, se, f0
+
+
+def _heard_often(level_db: Array) -> NDArray[np.bool_]:
+    heard = np.sum(np.isfinite(level_db), axis=0)
+    return np.asarray((heard > 0) & (2 * heard >= level_db.shape[0]))
+
+
+def _mean_log(values: Array) -> Array:
+    return np.asarray(np.nanmean(np.log(values), axis=0))
+
+
+def _listed(names: set[str]) -> str:
+    return " ".join(sorted(names, key=note_number)) or "none"
+
+
+def _one_sided_remarks(ours: set[str], theirs: set[str]) -> tuple[str, ...]:
+    remarks = []
+    if ours - theirs:
+        remarks.append(f"only the instrument has {_listed(ours - theirs)}: left out")
+    if theirs - ours:
+        remarks.append(f"only the target has {_listed(theirs - ours)}: left out")
+    return tuple(remarks)
+
+
+def _tuning_remarks(instrument: Profile, members: tuple[Profile, ...]) -> tuple[str, ...]:
+    others = sorted({member.a4_hz for member in members} - {instrument.a4_hz})
+    if not others:
+        return ()
+    listed = ", ".join(f"{a4:g}" for a4 in others)
+    return (
+        f"tuned apart (A4 at {instrument.a4_hz:g} Hz against {listed} Hz): notes are paired by name, "
+        "so the same harmonic lies at slightly different frequencies on the two sides",
+    )

@@ -1,0 +1,107 @@
+"""The body curve: its spline basis, its reference level, its bands and the regions where it leaves zero.
+
+Frequencies in Hz, levels in dB. The curve is a cubic B-spline over log2 frequency with a penalty on the second
+differences of its coefficients (Eilers & Marx 1996, Flexible smoothing with B-splines and penalties, *Statistical
+Science* 11), written as a mixed model: a straight line and random deviations from it.
+
+**Reference level.** Each note's gain is free, so the curve is known up to a constant only. The constant is chosen so that
+the middle half of the curve's values, counted over the ear's scale of frequency (equal steps of ERB number, Glasberg &
+Moore 1990), has mean zero: "no difference" is what most of the range does, and a change confined to less than a quarter
+of the range does not move the rest.
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+from scipy.interpolate import BSpline
+
+Array = NDArray[np.float64]
+
+GRID_PER_OCTAVE = 24
+KNOTS_PER_OCTAVE = 6.0
+WOBBLE_KNOTS_PER_OCTAVE = 2.0
+
+_DEGREE = 3
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class Stretch:
+    """Grid points `first` to `last` (inclusive) over which the band lies on one side of zero."""
+
+    first: int
+    last: int
+
+
+def spline_basis(octave: ArrayLike, low: float, high: float, knots_per_octave: float) -> Array:
+    """Cubic B-splines on equal steps of log2 frequency from `low` to `high`.
+
+    Returns
+    -------
+    array, shape (n, n_splines)
+        Each row sums to one.
+    """
+    x = np.asarray(octave, dtype=np.float64)
+    pieces = max(int(np.ceil((high - low) * knots_per_octave)), 1)
+    step = max(high - low, 1e-6) / pieces
+    knots = low + step * np.arange(-_DEGREE, pieces + _DEGREE + 1)
+    inside = np.clip(x, low, low + step * pieces - 1e-12 * max(abs(high), 1.0))
+    return np.asarray(BSpline.design_matrix(inside, knots, _DEGREE).toarray())
+
+
+def smooth_columns(basis: Array, knots_per_octave: float) -> Array:
+    """Columns whose independent normal coefficients of unit variance make a curve of unit variance."""
+    import os
+    ell = float(os.environ.get("ELL", "0.35"))
+    distance = np.abs(np.subtract.outer(np.arange(basis.shape[1]), np.arange(basis.shape[1]))) / knots_per_octave
+    scaled = np.sqrt(5.0) * distance / ell
+    correlation = (1.0 + scaled + scaled**2 / 3.0) * np.exp(-scaled)
+    return np.asarray(basis @ np.linalg.cholesky(correlation + 1e-8 * np.eye(basis.shape[1])))
+
+
+def wobble_columns(octave: ArrayLike, low: float, high: float) -> Array:
+    """Smooth columns, two an octave, scaled so that unit coefficients make a wobble of unit variance on average."""
+    basis = spline_basis(octave, low, high, WOBBLE_KNOTS_PER_OCTAVE)
+    return np.asarray(basis / np.sqrt(np.mean(np.sum(basis**2, axis=1))))
+
+
+def frequency_grid(freq_hz: Array) -> Array:
+    """Grid from the lowest to the highest harmonic, about 24 points an octave (at least two), Hz."""
+    low, high = float(np.min(freq_hz)), float(np.max(freq_hz))
+    points = max(int(np.ceil(GRID_PER_OCTAVE * np.log2(high / low))) + 1, 2)
+    return np.asarray(np.geomspace(low, high, points))
+
+
+def reference_weights(curve_db: Array, freq_hz: Array) -> Array:
+    """Weights (n,), summing to one, of the mean that is set to zero: the middle half of the values on the ERB scale."""
+    share = np.gradient(21.4 * np.log10(4.37e-3 * freq_hz + 1.0)) if freq_hz.size > 1 else np.ones(1)
+    share = share / np.sum(share)
+    order = np.argsort(curve_db, kind="stable")
+    upper = np.cumsum(share[order])
+    lower = upper - share[order]
+    weights = np.zeros(curve_db.size)
+    weights[order] = np.clip(np.minimum(upper, 0.75) - np.maximum(lower, 0.25), 0.0, None)
+    return np.asarray(weights / np.sum(weights))
+
+
+def simultaneous_factor(draws_db: Array, centre_db: Array, sd_db: Array, level: float = 0.95) -> float:
+    """Multiple of the standard deviation within which whole curves stay, in `level` of the draws.
+
+    Parameters
+    ----------
+    draws_db : array, shape (n_draws, n_grid)
+    centre_db, sd_db : arrays, shape (n_grid,)
+    """
+    farthest = np.max(np.abs(draws_db - centre_db) / sd_db, axis=1)
+    return float(np.quantile(farthest, level))
+
+
+def stretches(low_db: Array, high_db: Array) -> list[Stretch]:
+    """Runs of grid points over which the band (n_grid,) lies wholly above or wholly below zero."""
+    side = np.where(low_db > 0, 1, np.where(high_db < 0, -1, 0))
+    edges = np.flatnonzero(np.diff(side)) + 1
+    starts = np.concatenate([[0], edges])
+    ends = np.concatenate([edges - 1, [side.size - 1]])
+    return [
+        Stretch(first=int(first), last=int(last)) for first, last in zip(starts, ends, strict=True) if side[first] != 0
+    ]

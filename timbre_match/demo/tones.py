@@ -1,0 +1,44 @@
+"""Where the demo's recordings are: beside the package in a source checkout, inside it once installed."""
+
+from pathlib import Path
+
+from timbre_match.demo.workshop import STAGES, TAKES, Stage, file_name
+from timbre_match.errors import TimbreMatchError
+
+_FOLDER = "reference_tones"
+_PLACES = (Path(__file__).parent / _FOLDER, Path(__file__).parents[2] / _FOLDER)
+
+
+def tones_folder() -> Path:
+    """Find the folder that holds the demo's recordings.
+
+    Raises
+    ------
+    TimbreMatchError
+        If neither place has all of them.
+    """
+    names = [file_name(stage, take) for stage in STAGES for take in range(1, TAKES + 1)]
+    for place in _PLACES:
+        if all((place / name).is_file() for name in names):
+            return place
+    raise TimbreMatchError(
+        "the demo's recordings are not all there",
+        where=" or ".join(str(place) for place in _PLACES),
+        cause="the package was copied without its data, or a file was moved or renamed",
+        remedy=(
+            "install timbre-match again, or make the recordings anew with "
+            f"python -m timbre_match.demo.render --out {_FOLDER}"
+        ),
+    )
+
+
+def takes() -> dict[Stage, tuple[Path, ...]]:
+    """Files of each stage's takes, in order; the target first, then the build stages of the new instrument.
+
+    Raises
+    ------
+    TimbreMatchError
+        If the recordings cannot be found.
+    """
+    folder = tones_folder()
+    return {stage: tuple(folder / file_name(stage, take) for take in range(1, TAKES + 1)) for stage in STAGES}

@@ -1,0 +1,272 @@
+"""What the terminal shows: held notes, a profile, a comparison, suggestions.
+
+Each function returns something that a rich console prints, at 60 columns as well as at 200, with colour or without.
+Names come from the user's files and hands: they are made plain and never read as markup.
+"""
+
+import math
+from collections import Counter
+from collections.abc import Iterable, Sequence
+from typing import Final
+
+import numpy as np
+from rich.console import Group, RenderableType
+from rich.padding import Padding
+from rich.table import Table
+from rich.text import Text
+
+from timbre_match.advise.suggestions import Suggestion
+from timbre_match.advise.wording import counted, hertz
+from timbre_match.compare.records import Comparison, HarmonicDifference, Verdict
+from timbre_match.intake.notes import HeldNote
+from timbre_match.intake.recording import Recording
+from timbre_match.measure.profile import Profile
+from timbre_match.measure.recipe import Recipe
+from timbre_match.show.marks import SIGN, VERDICTS, plain, signed_interval
+
+_COLOUR: Final[dict[Verdict, str]] = {"stronger": "yellow", "weaker": "cyan", "alike": "green", "unsettled": "default"}
+_LISTED_HARMONICS: Final = 12
+_SOURCE_WORDS: Final = {
+    "takes": "the takes themselves",
+    "prior": "published figures, because a single take cannot show it",
+    "both": "the takes together with published figures",
+}
+
+
+def held_notes_table(recording: Recording, notes: Sequence[HeldNote]) -> RenderableType:
+    """Show the held notes of one recording, with its faults."""
+    parts: list[RenderableType] = [
+        _heading(
+            plain(recording.file),
+            f"{recording.sample_rate_hz / 1000:g} kHz, channel {recording.channel} of {recording.channel_count}",
+        )
+    ]
+    if notes:
+        table = _table("note", "Hz", "cents", "from s", "to s", "cycles", "kind", left=("note", "kind"))
+        for held in notes:
+            table.add_row(
+                Text(plain(held.note, 8)),
+                f"{held.f0_hz:.2f}",
+                f"{held.cents:+.1f}",
+                f"{held.start_s:.2f}",
+                f"{held.end_s:.2f}",
+                str(held.cycles),
+                held.kind,
+            )
+        parts.append(table)
+    else:
+        parts.append(Text("No held note."))
+    return Group(*parts, *_remarks(recording.warnings))
+
+
+def profile_summary(profile: Profile, warnings: Sequence[str] = ()) -> RenderableType:
+    """Show the notes of every take of a profile: pitch, length, harmonics heard, and their typical standard error.
+
+    Parameters
+    ----------
+    profile : Profile
+    warnings : sequence of str
+        What was wrong with its recordings.
+    """
+    name = plain(profile.instrument) or "Unnamed instrument"
+    details = [plain(profile.stage), plain(profile.family), counted(len(profile.takes), "take")]
+    parts: list[RenderableType] = [_heading(name, ", ".join(word for word in details if word))]
+    for number, take in enumerate(profile.takes, start=1):
+        files = ", ".join(plain(source.file, 40) for source in take.recordings[:3])
+        more = f" and {len(take.recordings) - 3} more" if len(take.recordings) > 3 else ""
+        parts.append(_heading(f"Take {number}", files + more))
+        table = _table("note", "Hz", "cents", "cycles", "heard", "error dB", left=("note",))
+        for recipe in take.notes:
+            table.add_row(
+                Text(plain(recipe.note, 8)),
+                f"{recipe.f0_hz:.2f}",
+                f"{recipe.cents:+.1f}",
+                str(recipe.cycles),
+                f"{int(recipe.heard.sum())} of {recipe.k.size}",
+                _typical_error(recipe),
+            )
+        parts.append(table)
+    parts.append(Text("heard: harmonics above the noise. error: the middle standard error of their levels.", "dim"))
+    return Group(*parts, *_remarks(warnings))
+
+
+def comparison_summary(comparison: Comparison) -> RenderableType:
+    """Show the verdict of a comparison: in words first, then regions, harmonics, notes, and what is not settled."""
+    name = plain(comparison.instrument) or "Unnamed instrument"
+    stage = f", {plain(comparison.stage)}" if plain(comparison.stage) else ""
+    parts: list[RenderableType] = [
+        _heading(f"{name}{stage}", f"against {plain(comparison.target) or 'the target'}"),
+        Text(_colour_sentence(comparison)),
+        Text(_closeness_sentence(comparison)),
+        Text(_scatter_sentence(comparison)),
+        *_regions(comparison),
+        *_differing_harmonics(comparison),
+        *_verdict_counts(comparison),
+    ]
+    if unsettled := unsettled_sentence(comparison.harmonics):
+        parts += [Text(), Text(unsettled)]
+    return Group(*parts, *_remarks(comparison.remarks))
+
+
+def suggestions_list(suggestions: Sequence[Suggestion]) -> RenderableType:
+    """Show suggestions in order of rank; moves that a better rank has named, and cautions, stand only once."""
+    if not suggestions:
+        return Text("Nothing is known to differ, so there is nothing to suggest.")
+    parts: list[RenderableType] = []
+    listed: dict[str, int] = {}
+    for suggestion in suggestions:
+        sign = SIGN[suggestion.region.verdict] if suggestion.region else "·"
+        parts += [Text(), Text(f"{suggestion.rank}  {sign}  {plain(suggestion.evidence, 1500)}", "bold")]
+        for move in suggestion.moves:
+            if move.text not in listed:
+                way_back = "" if move.reversible else "No way back: "
+                parts.append(Padding(Text(f"- {way_back}{plain(move.text, 600)}"), (0, 0, 0, 3), expand=False))
+        again = sorted({listed[move.text] for move in suggestion.moves if move.text in listed})
+        if again:
+            count = sum(move.text in listed for move in suggestion.moves)
+            places = " and ".join(map(str, again))
+            parts.append(
+                Padding(
+                    Text(f"- and {counted(count, 'move')} named under {places} already"), (0, 0, 0, 3), expand=False
+                )
+            )
+        for move in suggestion.moves:
+            listed.setdefault(move.text, suggestion.rank)
+    bases = ", ".join(sorted({move.basis for suggestion in suggestions for move in suggestion.moves}))
+    parts += [Text(), Text(f"Where the moves come from: {plain(bases, 600)}."), Text(), Text("Take care", "bold")]
+    parts += [
+        Padding(Text(f"- {plain(caution, 600)}"), (0, 0, 0, 3), expand=False) for caution in _cautions_once(suggestions)
+    ]
+    return Group(*parts)
+
+
+def unsettled_sentence(harmonics: Iterable[HarmonicDifference]) -> str:
+    """Say what is unsettled and how many takes a side would settle it; empty where all is settled."""
+    counted_by_need = Counter(harmonic.takes_needed for harmonic in harmonics if harmonic.verdict == "unsettled")
+    total = sum(counted_by_need.values())
+    if not total:
+        return ""
+    hopeless = counted_by_need.pop(None, 0)
+    needs = sorted((takes, number) for takes, number in counted_by_need.items() if takes is not None)
+    words = [f"{counted(total, 'harmonic')} cannot be told yet."]
+    for quota in (0.5, 1.0):
+        settled = 0
+        for takes, number in needs:
+            settled += number
+            if settled >= quota * sum(counted_by_need.values()):
+                sentence = f"With {counted(takes, 'take')} a side, {settled} of them would be settled."
+                if sentence not in words:
+                    words.append(sentence)
+                break
+    if hopeless:
+        words.append(f"For {hopeless} no practicable number of takes is enough: they lie close to the margin.")
+    return " ".join(words)
+
+
+def _colour_sentence(comparison: Comparison) -> str:
+    distance = comparison.colour_distance
+    value = distance.distance_db
+    own = (
+        "how far your own takes differ is not known yet"
+        if distance.own_db is None
+        else f"your own takes differ by {distance.own_db:.1f} dB"
+    )
+    return f"Colour distance {value.value:.1f} dB ({value.low:.1f} to {value.high:.1f}); {own}."
+
+
+def _closeness_sentence(comparison: Comparison) -> str:
+    share = comparison.closeness_percent
+    return (
+        f"Closeness {share.value:.0f} % ({share.low:.0f} to {share.high:.0f}): "
+        f"that share of the loudness lies within {comparison.margin_db:g} dB of the target."
+    )
+
+
+def _scatter_sentence(comparison: Comparison) -> str:
+    scatter = comparison.repeatability
+    return (
+        f"From {counted(scatter.takes, 'take')} against {scatter.target_takes} of the target; "
+        f"what changes from take to take is judged by {_SOURCE_WORDS[scatter.source]}."
+    )
+
+
+def _regions(comparison: Comparison) -> list[RenderableType]:
+    if not comparison.regions:
+        return [Text(), Text("No stretch of frequency is known to differ.", "bold")]
+    table = _table("", "from", "to", "difference dB", "harmonics", "notes", left=("",))
+    for region in sorted(comparison.regions, key=lambda region: region.low_hz):
+        table.add_row(
+            _sign(region.verdict),
+            f"{hertz(region.low_hz)} Hz",
+            f"{hertz(region.high_hz)} Hz",
+            signed_interval(region.difference_db),
+            str(region.harmonics),
+            str(region.notes),
+        )
+    return [Text(), Text("Stretches of frequency that differ", "bold"), table]
+
+
+def _differing_harmonics(comparison: Comparison) -> list[RenderableType]:
+    differing = [harmonic for harmonic in comparison.harmonics if harmonic.verdict in ("stronger", "weaker")]
+    if not differing:
+        return [Text(), Text("No single harmonic is known to differ.", "bold")]
+    differing.sort(key=lambda harmonic: -abs(harmonic.difference_db.value))
+    table = _table("", "note", "harmonic", "at", "difference dB", left=("", "note"))
+    for harmonic in differing[:_LISTED_HARMONICS]:
+        table.add_row(
+            _sign(harmonic.verdict),
+            Text(plain(harmonic.note, 8)),
+            str(harmonic.k),
+            f"{hertz(harmonic.freq_hz)} Hz",
+            signed_interval(harmonic.difference_db),
+        )
+    parts: list[RenderableType] = [Text(), Text("Harmonics that differ, the largest first", "bold"), table]
+    if len(differing) > _LISTED_HARMONICS:
+        parts.append(Text(f"and {len(differing) - _LISTED_HARMONICS} more"))
+    return parts
+
+
+def _verdict_counts(comparison: Comparison) -> list[RenderableType]:
+    by_note: dict[str, Counter[Verdict]] = {}
+    for harmonic in comparison.harmonics:
+        by_note.setdefault(harmonic.note, Counter())[harmonic.verdict] += 1
+    table = _table("note", *(f"{SIGN[verdict]} {verdict}" for verdict in VERDICTS), left=("note",))
+    for note, counts in by_note.items():
+        table.add_row(Text(plain(note, 8)), *(str(counts[verdict]) if counts[verdict] else "·" for verdict in VERDICTS))
+    return [Text(), Text("Harmonics of each note, instrument against target", "bold"), table]
+
+
+def _typical_error(recipe: Recipe) -> str:
+    errors = recipe.se_db[recipe.heard]
+    middle = float(np.median(errors)) if errors.size else math.nan
+    return f"{middle:.2f}" if math.isfinite(middle) else "·"
+
+
+def _cautions_once(suggestions: Sequence[Suggestion]) -> list[str]:
+    """Every caution once, in order of first mention, with the one that closes each list at the very end."""
+    closing = {suggestion.cautions[-1]: None for suggestion in suggestions if suggestion.cautions}
+    others = {caution: None for suggestion in suggestions for caution in suggestion.cautions if caution not in closing}
+    return [*others, *closing]
+
+
+def _remarks(remarks: Sequence[str]) -> list[RenderableType]:
+    if not remarks:
+        return []
+    lines = [Padding(Text(f"- {plain(remark, 700)}"), (0, 0, 0, 1), expand=False) for remark in remarks]
+    return [Text(), Text("To keep in mind", "bold"), *lines]
+
+
+def _heading(name: str, detail: str) -> Text:
+    return Text.assemble((name, "bold"), f"  {detail}" if detail else "")
+
+
+def _sign(verdict: Verdict) -> Text:
+    return Text(SIGN[verdict], _COLOUR[verdict])
+
+
+def _table(*columns: str, left: tuple[str, ...]) -> Table:
+    """Table without frame, so that it stays readable in a narrow window and in a copied text."""
+    table = Table(box=None, pad_edge=False, padding=(0, 2, 0, 0), header_style="dim", show_edge=False)
+    for column in columns:
+        table.add_column(Text(column), justify="left" if column in left else "right", overflow="fold")
+    return table
