@@ -1,8 +1,8 @@
 """Whether the comparison's intervals and verdicts hold what they say, on simulated takes with a known truth.
 
-Each comparison draws one instrument of the package's tables of repeats, two sides with a known difference (a body curve
-plus deviations of single harmonics), and takes that scatter as the tables say: Student t scatter of each level, tilts of
-takes and notes, a smooth wobble. The estimator never sees these figures except through its own pooled prior.
+Each comparison draws one instrument of the package's tables of repeats, two sides with a known difference (a body
+curve plus deviations of single harmonics), and takes that scatter as the tables say: Student t scatter of each level,
+tilts of takes and notes, a smooth wobble. The estimator never sees these figures except through its own pooled prior.
 
     python benchmarks/calibration.py --comparisons 200
 """
@@ -11,11 +11,12 @@ import argparse
 import csv
 import math
 import time
+from collections.abc import Callable
+from concurrent.futures import ProcessPoolExecutor
 from dataclasses import dataclass, replace
 from importlib import resources
 
 import numpy as np
-from joblib import Parallel, delayed
 from numpy.typing import NDArray
 from scipy import optimize, stats
 
@@ -54,13 +55,17 @@ class Playing:
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class Truth:
-    """The difference of the two sides: bumps (centre in Hz, depth in dB, full width at half depth in octaves), a slope."""
+    """The difference of the two sides.
+
+    Each bump has a centre in Hz, a depth in dB and a full width at half depth in octaves; `slope_db` is per octave.
+    """
 
     bumps: tuple[tuple[float, float, float], ...] = ()
     slope_db: float = 0.0
     own_db: float = 0.0
 
     def curve(self, freq_hz: Array) -> Array:
+        """Difference in dB at `freq_hz`, without the single harmonics' own deviations."""
         octave = np.log2(freq_hz / 1000.0)
         total = self.slope_db * octave
         for centre_hz, depth_db, width in self.bumps:
@@ -87,7 +92,6 @@ class Outcome:
     found: bool
     centre_octaves: float
     size_db: float
-    distance_inside: bool
     seconds: float
 
 
@@ -133,7 +137,7 @@ def simulated_pair(
     for name in names:
         f0 = note_to_hz(name)
         k = np.arange(1, int(TOP_HZ / f0) + 1)
-        freq[name] = k * f0
+        freq[name] = np.asarray(k * f0, dtype=np.float64)
         source = -20.0 * np.log10(k) + np.minimum(0.0, -6.0 * np.log2(freq[name] / 3000.0)) + rng.normal(0, 4, k.size)
         base[name] = source + body.curve(freq[name])
         own[name] = truth.own_db * rng.standard_t(5, k.size) / math.sqrt(5.0 / 3.0)
@@ -200,7 +204,6 @@ def outcome(rng: np.random.Generator, truth: Truth, takes: int, notes: int) -> O
         found=found,
         centre_octaves=centre,
         size_db=size,
-        distance_inside=False,
         seconds=seconds,
     )
 
@@ -268,7 +271,8 @@ HEAD = " ".join(
 
 def random_truth(rng: np.random.Generator) -> Truth:
     bumps = tuple(
-        (1000.0 * 2.0 ** rng.uniform(-2, 3), rng.normal(0, 2.5), rng.uniform(0.33, 1.2)) for _ in range(rng.integers(2, 7))
+        (1000.0 * 2.0 ** rng.uniform(-2, 3), rng.normal(0, 2.5), rng.uniform(0.33, 1.2))
+        for _ in range(rng.integers(2, 7))
     )
     return Truth(bumps=bumps, slope_db=rng.normal(0, 0.3), own_db=rng.uniform(0.3, 1.8))
 
@@ -308,11 +312,13 @@ def main() -> None:
         if arguments.only not in title:
             continue
         seeds = np.random.SeedSequence([arguments.seed, len(kind), takes, notes]).spawn(arguments.comparisons)
-        outcomes = Parallel(n_jobs=arguments.jobs)(delayed(_one)(seed, kind, takes, notes) for seed in seeds)
+        with ProcessPoolExecutor(max_workers=arguments.jobs) as pool:
+            outcomes = list(pool.map(_one, [(seed, kind, takes, notes) for seed in seeds]))
         print(table(title, outcomes), flush=True)
 
 
-def _one(seed: np.random.SeedSequence, kind: str, takes: int, notes: int) -> Outcome:
+def _one(setting: tuple[np.random.SeedSequence, str, int, int]) -> Outcome:
+    seed, kind, takes, notes = setting
     rng = np.random.default_rng(seed)
     return outcome(rng, KINDS[kind](rng), takes, notes)
 
@@ -330,10 +336,10 @@ def _found(comparison: Comparison, truth: Truth) -> tuple[bool, float, float]:
     return False, math.nan, math.nan
 
 
-def _wobble(rng: np.random.Generator, sd_db: float):  # type: ignore[no-untyped-def]
+def _wobble(rng: np.random.Generator, sd_db: float) -> Callable[[Array], Array]:
     places = np.arange(-6.0, 6.0, 0.5)
     heights = rng.normal(0, sd_db, places.size)
-    return lambda octave: np.interp(octave, places, heights)
+    return lambda octave: np.asarray(np.interp(octave, places, heights))
 
 
 def _recipe(rng: np.random.Generator, name: str, freq_hz: Array, level_db: Array, floor_db: float) -> Recipe:

@@ -78,11 +78,17 @@ def offset(x: Array) -> Array:
     return x + 0.03
 
 
-def low_pass(x: Array) -> Array:
-    """Leave nothing above 11 kHz: a codec sets the finest bands of its own transform to zero."""
+def low_pass(x: Array, edge_hz: float = 11_000.0) -> Array:
+    """Leave nothing above the edge: a codec sets the finest bands of its own transform to zero."""
+    return band(x, 0.0, edge_hz)
+
+
+def band(x: Array, low_hz: float, high_hz: float) -> Array:
+    """Leave what lies between two frequencies and nothing else."""
     size = next_fast_len(len(x))
     spectrum = rfft(x, size)
-    spectrum[round(11_000 * size / RATE) :] = 0.0
+    frequency_hz = np.arange(len(spectrum)) * RATE / size
+    spectrum[(frequency_hz < low_hz) | (frequency_hz > high_hz)] = 0.0
     return np.asarray(irfft(spectrum, size)[: len(x)])
 
 

@@ -10,6 +10,7 @@ import soundfile
 from tests.intake.sounds import (
     RATE,
     Array,
+    band,
     clip,
     hum,
     low_pass,
@@ -60,8 +61,14 @@ def test_note_on_or_near_the_mains_series_is_no_hum(f0_hz: float, gap_s: float) 
     assert find_faults(played_note(f0_hz, held_s=3.0, gap_s=gap_s), RATE).warnings == ()
 
 
-def test_plucked_note_on_the_mains_series_is_no_hum() -> None:
-    assert find_faults(plucked_note(100.0), RATE).warnings == ()
+@pytest.mark.parametrize("t60_s", [3.0, 8.0, 12.0])
+def test_plucked_note_on_the_mains_series_is_no_hum(t60_s: float) -> None:
+    assert find_faults(plucked_note(100.0, t60_s=t60_s), RATE).warnings == ()
+
+
+def test_soft_plucked_note_on_the_mains_series_after_a_loud_one_is_no_hum() -> None:
+    both = np.concatenate([played_note(440.0, gap_s=0.0), 0.05 * plucked_note(100.0, t60_s=8.0)])
+    assert find_faults(both, RATE).warnings == ()
 
 
 def test_vibrato_sidebands_are_no_hum() -> None:
@@ -116,6 +123,28 @@ def test_decay_time_is_that_of_the_room(t60_s: float) -> None:
     assert decay_times_s(np.maximum(levels, -80.0), -10.0) == [pytest.approx(t60_s, rel=0.1)]
 
 
+def test_stroke_that_dies_and_then_stops_is_no_room() -> None:
+    time = 0.01 * np.arange(600)
+    levels = -10.0 - np.clip(time - 2.0, 0.0, None) * 30.0
+    assert decay_times_s(levels, -10.0) == [pytest.approx(2.0, rel=0.1)]
+    levels[time > 3.25] = -80.0
+    assert decay_times_s(levels, -10.0) == []
+
+
+def test_fall_that_steepens_is_no_room() -> None:
+    # A straight fade of the amplitude falls by 6 dB in the first half of its way and by 24 in the second.
+    time = 0.01 * np.arange(600)
+    fade = np.clip(1.0 - (time - 2.0) / 2.0, 1e-9, 1.0)
+    assert decay_times_s(np.maximum(-10.0 + 20.0 * np.log10(fade), -50.0), -10.0) == []
+
+
+def test_breath_after_the_note_is_not_the_background() -> None:
+    rng = np.random.default_rng(11)
+    breath, background = 0.018 * rng.standard_normal(RATE), 1e-4 * rng.standard_normal(RATE // 5)
+    note = played_note(held_s=1.0, gap_s=0.0)
+    assert find_faults(np.concatenate([note, breath, background]), RATE).warnings == ()
+
+
 def test_soft_note_after_a_loud_one_is_no_noise() -> None:
     loud, soft = played_note(440.0, gap_s=0.4), 0.05 * played_note(330.0, gap_s=0.0)
     soft = soft + 10 ** (-75 / 20) * np.random.default_rng(5).standard_normal(len(soft))
@@ -139,6 +168,13 @@ def test_codec_edge_is_found_where_it_is() -> None:
     edge_hz = find_faults(low_pass(played_note()), RATE).low_pass_hz
     assert edge_hz is not None
     assert 10_700 < edge_hz < 11_300
+
+
+def test_edge_is_the_lowest_where_a_codec_lets_something_through_above() -> None:
+    noise_part = 0.003 * np.random.default_rng(12).standard_normal(4 * RATE)
+    through = 3.0 * band(noise_part, 17_000, 17_300)
+    edge_hz = find_faults(low_pass(noise_part, 16_000) + through, RATE).low_pass_hz
+    assert edge_hz == pytest.approx(16_000, abs=120)
 
 
 def test_edge_of_a_real_codec_is_found() -> None:

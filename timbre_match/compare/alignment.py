@@ -123,6 +123,12 @@ def pair(instrument: Profile, members: tuple[Profile, ...]) -> Pairing:
             cause="one of the recordings is very weak or very noisy",
             remedy="record closer or louder, and measure again",
         )
+    if np.max(np.bincount(note_index[keep])) < 2:
+        raise ComparisonError(
+            "no note has two harmonics that both sides let one hear, and a level alone says nothing about tone colour",
+            cause="one of the recordings is very weak or very noisy",
+            remedy="record closer or louder, and measure again",
+        )
     if lone:
         remarks += (f"{lone} harmonics of the instrument have no counterpart that the target's takes let one hear",)
     f0_hz = np.sqrt(
@@ -237,7 +243,7 @@ def _fit_note(
 
 
 def _scale_factor(ratio: Array, df: Array) -> float:
-    """Common factor on the prior variance, the prior itself counting as ten degrees of freedom."""
+    """Return the common factor on the prior variance, the prior itself counting as ten degrees of freedom."""
     return float((_PRIOR_SCALE_DF + np.sum(df * ratio)) / (_PRIOR_SCALE_DF + np.sum(df)))
 
 
@@ -246,7 +252,7 @@ def _notes_of_take(take: Take) -> dict[str, tuple[Array, Array, float]]:
     found: dict[str, tuple[Array, Array, float]] = {}
     for name in {recipe.note for recipe in take.notes}:
         recipes = [recipe for recipe in take.notes if recipe.note == name]
-        size = max(int(recipe.k[-1]) for recipe in recipes if recipe.k.size) if any(r.k.size for r in recipes) else 0
+        size = max(int(recipe.k[-1]) if recipe.k.size else 0 for recipe in recipes)
         level = np.full((len(recipes), size), np.nan)
         se = np.full((len(recipes), size), np.nan)
         for row, recipe in enumerate(recipes):

@@ -1,10 +1,10 @@
 """Colour distance and closeness: how far apart two tone colours are to the ear.
 
-Levels in dB, frequencies in Hz. Bands are one ERB wide (Glasberg & Moore 1990, Derivation of auditory filter shapes from
-notched-noise data, *Hearing Research* 47), the distance is the root-mean-square difference of their levels after the
-loudnesses are aligned (after Plomp 1970, Timbre as a multidimensional attribute of complex tones), over audible bands.
-Loudness grows as the 0.3rd power of a band's power, which doubles it every 10 dB (Stevens 1957, On the psychophysical law,
-*Psychological Review* 64).
+Levels in dB, frequencies in Hz. Bands are one ERB wide (Glasberg & Moore 1990, Derivation of auditory filter shapes
+from notched-noise data, *Hearing Research* 47), the distance is the root-mean-square difference of their levels after
+the loudnesses are aligned (after Plomp 1970, Timbre as a multidimensional attribute of complex tones), over audible
+bands. Loudness grows as the 0.3rd power of a band's power, which doubles it every 10 dB (Stevens 1957, On the
+psychophysical law, *Psychological Review* 64).
 """
 
 from dataclasses import dataclass
@@ -22,8 +22,8 @@ HEARD_RANGE_DB = 60.0
 """Bands further below the note's strongest are not counted."""
 
 MASKED_RATIO_DB = -4.0
-"""A band whose level is further below what its neighbours excite in it counts as hidden under them: the signal-to-masker
-ratio at the output of an auditory filter at threshold (Patterson et al. 1982, *JASA* 72; value from memory)."""
+"""A harmonic further below what the others excite at its place counts as hidden under them: the signal-to-masker ratio
+at the output of an auditory filter at threshold (Patterson et al. 1982, *JASA* 72; value from memory)."""
 
 
 def erb_hz(freq_hz: ArrayLike) -> Array:
@@ -56,8 +56,8 @@ def audible(freq_hz: Array, level_db: Array) -> NDArray[np.bool_]:
     """Which harmonics of one note, shape (n,), are not hidden under the others.
 
     Each harmonic is weighed against what the others put into the auditory filter centred on it, the rounded exponential
-    (1 + p g) exp(-p g) with p = 4 f / ERB and g the relative distance in frequency (Patterson et al. 1982; Glasberg & Moore
-    1990). Neighbours within half an ERB sound as one with it and do not hide it.
+    (1 + p g) exp(-p g) with p = 4 f / ERB and g the relative distance in frequency (Patterson et al. 1982; Glasberg &
+    Moore 1990). Neighbours within half an ERB sound as one with it and do not hide it.
     """
     power = db_to_power(level_db)
     width = erb_hz(freq_hz)

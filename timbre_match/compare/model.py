@@ -4,17 +4,18 @@ The difference of harmonic k of note n, averaged over the takes of each side, is
 
 .. math:: D_{nk} = a_n + c(x) + o_{nk} + (t + t_n)\,x + w(x) + e_{nk}, \qquad x = \log_2 f ,
 
-with a free gain a_n, the body curve c (a P-spline), the harmonic's own deviation o, a tilt t common to a take, a tilt t_n of
-each note, a smooth wobble w common to a take, and scatter e. The difference that an instrument maker asks for is c + o;
-the rest is playing. What the takes of one side differ among themselves obeys the same equation without c and o, and
-informs the playing's variances. Those are found by maximising the restricted likelihood of both (Patterson & Thompson
-1971, *Biometrika* 58) times a prior on their logarithms, and their remaining uncertainty is carried into every interval by
-sampling them (Laplace approximation). Given the variances, estimates are best linear unbiased predictions (Robinson
-1991, *Statistical Science* 6). Scatter and own deviations have heavy tails: both are normal with a precision of their own,
-updated as in Lange, Little & Taylor (1989, *JASA* 84).
+with a free gain a_n, the body curve c (a penalised spline), the harmonic's own deviation o, a tilt t common to a
+take, a tilt t_n of each note, a smooth wobble w common to a take, and scatter e. The difference that an instrument
+maker asks for is c + o; the rest is playing. What the takes of one side differ among themselves obeys the same
+equation without c and o, and informs the playing's variances. Those are found by maximising the restricted likelihood
+of both (Patterson & Thompson 1971, *Biometrika* 58) times a prior on their logarithms, and their remaining
+uncertainty is carried into every interval by sampling them (Laplace approximation). Given the variances, estimates
+are best linear unbiased predictions (Robinson 1991, *Statistical Science* 6). Scatter and own deviations have heavy
+tails: they are normal with a precision of each harmonic's own, updated as in Lange, Little & Taylor (1989, *JASA*
+84).
 
 The covariance is diagonal plus low rank (two columns a note, some sixty shared ones), so each evaluation costs
-n_harmonics x n_shared^2.
+n_harmonics times n_shared^2 operations.
 """
 
 from dataclasses import dataclass, field
@@ -233,9 +234,9 @@ def _gradient(
     effect: Array, covariance: Array, shared_variance: Array, note_effect: Array, note_cov: Array, slope: Array,
     note_variance: Array, per_harmonic: Array, own: Array, scatter: Array, n_wobble: int, has_curve: bool,
 ) -> Array:  # fmt: skip
-    """Derivative of the restricted log-likelihood by each log standard deviation.
+    """Return the derivative of the restricted log-likelihood by each log standard deviation.
 
-    For a group of p independent effects u with variance v it is (u'u + tr C) / v - p, with C their posterior covariance.
+    For a group of p independent effects u with variance v it is (u'u + tr C) / v - p; C is their posterior covariance.
     """
     excess = (effect**2 + np.diag(covariance)) / shared_variance - 1.0
     tilt_cov = note_cov[:, 1, 1] + np.einsum("np,np->n", slope[:, 1] @ covariance, slope[:, 1])
@@ -281,8 +282,8 @@ def _maximise(differences: Row, repeats: list[Row], prior: Prior, weights: Weigh
 def _updated_weights(row: Row, solution: Solution, old: Weights) -> Weights:
     """Return the expected precisions given the present residuals.
 
-    Own deviation and scatter of a harmonic share one weight, since a single take cannot tell which of them is the odd one; the
-    more degrees of freedom speak for the scatter, the less of it is laid at the scatter's door.
+    Own deviation and scatter of a harmonic share one weight, since a single take cannot tell which of the two is odd.
+    The more degrees of freedom speak for the scatter, the less is laid at its door.
     """
     rho = solution.shrinkage
     own = rho / (1.0 - rho) * solution.scatter_variance * old.own

@@ -69,8 +69,7 @@ class Evidence:
     def curve_columns(self, freq_hz: Array) -> tuple[Array, Array]:
         """Octaves from the origin, shape (g,), and the curve's smooth columns, shape (g, n_smooth), at `freq_hz`."""
         octave = np.log2(freq_hz / self.origin_hz)
-        basis = body_curve.spline_basis(octave, *self.span, body_curve.KNOTS_PER_OCTAVE)
-        return octave, body_curve.smooth_columns(basis, body_curve.KNOTS_PER_OCTAVE)
+        return octave, body_curve.smooth_columns(octave, *self.span)
 
 
 def gather(profile: Profile, target: Target) -> Evidence:
@@ -94,9 +93,6 @@ def gather(profile: Profile, target: Target) -> Evidence:
     moderation, df = _moderation(aligned, prior)
     spread = [one.spread for one in aligned]
     errors = [np.sqrt(np.mean(np.where(np.isfinite(level), se, 0.0) ** 2, axis=0)) for level, se in levels]
-    basis = body_curve.smooth_columns(
-        body_curve.spline_basis(octave, *span, body_curve.KNOTS_PER_OCTAVE), body_curve.KNOTS_PER_OCTAVE)
-    wobble = body_curve.wobble_columns(octave, *span)
     take_counts = [level.shape[0] for level, _ in levels]
     playing = _both_sides([np.full(1, 1.0 / count) for count in take_counts])
     differences = model.Row(
@@ -104,8 +100,8 @@ def gather(profile: Profile, target: Target) -> Evidence:
         note=paired.note_index,
         n_notes=len(paired.notes),
         octave=octave,
-        smooth=basis,
-        wobble=wobble,
+        smooth=body_curve.smooth_columns(octave, *span),
+        wobble=body_curve.wobble_columns(octave, *span),
         scatter_variance=scale**2 * moderation * _both_sides(spread),
         error_variance=_both_sides([error**2 * part for error, part in zip(errors, spread, strict=True)]),
         tail_df=prior.tail_df + df,
@@ -131,9 +127,9 @@ def gather(profile: Profile, target: Target) -> Evidence:
 
 def _blended(means: list[Array], note_index: IntArray) -> Array:
     """Mean over a target's members in dB, each note of each member aligned by the median difference to the mean."""
-    stack = np.array(means)
+    stack: Array = np.array(means)
     if stack.shape[0] == 1:
-        return stack[0]
+        return means[0]
     centre = np.nanmean(stack, axis=0)
     for note in np.unique(note_index):
         here = note_index == note
@@ -144,7 +140,7 @@ def _blended(means: list[Array], note_index: IntArray) -> Array:
 
 
 def _both_sides(values: list[Array]) -> Array:
-    """Variance of instrument minus the mean of the target's members, from the variance of each; NaN: member lacks it."""
+    """Variance of instrument minus mean of the members, from the variance of each; NaN where a member lacks it."""
     members = np.array(values[1:])
     count = np.sum(np.isfinite(members), axis=0)
     return np.asarray(values[0] + np.nansum(members, axis=0) / count**2)
@@ -205,8 +201,8 @@ def _scatter_remarks(prior: ScatterPrior, take_counts: list[int]) -> tuple[str, 
     if max(take_counts) > 1:
         return ()
     return (
-        f"one take a side: how far the playing scatters is not measured here but taken from published repeats ({prior.group}); "
-        "two more takes a side would show this player's own",
+        "one take a side: how far the playing scatters is not measured here but taken from repeats by other players "
+        f"({prior.group}); two more takes a side would show this player's own",
     )
 
 

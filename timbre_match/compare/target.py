@@ -34,7 +34,7 @@ def blend(name: str, profiles: tuple[Profile, ...]) -> Target:
 
 
 def as_target(match: Profile | Target) -> Target:
-    """Return a target as it is, and a plain profile as a target with one member, named after its instrument and stage."""
+    """Return a target as it is; a plain profile is a target with one member, named after its instrument and stage."""
     if isinstance(match, Target):
         return match
     name = " ".join(part for part in (match.instrument, match.stage) if part)

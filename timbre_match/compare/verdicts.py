@@ -39,11 +39,13 @@ def adjusted_p(p: ArrayLike) -> Array:
 def equivalence_p(difference_db: ArrayLike, se_db: ArrayLike, margin_db: float, df: ArrayLike = np.inf) -> Array:
     """p-value of two one-sided tests that the difference lies within +-margin: the larger of the two.
 
-    Schuirmann, D. J. (1987), A comparison of the two one-sided tests procedure and the power approach, *J. Pharmacokinet.
-    Biopharm.* 15. `df` are the degrees of freedom of `se_db`; infinite ones give the normal distribution.
+    Schuirmann, D. J. (1987), A comparison of the two one-sided tests procedure and the power approach, *Journal of
+    Pharmacokinetics and Biopharmaceutics* 15. `df` are the degrees of freedom of `se_db`; infinite ones give the normal
+    distribution.
     """
     d, se = np.asarray(difference_db, dtype=np.float64), np.asarray(se_db, dtype=np.float64)
-    return np.asarray(stats.t.sf((margin_db - np.abs(d)) / se, df))
+    freedom = np.asarray(df, dtype=np.float64)
+    return np.asarray(stats.t.sf((margin_db - np.abs(d)) / se, freedom))
 
 
 def difference_p(difference_db: ArrayLike, se_db: ArrayLike) -> Array:

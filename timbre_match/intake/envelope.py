@@ -12,6 +12,8 @@ _STEADY_DB = 9.0
 _RINGS_DB = 40.0
 _ATTACK_S = 0.04
 _RELEASE_S = 0.03
+_EDGE_S = 0.004
+"""Next to a hard edge of the recording nothing can be read between the samples."""
 _AROUND_S = 0.2
 _DIP_DB = 16.0
 _STRIKE_S = 0.03
@@ -92,8 +94,8 @@ def steady_stretch(envelope: Envelope, begin_s: float, end_s: float, *, ringing:
     return _within(
         (a + first) * step,
         (a + last) * step,
-        0.0 if opens_inside else _ATTACK_S,
-        0.0 if closes_inside else _RELEASE_S,
+        _EDGE_S if opens_inside else _ATTACK_S,
+        _EDGE_S if closes_inside else _RELEASE_S,
     )
 
 

@@ -27,6 +27,7 @@ _ABOVE_FLOOR_DB = 6.0
 _STEP_CENTS = 65.0
 _STEP_FRAMES = 8
 _SETTLE_S = 1.5
+_BLUR_FRAMES = 3
 _NAMED_WITHIN_CENTS = 70.0
 
 
@@ -102,7 +103,13 @@ def held_notes(
             f0_hz *= _factor_to(f0_hz, wanted_hz)
         settled.append((first, last, f0_hz))
     found = []
-    for first, last, f0_hz in _merged(settled, envelope):
+    merged = _merged(settled, envelope)
+    edges = [0, *(last for _, last, _ in merged), len(track.time_s) - 1]
+    starts = [*(first for first, _, _ in merged), len(track.time_s) - 1]
+    for index, (first, last, f0_hz) in enumerate(merged):
+        # The window blurs periodicity at both ends of a note; the level tells better where it begins and ends.
+        first = max(first - _BLUR_FRAMES, edges[index])
+        last = min(last + _BLUR_FRAMES, starts[index + 1])
         note = _measured(signal, rate, track, envelope, first, last, f0_hz, a4_hz)
         if note is not None and (wanted_hz is None or _is_one_of(note.f0_hz, wanted_hz)):
             found.append(note)

@@ -20,7 +20,7 @@ HIGHEST_HZ = 4500.0
 
 HOP_S = 0.02
 _FRAME_S = 0.1
-_BAND_HZ = 4500.0
+_BAND_HZ = 5500.0
 _CANDIDATES = 6
 # All below were chosen on 357 real single notes of 18 instruments: the fewest wrong octaves in single frames.
 _COMPRESSION = 0.5
@@ -73,10 +73,11 @@ def reduce_rate(samples: NDArray[np.float64], sample_rate_hz: int) -> tuple[NDAr
     factor = max(1, int(sample_rate_hz // 14000))
     if factor == 1:
         return samples, float(sample_rate_hz)
-    half = 8 * factor
-    taps = scipy.signal.firwin(2 * half + 1, 0.9 / factor)
+    half = 16 * factor
+    # Flat to 0.85 of the new Nyquist frequency, -80 dB from there on, so that no harmonic comes back mirrored.
+    taps = scipy.signal.firwin(2 * half + 1, 0.92 / factor, window=("kaiser", 8.0))
     count = -(-len(samples) // factor)
-    filtered = scipy.signal.upfirdn(taps, samples, down=1 if half % factor else factor)
+    filtered = scipy.signal.upfirdn(taps, samples, down=factor)
     return np.asarray(filtered[half // factor : half // factor + count]), sample_rate_hz / factor
 
 
@@ -125,7 +126,7 @@ def _autocorrelation(
     """Generalised autocorrelation at twice the rate, so that peaks between samples keep their height."""
     band = int(_BAND_HZ / rate * size)
     taper = np.ones(band, dtype=np.float32)
-    edge = band // 3
+    edge = band // 5
     taper[-edge:] = 0.5 + 0.5 * np.cos(np.pi * np.arange(edge) / edge)
     lags = int(2 * rate / LOWEST_HZ) + 3
     correlation = scipy.fft.irfft(power[:, :band] ** _COMPRESSION * taper, 2 * size, axis=1)[:, :lags]

@@ -260,7 +260,7 @@ def _choose_channel(channels: NDArray[np.float64], rate: int, channel: int | Non
 
 def _refuse_unusable(samples: NDArray[np.float64], rate: int, where: str) -> None:
     # NaN fails every comparison, so this finds it too.
-    if not (-_LARGEST_SAMPLE < samples.min() and samples.max() < _LARGEST_SAMPLE):
+    if not (samples.min() > -_LARGEST_SAMPLE and samples.max() < _LARGEST_SAMPLE):
         bad = np.flatnonzero(~(np.abs(samples) < _LARGEST_SAMPLE))
         raise RecordingError(
             f"{len(bad)} of {len(samples)} samples are not usable numbers, the first at {bad[0] / rate:.3f} s",

@@ -16,6 +16,7 @@ _HUM_FRAME_S = 1.0
 _LINE_ABOVE_FLOOR = 10.0**1.5
 _LINE_ABOVE_NEXT = 4.0
 _STEADY_LINE = 4.0
+_SAME_LINE_HZ = 1.2
 
 _FRAME_S = 0.18
 _FRAMES = 24
@@ -24,8 +25,6 @@ _EDGE_LOWEST_HZ = 7000.0
 _CODEC_USUAL_HZ = 14_500.0
 _EDGE_DROP_DB = 14.0
 _DEEP_DROP_DB = 20.0
-_NUMERICAL_FLOOR_DB = -135.0
-"""Single-precision transforms leave a floor of their own about this far below the strongest bin."""
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
@@ -85,14 +84,13 @@ def find_low_pass(spectrum: LongTermSpectrum) -> float | None:
     width = max(4, round(_BAND_HZ / spectrum.step_hz))
     bands = spectrum.power[: len(spectrum.power) // width * width].reshape(-1, width)
     floor_db = 10.0 * np.log10(np.quantile(bands, 0.25, axis=1) + 1e-30)
-    numerical_db = 10.0 * np.log10(spectrum.power.max() + 1e-30) + _NUMERICAL_FLOOR_DB
     band_hz = width * spectrum.step_hz
     edges = np.arange(max(20, int(_EDGE_LOWEST_HZ / band_hz)), len(floor_db) - 8)
     sums = np.concatenate([[0.0], np.cumsum(floor_db)])
     below_db = (sums[edges] - sums[edges - 2]) / 2.0
     before_db = (sums[edges - 4] - sums[edges - 20]) / 16.0
     drop_db = below_db - (sums[edges + 3] - sums[edges + 1]) / 2.0
-    falls = (drop_db > _EDGE_DROP_DB) & (below_db > numerical_db) & (below_db < before_db + 4.0)
+    falls = (drop_db > _EDGE_DROP_DB) & (below_db < before_db + 4.0)
     for at in sorted(np.flatnonzero(falls), key=lambda at: -drop_db[at]):
         lowest_db, low_db, high_db = np.quantile(floor_db[edges[at] + 1 :], [0.1, 0.75, 0.9])
         # Lower down, a high note's own spectrum may fall as fast: there the fall must be deep, and onto bare floor.
@@ -112,9 +110,9 @@ def find_mains_hum(
     """Find a series of lines at multiples of 50 or 60 Hz that stands all through the recording.
 
     The least power over all seconds of the recording is searched, since hum is always there and notes come and go.
-    Where some seconds are quiet, only these are searched. Where a note fills the whole recording, its strongest line
-    must not be a multiple of the mains frequency itself, or else note and hum cannot be told apart and none is
-    reported. Lines that swell or die with a note are the note's.
+    Where some seconds are quiet, only these are searched. The strongest line of all must not be a multiple of the
+    mains frequency itself, or else note and hum cannot be told apart and none is reported. Lines that swell or die
+    with a note are the note's.
 
     Parameters
     ----------
@@ -148,11 +146,10 @@ def find_mains_hum(
     power = (spectra.real**2 + spectra.imag**2) * (2.0 / float(window.sum()) ** 2)
     edges = np.round(np.stack([starts, starts + size]) * len(levels_db) / len(slow)).astype(np.int64)
     quiet = np.array([levels_db[first:last].max() < quiet_db for first, last in edges.T])
-    note_fills_all = not quiet.any()
-    searched = power if note_fills_all else power[quiet]
-    least, usual = searched.min(axis=0), np.percentile(searched, 30, axis=0)
+    least = (power[quiet] if quiet.any() else power).min(axis=0)
+    usual = np.percentile(power, 30, axis=0)
     for mains_hz in MAINS_HZ:
-        if note_fills_all and abs(note_hz - mains_hz * round(note_hz / mains_hz)) < 1.5:
+        if abs(note_hz - mains_hz * round(note_hz / mains_hz)) < _SAME_LINE_HZ:
             continue
         peaks = [_line_bin(least, usual, m * mains_hz, 0.1 + 0.1 * m, step_hz) for m in _HUM_MULTIPLES]
         found = [(m * mains_hz, peak) for m, peak in zip(_HUM_MULTIPLES, peaks, strict=True) if peak is not None]

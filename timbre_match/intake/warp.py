@@ -12,7 +12,11 @@ from numpy.typing import NDArray
 from scipy.interpolate import CubicSpline, PchipInterpolator
 
 _SPLINE_ORDER = 5
+_FADE_FROM, _FADE_TO = 0.27, 0.38
 _STEP_S = 0.01
+_SMOOTH_STEPS = 19
+_SMOOTH_S = 0.07
+_FEWEST_FOR_RIGID = 12
 _MOST_HARMONICS = 60
 
 
@@ -30,11 +34,11 @@ class Clock:
         self.f0_hz = f0_hz
         # A spline through the track; the monotone one where a cubic would swing through zero between far values.
         smooth = CubicSpline(time_s, f0_hz) if len(time_s) > 3 else PchipInterpolator(time_s, f0_hz)
-        phase = smooth.antiderivative()(time_s)
-        if np.any(np.diff(phase) <= 0.0):
+        if np.any(np.diff(smooth.antiderivative()(time_s)) <= 0.0):
             smooth = PchipInterpolator(time_s, f0_hz)
-            phase = smooth.antiderivative()(time_s)
-        self._phase = phase - phase[0]
+        # Integrated from the first time on, so that the phase is zero there.
+        self._phase_of_time = smooth.antiderivative()
+        self._phase = self._phase_of_time(time_s)
         self._time_of_phase = (
             CubicSpline(self._phase, time_s) if len(time_s) > 3 else PchipInterpolator(self._phase, time_s)
         )
@@ -57,9 +61,17 @@ class Clock:
         fine = np.interp(np.arange(count * points) * (knots / points), np.arange(count * knots + 1), coarse)
         return fine.reshape(count, points)
 
+    def phase_at(self, time_s: NDArray[np.float64]) -> NDArray[np.float64]:
+        """Phase in cycles since the first time, at any times in seconds between the first and the last."""
+        return np.asarray(self._phase_of_time(time_s))
+
     def corrected(self, time_s: NDArray[np.float64], relative: NDArray[np.float64]) -> "Clock":
-        """The clock with its fundamental raised by the fraction `relative`, given at `time_s` (shape (m,))."""
-        return Clock(self.time_s, self.f0_hz * (1.0 + np.interp(self.time_s, time_s, relative)))
+        """The clock with its fundamental raised by the fraction `relative`, given at `time_s` (shape (m,)).
+
+        Before the first and after the last of these times the fundamental stays as it is there.
+        """
+        f0_hz = self.f0_hz * (1.0 + np.interp(self.time_s, time_s, relative))
+        return Clock(self.time_s, np.interp(np.clip(self.time_s, time_s[0], time_s[-1]), self.time_s, f0_hz))
 
 
 def points_per_cycle(f0_hz: float, sample_rate_hz: float) -> int:
@@ -79,7 +91,8 @@ class BandLimited:
     samples : array, shape (n,)
     sample_rate_hz : float
     oversample : {1, 2}
-        1 saves half of the work where images matter less (-64 dB at a quarter of the sample rate).
+        1 saves work where the upper half of the band is not needed: there it is faded out, from 0.27 to 0.38 of the
+        sample rate, because its images would not be far enough down.
     """
 
     def __init__(self, samples: NDArray[np.float64], sample_rate_hz: float, *, oversample: int = 2) -> None:
@@ -88,13 +101,16 @@ class BandLimited:
         size += size % 2
         padded = np.zeros(size)
         padded[margin : margin + len(samples)] = samples
-        # Mirrored margins keep the ends from ringing.
+        # Point-mirrored margins go on without a step or a kink, so the ends do not ring.
         reach = min(margin, len(samples) - 1)
-        padded[margin - reach : margin] = samples[reach:0:-1]
-        padded[margin + len(samples) : margin + len(samples) + reach] = samples[-2 : -2 - reach : -1]
+        padded[margin - reach : margin] = 2.0 * samples[0] - samples[reach:0:-1]
+        padded[margin + len(samples) : margin + len(samples) + reach] = 2.0 * samples[-1] - samples[-2 : -2 - reach : -1]
         spectrum = scipy.fft.rfft(padded)
         basis = np.sinc(np.arange(len(spectrum)) / (size * oversample)) ** (_SPLINE_ORDER + 1)
         spectrum /= basis
+        if oversample == 1:
+            fade = np.clip((np.arange(len(spectrum)) / size - _FADE_FROM) / (_FADE_TO - _FADE_FROM), 0.0, 1.0)
+            spectrum *= 0.5 + 0.5 * np.cos(np.pi * fade)
         self._coefficients = scipy.fft.irfft(spectrum, size * oversample) * oversample
         self._scale = sample_rate_hz * oversample
         self._origin = margin * oversample
@@ -108,7 +124,7 @@ class BandLimited:
         return np.asarray(values.reshape(time_s.shape))
 
 
-def refine_clock(signal: BandLimited, clock: Clock, sample_rate_hz: float, *, rounds: int = 2) -> Clock:
+def refine_clock(signal: BandLimited, clock: Clock, sample_rate_hz: float) -> Clock:
     """Refine a clock with the phases of the note's own harmonics.
 
     In each round the note is read on its clock; what the phase of harmonic k still turns by from one stretch of
@@ -123,40 +139,84 @@ def refine_clock(signal: BandLimited, clock: Clock, sample_rate_hz: float, *, ro
         Right to within a few per cent.
     sample_rate_hz : float
         The rate of `signal` before oversampling.
-    rounds : int
 
     Returns
     -------
     Clock
+        Over the same stretch of time.
     """
-    for _ in range(rounds):
-        f0_hz = float(np.median(clock.f0_hz))
-        instants = clock.instants_s(points_per_cycle(f0_hz, sample_rate_hz))
-        per_step = max(1, round(_STEP_S * f0_hz))
+    clock = _without_jitter(clock)
+    f0_hz = float(np.median(clock.f0_hz))
+    points = points_per_cycle(f0_hz, sample_rate_hz)
+    usual = max(1, round(_STEP_S * f0_hz))
+    rigid = None
+    # The first steps are short: over 8 cycles even an error of 6 per cent cannot wrap.
+    for per_step in (min(usual, 8), usual, usual):
+        instants = clock.instants_s(points)
         steps = len(instants) // per_step
         if steps < 4:
             return clock
         coefficients = scipy.fft.rfft(signal.at(instants), axis=1)[: steps * per_step, 1 : _MOST_HARMONICS + 1]
         coefficients = coefficients.reshape(steps, per_step, -1).sum(axis=1)
-        turn = _common_turn(coefficients) / (2.0 * np.pi * per_step)
         starts = np.arange(steps) * per_step
         ends = np.minimum(starts + per_step, len(instants) - 1)
         centre_s = 0.5 * (instants[starts, 0] + instants[ends, 0])
-        clock = clock.corrected(0.5 * (centre_s[1:] + centre_s[:-1]), turn)
-    return clock
+        width = round(_SMOOTH_S * f0_hz / per_step) // 2 * 2 + 1
+        turn, smooth_turn = _common_turn(coefficients, width)
+        rigid = _rigid_clock(clock, centre_s, turn / (2.0 * np.pi))
+        relative = smooth_turn / (2.0 * np.pi * per_step)
+        clock = clock.corrected(0.5 * (centre_s[1:] + centre_s[:-1]), relative)
+    return rigid or clock
 
 
-def _common_turn(coefficients: NDArray[np.complex128]) -> NDArray[np.float64]:
-    """Phase in radians by which the fundamental turns from each row of harmonics to the next, shape (rows - 1,)."""
+def _rigid_clock(clock: Clock, centre_s: NDArray[np.float64], turn: NDArray[np.float64]) -> Clock | None:
+    """The clock of a perfectly steady or evenly drifting note, where nothing speaks against it; else None.
+
+    A cubic is fitted to the measured phase. What it leaves is white where it is noise, and hangs together from one
+    step to the next where it is vibrato or unsteadiness.
+    """
+    if len(centre_s) < _FEWEST_FOR_RIGID:
+        return None
+    middle_s = 0.5 * (clock.time_s[0] + clock.time_s[-1])
+    phase = clock.phase_at(centre_s) + np.concatenate([[0.0], np.cumsum(turn)])
+    fit = np.polynomial.Polynomial.fit(centre_s - middle_s, phase, 3)
+    rest = phase - fit(centre_s - middle_s)
+    hangs_together = float(rest[1:] @ rest[:-1]) / float(rest @ rest + 1e-300)
+    if hangs_together > 2.0 / np.sqrt(len(rest)):
+        return None
+    return Clock(clock.time_s, np.asarray(fit.deriv()(clock.time_s - middle_s)))
+
+
+def _without_jitter(clock: Clock) -> Clock:
+    """The clock every 10 ms, smoothed over what a frame-by-frame track cannot know.
+
+    The vibrato that this takes away too comes back with the refinement; jitter faster than that would stay.
+    """
+    count = max(4, int((clock.time_s[-1] - clock.time_s[0]) / _STEP_S) + 1)
+    time_s = np.linspace(clock.time_s[0], clock.time_s[-1], count)
+    width = min(_SMOOTH_STEPS, count // 2 * 2 - 1)
+    weight = scipy.signal.get_window("hann", width + 2, fftbins=False)[1:-1]
+    raw = np.interp(time_s, clock.time_s, clock.f0_hz)
+    return Clock(time_s, scipy.ndimage.convolve1d(raw, weight / weight.sum(), mode="nearest"))
+
+
+def _common_turn(
+    coefficients: NDArray[np.complex128], width: int
+) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    """Phase in radians by which the fundamental turns from each row of harmonics to the next, shape (rows - 1,).
+
+    As measured, and smoothed over `width` rows (an odd number; under five nothing is smoothed).
+    """
     step = coefficients[1:] * coefficients[:-1].conj()
     k = np.arange(1, step.shape[1] + 1)
-    turn = np.zeros(len(step))
+    smooth = np.zeros(len(step))
     # Low harmonics first: theirs cannot wrap while the clock is still far off.
     for highest in (3, 9, 27, _MOST_HARMONICS):
         order = k[:highest]
-        rest = step[:, :highest] * np.exp(-1j * np.outer(turn, order))
+        rest = step[:, :highest] * np.exp(-1j * np.outer(smooth, order))
         weight = np.abs(rest)
-        turn += (weight * order * np.angle(rest)).sum(axis=1) / ((weight * order**2).sum(axis=1) + 1e-300)
-        if len(turn) >= 7:
-            turn = scipy.signal.savgol_filter(scipy.ndimage.median_filter(turn, 3, mode="nearest"), 7, 3, mode="nearest")
-    return np.asarray(turn)
+        turn = smooth + (weight * order * np.angle(rest)).sum(axis=1) / ((weight * order**2).sum(axis=1) + 1e-300)
+        smooth = turn
+        if 5 <= width <= len(turn):
+            smooth = scipy.signal.savgol_filter(scipy.ndimage.median_filter(turn, 3, mode="nearest"), width, 3)
+    return turn, smooth
