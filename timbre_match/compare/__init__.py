@@ -1,7 +1,27 @@
 """Profile and target to comparison."""
 
-from timbre_match.compare.comparison import compare, tolerance_db
-from timbre_match.compare.records import Comparison
-from timbre_match.compare.target import Target, blend
+from typing import TYPE_CHECKING
 
-__all__ = ["Comparison", "Target", "blend", "compare", "tolerance_db"]
+if TYPE_CHECKING:
+    import numpy as np
+
+    from timbre_match.compare.records import Comparison
+    from timbre_match.compare.target import Target
+    from timbre_match.measure.profile import Profile
+
+
+def compare(
+    profile: "Profile",
+    target: "Profile | Target",
+    *,
+    margin_db: float = 3.0,
+    rng: "np.random.Generator | None" = None,
+) -> "Comparison":
+    """Compare an instrument with a target; see :func:`timbre_match.compare.comparison.compare`.
+
+    The room has the same name as what is done in it, so this door stands in its ``__init__``; what is behind it is
+    imported when it is used.
+    """
+    from timbre_match.compare.comparison import compare as compare_in_full
+
+    return compare_in_full(profile, target, margin_db=margin_db, rng=rng)

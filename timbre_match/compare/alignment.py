@@ -21,8 +21,9 @@ IntArray = NDArray[np.int64]
 SET_ASIDE_WEIGHT = 0.3
 """A level whose robust weight is below this counts as set aside; at a typical tail it lies 4 scales off its fellows."""
 
-_ROUNDS = 12
+_ROUNDS = 8
 _PRIOR_SCALE_DF = 10.0
+_SCALE_ROUNDS = 3
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
@@ -115,7 +116,7 @@ def pair(instrument: Profile, members: tuple[Profile, ...]) -> Pairing:
 
     own = stacked(ours)
     other = [stacked(member) for member in theirs]
-    keep = _heard_often(own[0]) & np.any([_heard_often(member[0]) for member in other], axis=0)
+    keep = _heard_often(own[0], own[2]) & np.any([_heard_often(member[0], member[2]) for member in other], axis=0)
     lone = int(np.sum(np.any(np.isfinite(own[0]), axis=0) & ~keep))
     if not np.any(keep):
         raise ComparisonError(
@@ -167,9 +168,15 @@ def align_takes(
     scale_db : array, shape (n_harmonics,)
         Prior scatter of each harmonic in a single take, dB.
     """
-    fit = _fit_notes(level_db, note_index, octave, prior, scale_db)
-    factor = _scale_factor(fit.variance_ratio, fit.df)
-    return _fit_notes(level_db, note_index, octave, prior, scale_db * math.sqrt(factor))
+    scale = scale_db
+    fit = _fit_notes(level_db, note_index, octave, prior, scale)
+    for _ in range(_SCALE_ROUNDS if np.any(fit.df > 0) else 0):
+        # The ratio is relative to the scale in use; the prior's own scale counts as ten degrees of freedom.
+        ratio = fit.variance_ratio * (scale / scale_db) ** 2
+        factor = (_PRIOR_SCALE_DF + np.sum(fit.df * ratio)) / (_PRIOR_SCALE_DF + np.sum(fit.df))
+        scale = scale_db * math.sqrt(float(factor))
+        fit = _fit_notes(level_db, note_index, octave, prior, scale)
+    return fit
 
 
 def _fit_notes(
@@ -191,8 +198,8 @@ def _fit_notes(
         repeated = count > 1
         plain = block - gain[:, None] - base
         straight = np.where(heard & repeated, plain - np.outer(tilt, x), 0.0)
-        parameters = 2 * max(np.count_nonzero(np.any(heard, axis=1)) - 1, 0)
-        share = 1.0 - min(parameters / max(np.sum(count[repeated] - 1), 1), 0.8)
+        parameters = 2 * max(int(np.count_nonzero(np.any(heard, axis=1))) - 1, 0)
+        share = 1.0 - min(parameters / max(float(np.sum(count[repeated] - 1)), 1.0), 0.8)
         df[here] = np.where(repeated, (count - 1) * share, 0.0)
         squares = np.sum(w * straight**2, axis=0)
         ratio[here] = np.divide(squares, df[here], out=np.zeros(here.size), where=df[here] > 0) / scale_db[here] ** 2
@@ -242,11 +249,6 @@ def _fit_note(
     return gain, tilt, np.where(count > 0, base, np.nan), weight
 
 
-def _scale_factor(ratio: Array, df: Array) -> float:
-    """Return the common factor on the prior variance, the prior itself counting as ten degrees of freedom."""
-    return float((_PRIOR_SCALE_DF + np.sum(df * ratio)) / (_PRIOR_SCALE_DF + np.sum(df)))
-
-
 def _notes_of_take(take: Take) -> dict[str, tuple[Array, Array, float]]:
     """Levels, standard errors and mean fundamental by note name; repeated notes are averaged."""
     found: dict[str, tuple[Array, Array, float]] = {}
@@ -275,9 +277,10 @@ def _padded(entry: tuple[Array, Array, float] | None, size: int) -> tuple[Array,
     return level, se, f0
 
 
-def _heard_often(level_db: Array) -> NDArray[np.bool_]:
+def _heard_often(level_db: Array, f0_hz: Array) -> NDArray[np.bool_]:
+    """Which harmonics are heard in at least half of the takes that hold their note."""
     heard = np.sum(np.isfinite(level_db), axis=0)
-    return np.asarray((heard > 0) & (2 * heard >= level_db.shape[0]))
+    return np.asarray((heard > 0) & (2 * heard >= np.sum(np.isfinite(f0_hz), axis=0)))
 
 
 def _mean_log(values: Array) -> Array:

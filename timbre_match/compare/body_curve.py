@@ -27,6 +27,7 @@ WOBBLE_KNOTS_PER_OCTAVE = 2.0
 CORRELATION_OCTAVES = 0.25
 
 _DEGREE = 3
+_SCALE_POINTS = 400
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -65,14 +66,20 @@ def smooth_columns(octave: ArrayLike, low: float, high: float) -> Array:
     basis = spline_basis(octave, low, high, KNOTS_PER_OCTAVE)
     place = np.arange(basis.shape[1]) / KNOTS_PER_OCTAVE
     scaled = np.sqrt(5.0) * np.abs(np.subtract.outer(place, place)) / CORRELATION_OCTAVES
-    correlation = (1.0 + scaled + scaled**2 / 3.0) * np.exp(-scaled)
-    return np.asarray(basis @ np.linalg.cholesky(correlation))
+    root = np.linalg.cholesky((1.0 + scaled + scaled**2 / 3.0) * np.exp(-scaled))
+    return np.asarray(basis @ root / _mean_deviation(low, high, KNOTS_PER_OCTAVE, root))
 
 
 def wobble_columns(octave: ArrayLike, low: float, high: float) -> Array:
-    """Smooth columns, two an octave, scaled so that unit coefficients make a wobble of unit variance on average."""
+    """Smooth columns, two an octave, whose independent unit-variance coefficients make a wobble of unit variance."""
     basis = spline_basis(octave, low, high, WOBBLE_KNOTS_PER_OCTAVE)
-    return np.asarray(basis / np.sqrt(np.mean(np.sum(basis**2, axis=1))))
+    return np.asarray(basis / _mean_deviation(low, high, WOBBLE_KNOTS_PER_OCTAVE, np.eye(basis.shape[1])))
+
+
+def _mean_deviation(low: float, high: float, knots_per_octave: float, root: Array) -> float:
+    """Root-mean-square over the range of what unit coefficients make; the range decides, not where harmonics lie."""
+    everywhere = spline_basis(np.linspace(low, high, _SCALE_POINTS), low, high, knots_per_octave) @ root
+    return float(np.sqrt(np.mean(np.sum(everywhere**2, axis=1))))
 
 
 def frequency_grid(freq_hz: Array) -> Array:

@@ -38,7 +38,7 @@ DEFAULT_MARGIN_DB = 3.0
 
 _SEED = 20261
 _Z95 = 1.959963984540054
-_CORE = 0.7
+_CORE = 0.9
 
 
 def compare(
@@ -194,7 +194,7 @@ def _curve(grid_hz: Array, estimates: Estimates) -> tuple[CurvePoint, ...]:
 def _regions(evidence: Evidence, estimates: Estimates, curve: tuple[CurvePoint, ...]) -> tuple[Region, ...]:
     """Stretches where the simultaneous band leaves zero and at least one harmonic was measured.
 
-    A region's size is the mean of the curve over its core, where it exceeds 0.7 of its largest value in the region.
+    A region's size is the mean of the curve over its core, where it exceeds 0.9 of its largest value in the region.
     """
     low = np.array([point.simultaneous_low_db for point in curve])
     high = np.array([point.simultaneous_high_db for point in curve])

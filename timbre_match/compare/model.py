@@ -53,8 +53,8 @@ class Row:
         Variance of the scatter at unit scatter factor, dB^2.
     error_variance : array, shape (n,)
         Variance of the measurement itself, dB^2.
-    tail_df : array, shape (n,)
-        Degrees of freedom of the scatter's tails.
+    repeat_df : array, shape (n,)
+        Degrees of freedom of what repeats show of each harmonic's scatter.
     playing : float
         Variance of a take-wide effect in this row, in units of that of one take.
     count : float
@@ -69,7 +69,7 @@ class Row:
     wobble: Array
     scatter_variance: Array
     error_variance: Array
-    tail_df: Array
+    repeat_df: Array
     playing: float
     count: float = 1.0
 
@@ -282,16 +282,18 @@ def _maximise(differences: Row, repeats: list[Row], prior: Prior, weights: Weigh
 def _updated_weights(row: Row, solution: Solution, old: Weights) -> Weights:
     """Return the expected precisions given the present residuals.
 
-    Own deviation and scatter of a harmonic share one weight, since a single take cannot tell which of the two is odd.
-    The more degrees of freedom speak for the scatter, the less is laid at its door.
+    What a harmonic deviates beyond the common variances goes to its own deviation and to its scatter. A single take
+    cannot tell which of the two is odd, and each gets its share; where repeats show the scatter, it gets little.
     """
     rho = solution.shrinkage
     own = rho / (1.0 - rho) * solution.scatter_variance * old.own
     scatter = (solution.scatter_variance - row.error_variance) * old.scatter
     ratio = (solution.residual_db**2 + solution.leverage) / (own + scatter + row.error_variance)
-    weight = (_TAIL_DF + 1.0) / (_TAIL_DF + ratio)
-    share = _TAIL_DF / row.tail_df
-    return Weights(own=weight, scatter=1.0 / (1.0 + (1.0 / weight - 1.0) * np.minimum(share, 1.0)))
+    excess = (_TAIL_DF + ratio) / (_TAIL_DF + 1.0) - 1.0
+    share = np.where(excess > 0, 1.0 / (1.0 + row.repeat_df**2), 1.0)
+    to_scatter = share * excess * scatter
+    to_own = excess * (own + scatter) - to_scatter
+    return Weights(own=own / (own + to_own), scatter=scatter / (scatter + to_scatter))
 
 
 def _laplace_root(differences: Row, repeats: list[Row], prior: Prior, weights: Weights, theta: Array) -> Array:

@@ -104,7 +104,7 @@ def gather(profile: Profile, target: Target) -> Evidence:
         wobble=body_curve.wobble_columns(octave, *span),
         scatter_variance=scale**2 * moderation * _both_sides(spread),
         error_variance=_both_sides([error**2 * part for error, part in zip(errors, spread, strict=True)]),
-        tail_df=prior.tail_df + df,
+        repeat_df=df,
         playing=float(playing[0]),
     )
     return Evidence(
@@ -175,7 +175,7 @@ def _repeat_rows(aligned: AlignedTakes, whole: model.Row, scale: Array) -> list[
                     wobble=whole.wobble[here],
                     scatter_variance=(scale**2 * (1.0 - 1.0 / np.maximum(count, 2)))[here] / weight[here],
                     error_variance=np.zeros(here.size),
-                    tail_df=whole.tail_df[here],
+                    repeat_df=whole.repeat_df[here],
                     playing=1.0 - 1.0 / takes,
                     count=1.0 - 1.0 / takes,
                 )

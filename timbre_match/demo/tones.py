@@ -5,6 +5,8 @@ from pathlib import Path
 from timbre_match.demo.workshop import STAGES, TAKES, Stage, file_name
 from timbre_match.errors import TimbreMatchError
 
+TARGET_FILE = "heron_target.json"
+
 _FOLDER = "reference_tones"
 _PLACES = (Path(__file__).parent / _FOLDER, Path(__file__).parents[2] / _FOLDER)
 
@@ -30,6 +32,17 @@ def tones_folder() -> Path:
             f"python -m timbre_match.demo.render --out {_FOLDER}"
         ),
     )
+
+
+def target_file() -> Path:
+    """Find the saved target that comes with the recordings: the Heron, measured from its three takes.
+
+    Raises
+    ------
+    TimbreMatchError
+        If the recordings cannot be found.
+    """
+    return tones_folder() / TARGET_FILE
 
 
 def takes() -> dict[Stage, tuple[Path, ...]]:

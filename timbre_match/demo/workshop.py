@@ -13,6 +13,7 @@ from numpy.typing import ArrayLike, NDArray
 from timbre_match.demo.body import Body, Change, violin_body
 from timbre_match.demo.bowed_string import VIOLIN_STRINGS, BowedString
 
+FAMILY = "violin"
 TAKES = 3
 """Takes at each stage."""
 

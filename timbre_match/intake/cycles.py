@@ -57,7 +57,7 @@ def cut_cycles(recording: Recording, note: HeldNote) -> Cycles:
     signal = BandLimited(recording.samples[first:last], rate)
     clock = Clock(note.track_s, note.track_hz)
     instants = clock.instants_s(points_per_cycle(note.f0_hz, rate))
-    # At the upper edge of a codec's band the level falls before it is gone; the Nyquist frequency needs room for vibrato.
+    # The Nyquist frequency needs room for vibrato; at the edge of a codec's band the level falls before it is gone.
     highest_hz = 0.98 * rate / 2 * note.f0_hz / max(note.f0_hz, float(note.track_hz.max()))
     if recording.low_pass_hz is not None:
         highest_hz = min(highest_hz, 0.97 * recording.low_pass_hz)

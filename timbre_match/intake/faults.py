@@ -240,12 +240,14 @@ def decay_times_s(levels_db: NDArray[np.float64], loud_db: float) -> list[float]
         slope, unevenness_db = _straight_line(fall)
         half = len(fall) // 2
         early, late = _straight_line(fall[:half])[0], _straight_line(fall[half:])[0]
+        # The line must set out from where the note stopped, or this is a soft note that follows a loud one.
+        sets_out = float(fall.mean()) - 0.5 * slope * _HOP_S * len(fall) > np.median(held) - 13.0
         # A room goes on falling as it began; a stroke that dies and then stops falls off a cliff.
         expected_hops = -10.0 / slope / _HOP_S if slope < 0.0 else np.inf
         cliff = bool(np.any(smooth_db[start + len(fall) :][: int(min(0.5 * expected_hops, 1e6))] < fall[-1] - 10.0))
         was_held = abs(_straight_line(held)[0]) < 0.25 * abs(slope) and np.ptp(held) < 8.0
         # One note's fall in a room is uneven by a few dB; a fade of any usual shape is 4 times as steep at its end.
-        if was_held and not cliff and unevenness_db < 3.5 and 1.9 * early < late < 0.4 * early:
+        if was_held and sets_out and not cliff and unevenness_db < 3.5 and 1.9 * early < late < 0.4 * early:
             decays_s.append(-60.0 / slope)
             done = start + len(fall)
     return decays_s

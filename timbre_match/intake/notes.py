@@ -22,7 +22,9 @@ _SHORTEST_SEGMENT_S = 0.1
 _SHORTEST_S = 0.06
 _FEWEST_CYCLES = 4
 _VOICED = 0.35
-_QUIETEST_DB = 50.0
+_QUIETEST_DB = 40.0
+_TAIL_DB = 15.0
+_SCRAP_S = 0.2
 _ABOVE_FLOOR_DB = 6.0
 _STEP_CENTS = 65.0
 _STEP_FRAMES = 8
@@ -103,7 +105,7 @@ def held_notes(
             f0_hz *= _factor_to(f0_hz, wanted_hz)
         settled.append((first, last, f0_hz))
     found = []
-    merged = _merged(settled, envelope)
+    merged = _merged(settled, track, envelope)
     edges = [0, *(last for _, last, _ in merged), len(track.time_s) - 1]
     starts = [*(first for first, _, _ in merged), len(track.time_s) - 1]
     for index, (first, last, f0_hz) in enumerate(merged):
@@ -113,6 +115,7 @@ def held_notes(
         note = _measured(signal, rate, track, envelope, first, last, f0_hz, a4_hz)
         if note is not None and (wanted_hz is None or _is_one_of(note.f0_hz, wanted_hz)):
             found.append(note)
+    found = _without_scraps(found)
     if not found:
         raise NoHeldNoteError(
             "no held note found" if notes is None else f"none of the notes {' '.join(notes)} found",
@@ -162,7 +165,7 @@ def _pitch_steps(track: PitchTrack, voiced: NDArray[np.bool_]) -> NDArray[np.int
     peak = (step > _STEP_CENTS) & (step == scipy.ndimage.maximum_filter1d(step, 2 * width + 1))
     # A plateau of equal medians is one step, at its middle.
     labels, count = scipy.ndimage.label(peak)
-    return np.array([int(round(float(np.mean(np.nonzero(labels == i + 1)[0])))) for i in range(count)], dtype=np.int64)
+    return np.array([round(float(np.mean(np.nonzero(labels == i + 1)[0]))) for i in range(count)], dtype=np.int64)
 
 
 def _settled_hz(signal: BandLimited, rate: float, track: PitchTrack, first: int, last: int) -> float:
@@ -174,8 +177,14 @@ def _settled_hz(signal: BandLimited, rate: float, track: PitchTrack, first: int,
     return float(np.median(clock.f0_hz))
 
 
-def _merged(segments: list[tuple[int, int, float]], envelope: Envelope) -> list[tuple[int, int, float]]:
+def _merged(
+    segments: list[tuple[int, int, float]], track: PitchTrack, envelope: Envelope
+) -> list[tuple[int, int, float]]:
     """Segments with neighbours joined that turned out to be one note: the track had slipped an octave between them."""
+
+    def peak_db(first: int, last: int) -> float:
+        return float(track.level_db[first : last + 1].max())
+
     joined: list[tuple[int, int, float]] = []
     for first, last, f0_hz in segments:
         if joined:
@@ -184,6 +193,10 @@ def _merged(segments: list[tuple[int, int, float]], envelope: Envelope) -> list[
             same = abs(units.cents_between(f0_hz, before_hz)) < _STEP_CENTS
             if first - until <= 2 and same and not renewed:
                 joined[-1] = (before, last, f0_hz if last - first > until - before else before_hz)
+                continue
+            # What is left of a note once most of it has died away is no new note.
+            tail = peak_db(first, last) < peak_db(before, until) - _TAIL_DB
+            if first - until <= 2 and tail and not renewed:
                 continue
         joined.append((first, last, f0_hz))
     return joined
@@ -227,6 +240,22 @@ def _measured(
     )
 
 
+def _without_scraps(notes: list[HeldNote]) -> list[HeldNote]:
+    """The notes less what an attack or a release left: bits of under 0.2 s beside a note of thrice the length."""
+    kept = []
+    for index, note in enumerate(notes):
+        length_s = note.end_s - note.start_s
+        beside = [other for other in notes[max(0, index - 1) : index + 2] if other is not note]
+        scrap = length_s < _SCRAP_S and any(
+            max(other.start_s - note.end_s, note.start_s - other.end_s) < _SCRAP_S
+            and other.end_s - other.start_s > 3.0 * length_s
+            for other in beside
+        )
+        if not scrap:
+            kept.append(note)
+    return kept
+
+
 def _middle_hz(f0_hz: NDArray[np.float64], strength: NDArray[np.float64]) -> float:
     """Median of the track, weighted by strength."""
     order = np.argsort(f0_hz)
@@ -243,7 +272,7 @@ def _folded(f0_hz: NDArray[np.float64], around_hz: float) -> NDArray[np.float64]
     if not good.any():
         return np.full(len(f0_hz), around_hz)
     index = np.arange(len(f0_hz))
-    return np.interp(index, index[good], (f0_hz * factors[best])[good])
+    return np.asarray(np.interp(index, index[good], (f0_hz * factors[best])[good]))
 
 
 def _loudest_part(level_db: NDArray[np.float64]) -> slice:

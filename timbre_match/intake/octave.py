@@ -70,9 +70,7 @@ def _better_factor(signal: BandLimited, sample_rate_hz: float, clock: Clock) -> 
     return 1.0
 
 
-def _block_spectrum(
-    signal: BandLimited, sample_rate_hz: float, clock: Clock
-) -> tuple[NDArray[np.float64] | None, int]:
+def _block_spectrum(signal: BandLimited, sample_rate_hz: float, clock: Clock) -> tuple[NDArray[np.float64] | None, int]:
     """Mean power spectrum of Hann blocks, and cycles per block (bins per harmonic); None for too few cycles."""
     f0_hz = float(np.median(clock.f0_hz))
     points = points_per_cycle(f0_hz, sample_rate_hz)

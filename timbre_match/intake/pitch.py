@@ -137,9 +137,7 @@ def _autocorrelation(
     return correlation / weight, 2 * rate
 
 
-def _candidates(
-    correlation: NDArray[np.float32], rate: float
-) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+def _candidates(correlation: NDArray[np.float32], rate: float) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
     """Frequencies in Hz and peak heights, shape (n_frames, _CANDIDATES), of the best peaks; height 0 where none."""
     left, middle, right = correlation[:, :-2], correlation[:, 1:-1], correlation[:, 2:]
     peak = (middle > left) & (middle >= right) & (middle > _SMALLEST_PEAK)

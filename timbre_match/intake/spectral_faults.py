@@ -146,8 +146,9 @@ def find_mains_hum(
     power = (spectra.real**2 + spectra.imag**2) * (2.0 / float(window.sum()) ** 2)
     edges = np.round(np.stack([starts, starts + size]) * len(levels_db) / len(slow)).astype(np.int64)
     quiet = np.array([levels_db[first:last].max() < quiet_db for first, last in edges.T])
-    least = (power[quiet] if quiet.any() else power).min(axis=0)
-    usual = np.percentile(power, 30, axis=0)
+    # Between notes hum keeps its level; under notes they may cover it for most of the time.
+    searched, share = (power[quiet], 60) if quiet.any() else (power, 30)
+    least, usual = searched.min(axis=0), np.percentile(searched, share, axis=0)
     for mains_hz in MAINS_HZ:
         if abs(note_hz - mains_hz * round(note_hz / mains_hz)) < _SAME_LINE_HZ:
             continue

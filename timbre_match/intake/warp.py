@@ -4,6 +4,8 @@ On that clock a note with vibrato and drift becomes strictly periodic, N points 
 phase of the fundamental). The phase comes from the pitch track first and is then refined with the note's own harmonics.
 """
 
+from typing import Final
+
 import numpy as np
 import scipy.fft
 import scipy.ndimage
@@ -11,7 +13,7 @@ import scipy.signal
 from numpy.typing import NDArray
 from scipy.interpolate import CubicSpline, PchipInterpolator
 
-_SPLINE_ORDER = 5
+_SPLINE_ORDER: Final = 5
 _FADE_FROM, _FADE_TO = 0.27, 0.38
 _STEP_S = 0.01
 _SMOOTH_STEPS = 19
@@ -59,7 +61,7 @@ class Clock:
         knots = min(points, 16)
         coarse = self._time_of_phase(np.arange(count * knots + 1) / knots)
         fine = np.interp(np.arange(count * points) * (knots / points), np.arange(count * knots + 1), coarse)
-        return fine.reshape(count, points)
+        return np.asarray(fine.reshape(count, points))
 
     def phase_at(self, time_s: NDArray[np.float64]) -> NDArray[np.float64]:
         """Phase in cycles since the first time, at any times in seconds between the first and the last."""
@@ -104,7 +106,9 @@ class BandLimited:
         # Point-mirrored margins go on without a step or a kink, so the ends do not ring.
         reach = min(margin, len(samples) - 1)
         padded[margin - reach : margin] = 2.0 * samples[0] - samples[reach:0:-1]
-        padded[margin + len(samples) : margin + len(samples) + reach] = 2.0 * samples[-1] - samples[-2 : -2 - reach : -1]
+        padded[margin + len(samples) : margin + len(samples) + reach] = (
+            2.0 * samples[-1] - samples[-2 : -2 - reach : -1]
+        )
         spectrum = scipy.fft.rfft(padded)
         basis = np.sinc(np.arange(len(spectrum)) / (size * oversample)) ** (_SPLINE_ORDER + 1)
         spectrum /= basis
@@ -200,9 +204,7 @@ def _without_jitter(clock: Clock) -> Clock:
     return Clock(time_s, scipy.ndimage.convolve1d(raw, weight / weight.sum(), mode="nearest"))
 
 
-def _common_turn(
-    coefficients: NDArray[np.complex128], width: int
-) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+def _common_turn(coefficients: NDArray[np.complex128], width: int) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
     """Phase in radians by which the fundamental turns from each row of harmonics to the next, shape (rows - 1,).
 
     As measured, and smoothed over `width` rows (an odd number; under five nothing is smoothed).

@@ -87,6 +87,21 @@ def write_folder_whole(folder: str | Path, files: Mapping[str, bytes]) -> None:
             shutil.rmtree(temporary, ignore_errors=True)
 
 
+def make_folder(folder: str | Path) -> None:
+    """Make a folder, and those above it, where they are missing.
+
+    Raises
+    ------
+    OutputError
+        If it cannot be made, or a file stands in its place.
+    """
+    folder = Path(folder)
+    with _plain_errors(folder):
+        if folder.exists() and not folder.is_dir():
+            raise OutputError("this is a file, so no folder can be made here", where=str(folder))
+        folder.mkdir(parents=True, exist_ok=True)
+
+
 def _temporary_beside(place: Path) -> Path:
     """Give a name in the same folder, since only within one file system can a move be done in one step."""
     return place.parent / f".timbre-match-{secrets.token_hex(8)}.part"

@@ -101,9 +101,7 @@ def _overlap_gains(window: NDArray[np.float64], hop: int, blocks: int) -> tuple[
     return linear / blocks**2, square / blocks**2
 
 
-def _floor(
-    power: NDArray[np.float64], per_block: int, count: int, shape: float
-) -> tuple[NDArray[np.float64], float]:
+def _floor(power: NDArray[np.float64], per_block: int, count: int, shape: float) -> tuple[NDArray[np.float64], float]:
     """Noise power per bin around each harmonic, and the degrees of freedom behind it.
 
     The median over the bins of the gaps on both sides is not moved by a sympathetic string or a hum in one of them; its

@@ -4,13 +4,14 @@ Each function returns something that a rich console prints, at 60 columns as wel
 Names come from the user's files and hands: they are made plain and never read as markup.
 """
 
+import io
 import math
 from collections import Counter
 from collections.abc import Iterable, Sequence
 from typing import Final
 
 import numpy as np
-from rich.console import Group, RenderableType
+from rich.console import Console, Group, RenderableType
 from rich.padding import Padding
 from rich.table import Table
 from rich.text import Text
@@ -31,6 +32,15 @@ _SOURCE_WORDS: Final = {
     "prior": "published figures, because a single take cannot show it",
     "both": "the takes together with published figures",
 }
+
+
+def as_text(contents: Iterable[RenderableType], width: int = 100) -> str:
+    """Print what the functions below return to plain text of `width` columns, without colour."""
+    page = io.StringIO()
+    console = Console(file=page, width=width, color_system=None, highlight=False, markup=False, emoji=False)
+    for content in contents:
+        console.print(content)
+    return page.getvalue()
 
 
 def held_notes_table(recording: Recording, notes: Sequence[HeldNote]) -> RenderableType:

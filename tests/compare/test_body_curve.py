@@ -1,0 +1,76 @@
+import numpy as np
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+from scipy import stats
+
+from timbre_match.compare.body_curve import (
+    frequency_grid,
+    reference_weights,
+    simultaneous_factor,
+    smooth_columns,
+    spline_basis,
+    stretches,
+    wobble_columns,
+)
+
+GRID = np.geomspace(200.0, 8000.0, 128)
+
+
+@given(st.lists(st.floats(-3.0, 3.0), min_size=1, max_size=30))
+def test_splines_sum_to_one(octave: list[float]) -> None:
+    assert np.sum(spline_basis(octave, -3.0, 3.0, 6.0), axis=1) == pytest.approx(1.0)
+
+
+def test_splines_reproduce_a_straight_line() -> None:
+    # De Boor: cubic splines hold polynomials up to degree three; coefficients at the knots' averages give the line.
+    octave = np.linspace(-2.0, 2.0, 50)
+    basis = spline_basis(octave, -2.0, 2.0, 6.0)
+    step = 4.0 / 24
+    centres = -2.0 + step * (np.arange(basis.shape[1]) - 1)
+    assert basis @ centres == pytest.approx(octave, abs=1e-9)
+
+
+def test_columns_of_curve_and_wobble_have_unit_variance() -> None:
+    octave = np.linspace(-2.0, 2.0, 400)
+    assert np.mean(np.sum(smooth_columns(octave, -2.0, 2.0) ** 2, axis=1)) == pytest.approx(1.0, abs=1e-9)
+    assert np.mean(np.sum(wobble_columns(octave, -2.0, 2.0) ** 2, axis=1)) == pytest.approx(1.0, abs=1e-9)
+
+
+@given(st.floats(-20, 20), st.integers(0, 1000))
+def test_reference_follows_a_constant(constant: float, seed: int) -> None:
+    curve = np.random.default_rng(seed).normal(0, 2, GRID.size)
+    plain, moved = (reference_weights(one, GRID) for one in (curve, np.round(curve + constant, 9)))
+    assert np.sum(plain) == pytest.approx(1.0)
+    assert moved @ (curve + constant) == pytest.approx(plain @ curve + constant, abs=1e-6)
+
+
+@pytest.mark.parametrize("centre_hz", [400.0, 1000.0, 2500.0])
+def test_a_narrow_change_does_not_move_the_rest(centre_hz: float) -> None:
+    curve = np.where(np.abs(np.log2(GRID / centre_hz)) < 0.35, -5.0, 0.0)
+    assert reference_weights(curve, GRID) @ curve == pytest.approx(0.0, abs=1e-12)
+
+
+def test_one_point_is_its_own_reference() -> None:
+    assert reference_weights(np.array([2.0]), np.array([440.0])) == pytest.approx([1.0])
+
+
+def test_grid_spans_the_harmonics() -> None:
+    grid = frequency_grid(np.array([196.0, 440.0, 9800.0]))
+    assert grid[[0, -1]] == pytest.approx([196.0, 9800.0])
+    assert np.max(np.diff(np.log2(grid))) <= 1 / 24 + 1e-12
+
+
+def test_simultaneous_factor_of_independent_points() -> None:
+    # For n independent normals the factor solves (2 Phi(z) - 1)^n = 0.95 (Sidak 1967).
+    draws = np.random.default_rng(0).standard_normal((40_000, 20))
+    expected = stats.norm.ppf((1 + 0.95 ** (1 / 20)) / 2)
+    assert simultaneous_factor(draws, np.zeros(20), np.ones(20)) == pytest.approx(expected, abs=0.04)
+
+
+def test_stretches_are_runs_off_zero_on_one_side() -> None:
+    low = np.array([1.0, 0.5, -1.0, -4.0, -4.0, 0.1, -9.0])
+    high = np.array([2.0, 2.0, 1.0, -2.0, -1.0, 3.0, -8.0])
+    found = [(one.first, one.last) for one in stretches(low, high)]
+    assert found == [(0, 1), (3, 4), (5, 5), (6, 6)]
+    assert stretches(-np.ones(3), np.ones(3)) == []

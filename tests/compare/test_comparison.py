@@ -1,0 +1,152 @@
+import math
+from dataclasses import replace
+
+import numpy as np
+import pytest
+
+from tests.compare.simulated import NOTES, dip, profile
+from timbre_match.compare import compare
+from timbre_match.compare.records import Comparison
+from timbre_match.compare.target import blend
+from timbre_match.errors import ComparisonError
+from timbre_match.measure.profile import Take
+
+TARGET = profile(100)
+DIPPED = profile(7, change=dip(1000.0, -5.0, 0.7), own={("A4", 9): 12.0})
+
+
+@pytest.fixture(scope="module")
+def dipped() -> Comparison:
+    return compare(DIPPED, TARGET)
+
+
+@pytest.fixture(scope="module")
+def same() -> Comparison:
+    return compare(profile(8), TARGET)
+
+
+def test_a_known_dip_is_found_with_its_place_and_size(dipped: Comparison) -> None:
+    covering = [one for one in dipped.regions if one.low_hz <= 1000.0 <= one.high_hz]
+    assert len(covering) == 1
+    region = covering[0]
+    assert region.verdict == "weaker"
+    assert abs(math.log2(math.sqrt(region.low_hz * region.high_hz) / 1000.0)) < 1 / 6
+    assert abs(region.difference_db.value + 5.0) < 1.5
+    inside = [one for one in dipped.harmonics if region.low_hz <= one.freq_hz <= region.high_hz]
+    assert region.harmonics == len(inside)
+    assert region.notes == len({one.note for one in inside})
+
+
+def test_a_known_lone_harmonic_is_found(dipped: Comparison) -> None:
+    (odd,) = [one for one in dipped.harmonics if (one.note, one.k) == ("A4", 9)]
+    assert odd.verdict == "stronger"
+    assert odd.difference_db.low < 12.0
+    assert odd.difference_db.value > 6.0
+
+
+def test_an_instrument_like_its_target_shows_no_region(same: Comparison) -> None:
+    assert same.regions == ()
+    assert not any(one.verdict in ("stronger", "weaker") for one in same.harmonics)
+    assert same.colour_distance.distance_db.value < 1.0
+    assert same.closeness_percent.value > 90.0
+
+
+def test_intervals_surround_their_values(dipped: Comparison) -> None:
+    intervals = [dipped.colour_distance.distance_db, dipped.closeness_percent]
+    intervals += [one.difference_db for one in dipped.harmonics]
+    intervals += [one.difference_db for one in dipped.body_curve]
+    intervals += [one.difference_db for one in dipped.regions]
+    assert all(one.low <= one.value <= one.high for one in intervals)
+    assert all(one.simultaneous_low_db <= one.difference_db.low for one in dipped.body_curve)
+    assert all(one.simultaneous_high_db >= one.difference_db.high for one in dipped.body_curve)
+
+
+def test_the_same_input_gives_the_same_answer(dipped: Comparison) -> None:
+    assert compare(DIPPED, TARGET) == dipped
+
+
+def test_exchanging_the_sides_changes_the_sign(dipped: Comparison) -> None:
+    # Each side's levels are hidden from the other's alignment, so only the draws of the parameters differ.
+    back = compare(TARGET, DIPPED)
+    there = np.array([one.difference_db.value for one in dipped.harmonics])
+    again = np.array([one.difference_db.value for one in back.harmonics])
+    assert again == pytest.approx(-there, abs=0.15)
+
+
+def test_the_order_of_takes_does_not_matter(dipped: Comparison) -> None:
+    turned = compare(replace(DIPPED, takes=DIPPED.takes[::-1]), TARGET)
+    there = [one.difference_db.value for one in dipped.harmonics]
+    assert [one.difference_db.value for one in turned.harmonics] == pytest.approx(there, abs=1e-3)
+
+
+def test_one_take_a_side_answers_widely_and_says_why() -> None:
+    change = dip(1000.0, -5.0, 0.7)
+    one = compare(profile(7, change=change, takes=1), profile(100, takes=1))
+    three = compare(profile(7, change=change, takes=3), profile(100, takes=3))
+
+    def width(comparison: Comparison) -> float:
+        return float(np.median([h.difference_db.high - h.difference_db.low for h in comparison.harmonics]))
+
+    assert one.repeatability.source == "prior"
+    assert three.repeatability.source == "both"
+    assert (three.repeatability.takes, three.repeatability.target_takes) == (3, 3)
+    assert width(one) > 1.3 * width(three)
+    assert any("one take a side" in remark for remark in one.remarks)
+    assert one.colour_distance.own_db is None
+
+
+def test_levels_set_aside_are_listed() -> None:
+    plain = profile(9)
+    spoilt = list(plain.takes[1].notes)
+    level = spoilt[3].level_db.copy()
+    level[5] += 15.0
+    spoilt[3] = replace(spoilt[3], level_db=level)
+    takes = (plain.takes[0], Take(recordings=(), notes=tuple(spoilt)), plain.takes[2])
+    found = compare(replace(plain, takes=takes), TARGET)
+    assert any("instrument take 2: D4 harmonic 6" in remark for remark in found.remarks)
+
+
+def test_one_note_is_enough() -> None:
+    found = compare(profile(1, notes=("G3",)), profile(2, notes=("G3",)))
+    assert {one.note for one in found.harmonics} == {"G3"}
+    assert len(found.body_curve) > 10
+
+
+def test_two_harmonics_are_enough() -> None:
+    count = 19 - 2
+    found = compare(profile(1, notes=("A4",), unheard=count - 1), profile(2, notes=("A4",), unheard=count - 1))
+    assert all(math.isfinite(one.difference_db.value) for one in found.harmonics)
+
+
+def test_a_blend_lies_between_its_members() -> None:
+    members = (profile(1, change=dip(1000.0, 6.0, 1.0)), profile(2, change=dip(1000.0, -6.0, 1.0)))
+    found = compare(profile(3), blend("pair", members))
+    near = [abs(one.difference_db.value) for one in found.body_curve if 800 < one.freq_hz < 1250]
+    assert max(near) < 1.5
+    assert found.repeatability.target_takes == 6
+    assert found.target == "pair"
+
+
+def test_members_of_a_blend_need_not_share_all_notes() -> None:
+    target = blend("mixed", (profile(1, notes=NOTES[:6]), profile(2, notes=NOTES[4:])))
+    found = compare(profile(3), target)
+    assert {one.note for one in found.harmonics} == set(NOTES)
+
+
+def test_unsettled_harmonics_say_how_many_takes_settle_them() -> None:
+    found = compare(profile(1, takes=1), profile(2, takes=1))
+    unsettled = [one for one in found.harmonics if one.verdict == "unsettled"]
+    assert unsettled
+    assert all(one.takes_needed is None or one.takes_needed > 1 for one in unsettled)
+    assert all(one.takes_needed is None for one in found.harmonics if one.verdict != "unsettled")
+    assert any("unsettled" in remark and "takes a side" in remark for remark in found.remarks)
+
+
+def test_a_margin_below_zero_is_refused() -> None:
+    with pytest.raises(ValueError, match="margin"):
+        compare(TARGET, TARGET, margin_db=0.0)
+
+
+def test_nothing_in_common_is_an_error() -> None:
+    with pytest.raises(ComparisonError, match="no note in common"):
+        compare(profile(1, notes=("G3",)), profile(2, notes=("A4",)))
