@@ -3,6 +3,7 @@
 Heavy rooms are imported inside the commands, so that ``--help`` answers at once.
 """
 
+import io
 import json
 import sys
 from collections.abc import Iterable, Iterator, Sequence
@@ -52,6 +53,9 @@ class ExportFormat(StrEnum):
 
 def main() -> None:
     """Run the command line; an error that the maker can mend is printed without a traceback, exit status 1."""
+    if isinstance(sys.stdout, io.TextIOWrapper):
+        # A terminal or pipe whose alphabet lacks a sign gets a question mark in its place, not a traceback.
+        sys.stdout.reconfigure(errors="replace")
     try:
         app()
     except TimbreMatchError as error:
@@ -254,7 +258,7 @@ def _heard_as_json(heard: "Heard") -> dict[str, object]:
 
 
 def _print_json(content: object) -> None:
-    typer.echo(json.dumps(content, ensure_ascii=False, indent=1, allow_nan=False))
+    typer.echo(json.dumps(content, indent=1, allow_nan=False))
 
 
 def _show(content: "RenderableType") -> None:

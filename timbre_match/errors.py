@@ -25,7 +25,8 @@ class TimbreMatchError(Exception):
         self.where = where
         self.cause = cause
         self.remedy = remedy
-        super().__init__(what, where, cause, remedy)
+        # One argument only: an error that comes back from another process is made anew from it.
+        super().__init__(what)
 
     def __str__(self) -> str:
         first = f"{self.where}: {self.what}" if self.where else self.what

@@ -91,6 +91,8 @@ def listen(path: Path, listening: Listening, *, measure: bool = True) -> Heard:
         notes = held_notes(recording, notes=listening.notes, a4_hz=listening.a4_hz)
         recipes = [measure_recipe(recording, note, a4_hz=listening.a4_hz) for note in notes] if measure else []
     except TimbreMatchError as error:
+        # The rooms behind the reading know the file's name without its folder, which several takes may share.
+        error.where = str(path)
         return Heard(path=path, recording=_without_samples(recording), error=error)
     return Heard(path=path, recording=_without_samples(recording), notes=notes, recipes=tuple(recipes))
 
@@ -303,14 +305,17 @@ def run_demo(folder: Path, *, progress: Progress | None = None) -> Iterator["Ren
             continue
         place = folder / stage.file_stem
         make_folder(place)
-        profile = measure_takes(
+        measured = measure_takes(
             recordings,
             Listening(),
             instrument=stage.instrument,
             stage=stage.name,
             family=FAMILY,
             progress=progress,
-        ).profile
+        )
+        if measured.failures:
+            raise measured.failures[0]
+        profile = measured.profile
         comparison, suggestions = compare_and_advise(profile, wanted)
         save_profile(profile, place / "profile.json")
         export_csv(profile, place / "profile.csv")

@@ -102,7 +102,7 @@ def gather(profile: Profile, target: Target) -> Evidence:
         octave=octave,
         smooth=body_curve.smooth_columns(octave, *span),
         wobble=body_curve.wobble_columns(octave, *span),
-        scatter_variance=scale**2 * moderation * _both_sides(spread),
+        scatter_variance=scale**2 * moderation * _uncertain(df, prior) * _both_sides(spread),
         error_variance=_both_sides([error**2 * part for error, part in zip(errors, spread, strict=True)]),
         repeat_df=df,
         playing=float(playing[0]),
@@ -156,6 +156,15 @@ def _moderation(aligned: list[AlignedTakes], prior: ScatterPrior) -> tuple[Array
         return moderated_variance(ratio, df, prior_df=prior.tail_df, prior_variance=1.0), df
     prior_df, prior_variance = fit_variance_prior(np.maximum(ratio[seen], _LEAST_RATIO), df[seen])
     return moderated_variance(ratio, df, prior_df=prior_df, prior_variance=prior_variance) / prior_variance, df
+
+
+def _uncertain(df: Array, prior: ScatterPrior) -> Array:
+    """Return by how much not knowing a variance widens it, (n,): v / (v - 2), the mean of an inverse chi-square.
+
+    Where no repeats speak, the model's own weights for odd harmonics carry this.
+    """
+    known = prior.tail_df + df
+    return np.where(df > 0, known / (known - 2.0), 1.0)
 
 
 def _repeat_rows(aligned: AlignedTakes, whole: model.Row, scale: Array) -> list[model.Row]:

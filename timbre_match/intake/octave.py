@@ -15,7 +15,7 @@ import scipy.signal
 from numpy.typing import NDArray
 
 from timbre_match.intake.pitch import HIGHEST_HZ, LOWEST_HZ
-from timbre_match.intake.warp import BandLimited, Clock, points_per_cycle, refine_clock
+from timbre_match.intake.warp import USABLE_BAND, BandLimited, Clock, points_per_cycle, refine_clock
 
 _BLOCK = 12
 """Cycles per block: halves, thirds and quarters of the fundamental fall on whole bins."""
@@ -25,6 +25,8 @@ _LONGEST_S = 1.5
 # the harmonics' power wherever three or more stand out; at twice the true fundamental the missing ones hold more than
 # -25 dB in all but one. Lines of a register below the sounding one (overblown reeds) reach -35 dB.
 _TRACE_DB = -31.0
+_TRACE_OF_ONE_DB = -20.0
+_OF_FEW_DB = -5.0
 _STANDS_OUT_DB = 10.0
 _CLEARLY_DB = 12.0
 
@@ -60,6 +62,7 @@ def _better_factor(signal: BandLimited, sample_rate_hz: float, clock: Clock) -> 
     spectrum, cycles = _block_spectrum(signal, sample_rate_hz, clock)
     if spectrum is None:
         return 1.0
+    spectrum = spectrum[: int(USABLE_BAND * sample_rate_hz / f0_hz * cycles)]
     for divisor in (2, 3):
         step = cycles // divisor
         if f0_hz / divisor > LOWEST_HZ and _stands(spectrum, step, divisor):
@@ -93,17 +96,18 @@ def _stands(spectrum: NDArray[np.float64], step: int, divisor: int) -> bool:
     lines = np.arange(step, min(len(spectrum) - step, _HARMONICS * divisor * step + 1), step)
     added = lines[lines % (step * divisor) != 0]
     shared = lines[lines % (step * divisor) == 0]
-    if len(added) == 0 or len(shared) == 0:
+    if len(added) == 0:
         return False
     # The floor around a line: bins between it and its neighbours, two or more from each (a Hann line is three wide).
     offsets = np.array([o for o in range(-step + 2, step - 1) if abs(o) >= 2])
     floor = np.median(spectrum[added[:, None] + offsets], axis=1)
     salience_db = 10.0 * np.log10(spectrum[added] / (floor + 1e-300) + 1e-300)
     excess = np.where(salience_db > 3.0, spectrum[added] - floor, 0.0).sum()
-    share_db = 10.0 * math.log10(excess / float(spectrum[shared].sum()) + 1e-300)
+    share_db = 10.0 * math.log10(excess / float(spectrum[shared].sum() + 1e-300) + 1e-300)
     clear = int(np.sum(salience_db > _STANDS_OUT_DB))
-    # The four best lines should all be clear; one line alone counts only where it dominates (a knock, a hum does not).
-    best = float(np.median(np.sort(salience_db)[-4:]))
-    if share_db > 0.0 and clear >= 1:
+    # One or two lines alone may be a knock or a hum: they must be strong, less so where there is room for one only.
+    if clear >= 1 and share_db > (_TRACE_OF_ONE_DB if len(added) == 1 else _OF_FEW_DB):
         return True
+    # The four best lines should all be clear.
+    best = float(np.median(np.sort(salience_db)[-4:]))
     return share_db > _TRACE_DB and clear >= max(2, len(added) // 5) and best > _CLEARLY_DB

@@ -14,7 +14,9 @@ from numpy.typing import NDArray
 from scipy.interpolate import CubicSpline, PchipInterpolator
 
 _SPLINE_ORDER: Final = 5
-_FADE_FROM, _FADE_TO = 0.27, 0.38
+USABLE_BAND = 0.38
+"""Up to which part of its sample rate a signal that is not oversampled can be read."""
+_FADE_FROM = 0.27
 _STEP_S = 0.01
 _SMOOTH_STEPS = 19
 _SMOOTH_S = 0.07
@@ -113,7 +115,7 @@ class BandLimited:
         basis = np.sinc(np.arange(len(spectrum)) / (size * oversample)) ** (_SPLINE_ORDER + 1)
         spectrum /= basis
         if oversample == 1:
-            fade = np.clip((np.arange(len(spectrum)) / size - _FADE_FROM) / (_FADE_TO - _FADE_FROM), 0.0, 1.0)
+            fade = np.clip((np.arange(len(spectrum)) / size - _FADE_FROM) / (USABLE_BAND - _FADE_FROM), 0.0, 1.0)
             spectrum *= 0.5 + 0.5 * np.cos(np.pi * fade)
         self._coefficients = scipy.fft.irfft(spectrum, size * oversample) * oversample
         self._scale = sample_rate_hz * oversample
@@ -155,7 +157,7 @@ def refine_clock(signal: BandLimited, clock: Clock, sample_rate_hz: float) -> Cl
     usual = max(1, round(_STEP_S * f0_hz))
     rigid = None
     # The first steps are short: over 8 cycles even an error of 6 per cent cannot wrap.
-    for per_step in (min(usual, 8), usual, usual):
+    for per_step in (min(usual, 8), usual):
         instants = clock.instants_s(points)
         steps = len(instants) // per_step
         if steps < 4:
@@ -211,14 +213,15 @@ def _common_turn(coefficients: NDArray[np.complex128], width: int) -> tuple[NDAr
     """
     step = coefficients[1:] * coefficients[:-1].conj()
     k = np.arange(1, step.shape[1] + 1)
-    smooth = np.zeros(len(step))
+    turn = np.zeros(len(step))
     # Low harmonics first: theirs cannot wrap while the clock is still far off.
     for highest in (3, 9, 27, _MOST_HARMONICS):
         order = k[:highest]
-        rest = step[:, :highest] * np.exp(-1j * np.outer(smooth, order))
+        rest = step[:, :highest] * np.exp(-1j * np.outer(turn, order))
         weight = np.abs(rest)
-        turn = smooth + (weight * order * np.angle(rest)).sum(axis=1) / ((weight * order**2).sum(axis=1) + 1e-300)
-        smooth = turn
-        if 5 <= width <= len(turn):
-            smooth = scipy.signal.savgol_filter(scipy.ndimage.median_filter(turn, 3, mode="nearest"), width, 3)
-    return turn, smooth
+        turn += (weight * order * np.angle(rest)).sum(axis=1) / ((weight * order**2).sum(axis=1) + 1e-300)
+        if highest >= step.shape[1]:
+            break
+    if not 5 <= width <= len(turn):
+        return turn, turn
+    return turn, scipy.signal.savgol_filter(scipy.ndimage.median_filter(turn, 3, mode="nearest"), width, 3)

@@ -6,6 +6,7 @@ import numpy as np
 import scipy.fft
 import scipy.special
 from numpy.typing import NDArray
+from scipy.interpolate import CubicSpline
 
 from timbre_match import units
 from timbre_match.intake.cycles import Cycles, cut_cycles
@@ -203,8 +204,10 @@ def _mean_fundamental_hz(cycles: Cycles, heard: NDArray[np.int64]) -> float:
         off = np.angle(turned * reference.conj())
         weight = np.abs(reference) ** 2 * heard
         turn += off @ weight / float(weight @ heard)
-    centre_s = cycles.start_s[: steps * per_step].reshape(steps, per_step).mean(axis=1)
-    phase = (np.arange(steps) * per_step + 0.5 * (per_step - 1)) + turn / (2.0 * np.pi)
+    # A coefficient speaks for its whole cycle: its mean phase belongs to the mean time of that cycle.
+    time_s = CubicSpline(np.arange(count), cycles.start_s).antiderivative()
+    centre_s = np.diff(time_s(np.arange(count + 1)))[: steps * per_step].reshape(steps, per_step).mean(axis=1)
+    phase = (np.arange(steps) + 0.5) * per_step + turn / (2.0 * np.pi)
     centre_s = centre_s - centre_s.mean()
     return float(centre_s @ phase / (centre_s @ centre_s))
 

