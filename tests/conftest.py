@@ -44,7 +44,12 @@ def npm_package(name: str, cache: Path) -> Path:
         with tempfile.TemporaryDirectory(dir=cache) as scratch:
             try:
                 fetched = subprocess.run(
-                    ["npm", "pack", "--silent", name], cwd=scratch, capture_output=True, text=True, timeout=120, check=True
+                    ["npm", "pack", "--silent", name],
+                    cwd=scratch,
+                    capture_output=True,
+                    text=True,
+                    timeout=120,
+                    check=True,
                 )
             except (OSError, subprocess.SubprocessError) as error:
                 go_without(f"{name} cannot be fetched with npm pack ({type(error).__name__})")

@@ -256,13 +256,13 @@ def test_a_spoilt_profile(
     place = spoil(content)
     bad = tmp_path / "bad.json"
     bad.write_text(json.dumps(content))
-    arguments: list[str | Path] = {
+    ways: dict[str, list[str | Path]] = {
         "compare": ["compare", bad, "--target", profile, "--out", results / "c.json"],
         "compare with it": ["compare", profile, "--target", bad, "--json"],
         "target": ["target", profile, bad, "--name", "both", "--out", results / "t.json"],
         "export": ["export", bad, "--format", "csv", "--out", results / "p.csv"],
-    }[command]
-    run(*arguments).assert_plain_error(str(bad), place, "likely cause: ", "what to do: ")
+    }
+    run(*ways[command]).assert_plain_error(str(bad), place, "likely cause: ", "what to do: ")
     assert not list(results.iterdir())
 
 

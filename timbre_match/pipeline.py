@@ -66,13 +66,6 @@ class Heard:
     recipes: tuple[Recipe, ...] = ()
     error: TimbreMatchError | None = None
 
-    @property
-    def warnings(self) -> tuple[str, ...]:
-        """What was wrong with the recording, each sentence led by the file's name."""
-        if self.recording is None:
-            return ()
-        return tuple(f"{self.recording.file}: {sentence}" for sentence in self.recording.warnings)
-
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class Measured:
@@ -190,8 +183,7 @@ def measure_takes(
             raise failures[0]
         raise RecordingError("none of the recordings can be used:\n" + "\n".join(str(error) for error in failures))
     profile = Profile(instrument=instrument, stage=stage, family=family, a4_hz=listening.a4_hz, takes=tuple(measured))
-    warnings = tuple(sentence for heard in results for sentence in heard.warnings)
-    return Measured(profile=profile, warnings=warnings, failures=tuple(failures))
+    return Measured(profile=profile, warnings=_gathered_warnings(results), failures=tuple(failures))
 
 
 def measure_profile(
@@ -246,6 +238,19 @@ def compare_and_advise(
     """Compare a profile with a target, and what to try about the difference."""
     comparison = compare(profile, target, margin_db=margin_db)
     return comparison, suggest(comparison)
+
+
+def _gathered_warnings(results: Iterable[Heard]) -> tuple[str, ...]:
+    """What was wrong with the recordings: each sentence once, led by the files that it is about."""
+    files: dict[str, list[str]] = {}
+    for heard in results:
+        for sentence in heard.recording.warnings if heard.recording is not None else ():
+            files.setdefault(sentence, []).append(heard.path.name)
+    return tuple(f"{_listed(names)}: {sentence}" for sentence, names in files.items())
+
+
+def _listed(names: list[str]) -> str:
+    return ", ".join(names[:3]) + (f" and {len(names) - 3} more" if len(names) > 3 else "")
 
 
 def _without_samples(recording: Recording | None) -> Recording | None:

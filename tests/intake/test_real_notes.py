@@ -134,7 +134,9 @@ def test_longest_note_is_most_of_the_sustained_part(recordings: Recordings, inst
     assert {name: round(value, 2) for name, value in share.items() if value < 0.5} == {}
 
 
-@pytest.mark.parametrize(("instrument", "kind"), [("violin", "held"), ("clarinet", "held"), ("guitar-nylon", "ringing")])
+@pytest.mark.parametrize(
+    ("instrument", "kind"), [("violin", "held"), ("clarinet", "held"), ("guitar-nylon", "ringing")]
+)
 def test_bowed_and_blown_notes_are_held_and_plucked_ones_ring(
     recordings: Recordings, instrument: str, kind: str
 ) -> None:

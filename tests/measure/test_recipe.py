@@ -98,7 +98,9 @@ def test_floor_is_taken_off(steady: dict[Setting, Outcome]) -> None:
     # A Hann block of 44 cycles of 440 Hz has 0.1 s and an equivalent noise bandwidth of 1.5 bins (Harris 1978).
     noise = np.sqrt(0.5 * weak**2 / 10.0**0.6 * 0.1 * RATE_HZ / 2.0 / 1.5)
     for _ in range(24):
-        tone = np.cos(2.0 * np.pi * 440.0 * time_s) + weak * np.cos(2.0 * np.pi * 880.0 * time_s + rng.uniform(0.0, 6.28))
+        tone = np.cos(2.0 * np.pi * 440.0 * time_s) + weak * np.cos(
+            2.0 * np.pi * 880.0 * time_s + rng.uniform(0.0, 6.28)
+        )
         recipe = longest_recipe(recording_of(0.3 * (tone + noise * rng.standard_normal(len(time_s))), RATE_HZ))
         assert recipe.heard[1]
         levels.append(recipe.level_db[1] - recipe.level_db[0])
@@ -117,7 +119,10 @@ def test_standard_errors_are_honest(steady: dict[Setting, Outcome]) -> None:
     assert 1.0 / lowest_possible(scatter_in_se) <= 1.0 + SE_LIMIT
 
 
-@pytest.mark.parametrize(("f0_hz", "rate_hz", "snr_db"), [(30.0, 44_100, 30.0), (110.0, 48_000, 10.0), (440.0, 96_000, 60.0), (1320.0, 44_100, 20.0)])
+@pytest.mark.parametrize(
+    ("f0_hz", "rate_hz", "snr_db"),
+    [(30.0, 44_100, 30.0), (110.0, 48_000, 10.0), (440.0, 96_000, 60.0), (1320.0, 44_100, 20.0)],
+)
 def test_vibrato_and_drift(f0_hz: float, rate_hz: int, snr_db: float) -> None:
     setting = Setting(
         f0_hz=f0_hz, sample_rate_hz=rate_hz, snr_db=snr_db, length_s=2.0, vibrato_cents=30.0, drift_cents=20.0
