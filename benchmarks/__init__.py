@@ -1,0 +1,1 @@
+"""Speed, accuracy and calibration, measured in one run each; see `README.md`."""

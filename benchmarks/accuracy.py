@@ -168,7 +168,7 @@ def main() -> None:
         scatter = found.level_error_db.std(axis=0, ddof=1)
         se = rms(found.se_db) / rms(scatter)
         level, f0 = rms(ratios), rms(found.f0_error)
-        over = [
+        over = ", ".join(
             name
             for name, missed in (
                 ("level", level > LEVEL_LIMIT),
@@ -177,11 +177,11 @@ def main() -> None:
                 ("se", abs(se - 1.0) > SE_LIMIT),
             )
             if missed
-        ]
+        )
         print(
             f"{setting.f0_hz:8.0f} {setting.sample_rate_hz:8d} {setting.harmonics:6d} {setting.snr_db:7.0f}"
             f" {found.missed:7d} {level:6.3f} {ratios.max():6.3f} {bias_db:8.5f}"
-            f" ({found.level_bound_db / np.sqrt(trials):.5f}) {f0:8.3f} {se:11.3f}  {'over: ' * bool(over)}{', '.join(over)}",
+            f" ({found.level_bound_db / np.sqrt(trials):.5f}) {f0:8.3f} {se:11.3f}  {over and 'over: '}{over}",
             flush=True,
         )
     few = max(2, trials // 20)

@@ -24,12 +24,15 @@ import numpy as np
 import soundfile
 from numpy.typing import NDArray
 
-from tests.recordings import fetch
+from tests.conftest import npm_package
 from timbre_match.pipeline import RECORDING_SUFFIXES, Listening, listen
 
 Array = NDArray[np.float64]
 
-INSTRUMENTS = ("violin", "cello", "clarinet", "guitar-nylon")
+PACKAGES = tuple(
+    f"tonejs-instrument-{name}"
+    for name in ("violin-mp3@1.1.1", "cello-mp3@1.1.1", "clarinet-mp3@1.1.2", "guitar-nylon-mp3@1.1.1")
+)
 FFT_SIZE, HOP = 2048, 512
 RANGES_HZ = {"C2 to C7": (65.406, 2093.005, 2048), "27 to 4200 Hz": (27.0, 4200.0, 4096)}
 """Range and frame of pyin: those in librosa's own example, and the range in which notes are found here.
@@ -155,8 +158,9 @@ def main() -> None:
         os.execve(sys.executable, [sys.executable, "-m", "benchmarks.speed", *sys.argv[1:]], {**os.environ, **ONE_CORE})
     with tempfile.TemporaryDirectory() as scratch:
         if options.folder is None:
-            share = -(-options.count // len(INSTRUMENTS))
-            paths = [path for name in INSTRUMENTS for path in spread(fetch(name, Path(scratch)), share)]
+            share = -(-options.count // len(PACKAGES))
+            folders = [npm_package(name, Path(scratch)) for name in PACKAGES]
+            paths = [path for folder in folders for path in spread(sorted(folder.glob("*.mp3")), share)]
         else:
             found = sorted(path for path in options.folder.iterdir() if path.suffix.lower() in RECORDING_SUFFIXES)
             if not found:

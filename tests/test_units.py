@@ -27,7 +27,9 @@ def test_equal_tempered_frequencies(name: str, freq_hz: float) -> None:
     [(660.0, "E5", 1.955), (293.3333333, "D4", -1.955), (195.5555556, "G3", -3.910), (65.1851852, "C2", -5.865)],
 )
 def test_pure_fifths_from_equal_temperament(pure_hz: float, note: str, cents: float) -> None:
-    assert units.nearest_note(pure_hz) == (note, pytest.approx(cents, abs=1e-3))
+    name, deviation = units.nearest_note(pure_hz)
+    assert name == note
+    assert deviation == pytest.approx(cents, abs=1e-3)
 
 
 @pytest.mark.parametrize(

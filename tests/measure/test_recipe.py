@@ -27,8 +27,8 @@ from timbre_match.measure.recipe import measure_recipe
 
 RATE_HZ = 44_100
 
-# Bounds: Kay (1993); Nielsen, Jensen & Christensen (2017), see benchmarks/accuracy.py, which runs 200 trials of each of
-# many more settings. Here a few trials of each are pooled: n errors, each divided by its bound, have a sum of squares of
+# Bounds: Kay (1993); Nielsen, Jensen & Christensen (2017), see benchmarks/accuracy.py, which runs 200 trials of many
+# more settings. Here a few trials of each are pooled: n errors, each divided by its bound, have a sum of squares of
 # ratio^2 times chi-square with n degrees of freedom. A test passes where that shows the ratio to be under its limit
 # beyond doubt (one-sided, 1 %), so sampling luck cannot pass a poor estimator, and more errors make it easier for a
 # good one. The errors of one trial's harmonics are independent but for their common total.

@@ -82,14 +82,17 @@ def notes_of(path: Path) -> Iterator[ArchiveNote]:
 
 
 def is_sustained(note: ArchiveNote) -> bool:
+    # "CB_pizz", "violin_pizzicato" and the like are plucked; so short a hammered stroke as martele still sustains.
     return "pizz" not in note.instrument
 
 
 def test_it_is_the_archive(archive_path: Path, archive: Archive) -> None:
     digest = hashlib.sha256(archive_path.read_bytes()).hexdigest()
+    # The end of the digest is left out: the note that states it gives e475, the file that the note came with has a475.
     assert digest.startswith("268b41a8")
-    assert digest.endswith("e475")
     assert len({name for name, _ in archive}) == 39
+    assert len(archive) == 1338
+    assert sum(len(note.k) for note in archive.values()) == 71_860
     clarinet, violin = archive["Bb_clarinet", "d3"], archive["violin_vibrato", "g3"]
     assert list(clarinet.amplitude[:4]) == [2129.0, 141.25, 1501.38, 497.77]
     assert list(violin.amplitude[:4]) == [173.02, 3813.0, 454.04, 1899.6]

@@ -24,7 +24,8 @@ _LONGEST_S = 1.5
 # On 357 real notes of 18 instruments: at the true fundamental the lines between the harmonics hold less than -35 dB of
 # the harmonics' power wherever three or more stand out; at twice the true fundamental the missing ones hold more than
 # -25 dB in all but one. Lines of a register below the sounding one (overblown reeds) reach -35 dB.
-_TRACE_DB = -31.0
+# No instrument leaves two thirds of its harmonics that far down, but a string a fifth or a twelfth lower may ring.
+_TRACE_DB = {2: -30.0, 3: -22.0}
 _TRACE_OF_ONE_DB = -20.0
 _OF_FEW_DB = -5.0
 _STANDS_OUT_DB = 10.0
@@ -110,4 +111,4 @@ def _stands(spectrum: NDArray[np.float64], step: int, divisor: int) -> bool:
         return True
     # The four best lines should all be clear.
     best = float(np.median(np.sort(salience_db)[-4:]))
-    return share_db > _TRACE_DB and clear >= max(2, len(added) // 5) and best > _CLEARLY_DB
+    return share_db > _TRACE_DB[divisor] and clear >= max(2, len(added) // 5) and best > _CLEARLY_DB

@@ -105,10 +105,11 @@ class BandLimited:
         size += size % 2
         padded = np.zeros(size)
         padded[margin : margin + len(samples)] = samples
-        # Point-mirrored margins go on without a step or a kink, so the ends do not ring.
+        # Point-mirrored margins go on without a step or a kink and fade to nothing, so that neither end rings.
         reach = min(margin, len(samples) - 1)
-        padded[margin - reach : margin] = 2.0 * samples[0] - samples[reach:0:-1]
-        padded[margin + len(samples) : margin + len(samples) + reach] = (
+        fade_in = 0.5 - 0.5 * np.cos(np.pi * (np.arange(reach) + 0.5) / max(1, reach))
+        padded[margin - reach : margin] = fade_in * (2.0 * samples[0] - samples[reach:0:-1])
+        padded[margin + len(samples) : margin + len(samples) + reach] = fade_in[::-1] * (
             2.0 * samples[-1] - samples[-2 : -2 - reach : -1]
         )
         spectrum = scipy.fft.rfft(padded)
