@@ -10,6 +10,7 @@ import numpy as np
 import scipy.fft
 import scipy.ndimage
 import scipy.signal
+import scipy.special
 from numpy.typing import NDArray
 from scipy.interpolate import CubicSpline, PchipInterpolator
 
@@ -188,10 +189,19 @@ def _rigid_clock(clock: Clock, centre_s: NDArray[np.float64], turn: NDArray[np.f
     phase = clock.phase_at(centre_s) + np.concatenate([[0.0], np.cumsum(turn)])
     fit = np.polynomial.Polynomial.fit(centre_s - middle_s, phase, 3)
     rest = phase - fit(centre_s - middle_s)
-    hangs_together = float(rest[1:] @ rest[:-1]) / float(rest @ rest + 1e-300)
-    if hangs_together > 2.0 / np.sqrt(len(rest)):
+    if _hangs_together(rest):
         return None
     return Clock(clock.time_s, np.asarray(fit.deriv()(clock.time_s - middle_s)))
+
+
+def _hangs_together(rest: NDArray[np.float64]) -> bool:
+    """Whether a series is anything but white noise (Ljung & Box 1978, Biometrika 65:297, at a level of 1e-4)."""
+    count = len(rest)
+    lags = np.arange(1, min(10, count // 3) + 1)
+    power = float(rest @ rest) + 1e-300
+    correlation = np.array([float(rest[lag:] @ rest[:-lag]) / power for lag in lags])
+    statistic = count * (count + 2.0) * float(np.sum(correlation**2 / (count - lags)))
+    return statistic > float(scipy.special.chdtri(len(lags), 1e-4))
 
 
 def _without_jitter(clock: Clock) -> Clock:
