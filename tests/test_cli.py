@@ -84,6 +84,12 @@ def content(path: Path) -> Any:
     return parsed(path.read_text(encoding="utf-8"))
 
 
+def assert_same(one: object, other: object) -> None:
+    """Like an equality assertion, but without a line-by-line comparison of whole profiles, which can take minutes."""
+    same = one == other
+    assert same
+
+
 # notes
 
 
@@ -213,7 +219,7 @@ def test_side_by_side_gives_the_same_profile(run: CommandLine, sounds: Path, tmp
         ended = run("measure", sounds / "single", sounds / "take_2.wav", "--out", out, "--jobs", jobs)
         assert (ended.code, ended.err) == (0, "")
         written.append(out.read_bytes())
-    assert written[0] == written[1]
+    assert_same(written[0], written[1])
 
 
 def test_measure_goes_on_without_the_bad_ones(run: CommandLine, sounds: Path, tmp_path: Path) -> None:
@@ -269,7 +275,8 @@ def test_target_keeps_its_members_whole(run: CommandLine, profile: Path, tmp_pat
     assert whole.keys() == {"format", "version", "name", "members"}
     assert (whole["format"], whole["version"], whole["name"]) == ("timbre-match/target", 1, "the last two")
     head = {"format", "version"}
-    assert whole["members"] == [{key: value for key, value in content(profile).items() if key not in head}] * 2
+    body = {key: value for key, value in content(profile).items() if key not in head}
+    assert_same(whole["members"], [body, body])
 
 
 def test_target_of_something_else(run: CommandLine, sounds: Path, tmp_path: Path) -> None:
@@ -300,7 +307,7 @@ def test_compare_prints_json_and_nothing_else(run: CommandLine, profile: Path, t
     ended = run("compare", profile, "--target", profile, "--json", "--out", out)
     assert (ended.code, ended.err) == (0, "")
     whole = parsed(ended.out)
-    assert whole == content(out)
+    assert_same(whole, content(out))
     assert_comparison_keys(whole)
     assert whole["harmonics"]
     assert whole["body_curve"]
@@ -369,7 +376,7 @@ def test_export_csv_has_a_row_per_take_note_and_harmonic(run: CommandLine, profi
 def test_export_json_is_the_profile(run: CommandLine, profile: Path, tmp_path: Path) -> None:
     out = tmp_path / "copy.json"
     assert run("export", profile, "--format", "json", "--out", out).code == 0
-    assert out.read_bytes() == profile.read_bytes()
+    assert_same(out.read_bytes(), profile.read_bytes())
 
 
 def test_export_cycles_are_one_period_per_note(run: CommandLine, profile: Path, tmp_path: Path) -> None:

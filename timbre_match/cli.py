@@ -8,6 +8,7 @@ import json
 import os
 import sys
 from collections.abc import Iterable, Iterator, Sequence
+from contextlib import AbstractContextManager, nullcontext
 from enum import StrEnum
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
@@ -174,13 +175,14 @@ def compare(
     from timbre_match.pipeline import compare_and_advise
 
     measured, wanted = load_profile(profile), load_target(target)
-    comparison, suggestions = compare_and_advise(measured, wanted, margin_db=margin)
-    if out is not None:
-        save_comparison(comparison, suggestions, out)
-    if figures is not None:
-        from timbre_match.pipeline import write_figures
+    with _working("comparing"):
+        comparison, suggestions = compare_and_advise(measured, wanted, margin_db=margin)
+        if out is not None:
+            save_comparison(comparison, suggestions, out)
+        if figures is not None:
+            from timbre_match.pipeline import write_figures
 
-        write_figures(figures, measured, wanted, comparison)
+            write_figures(figures, measured, wanted, comparison)
     if as_json:
         typer.echo(comparison_to_json(comparison, suggestions))
         return
@@ -282,6 +284,15 @@ def _progress(results: "Iterable[Heard]", count: int) -> "Iterator[Heard]":
 
     with Progress(console=Console(stderr=True), transient=True) as bar:
         yield from bar.track(results, total=count, description="listening")
+
+
+def _working(what: str) -> AbstractContextManager[object]:
+    """Show that something is going on, where a person watches."""
+    if not sys.stderr.isatty():
+        return nullcontext()
+    from rich.console import Console
+
+    return Console(stderr=True).status(what)
 
 
 def _complain(error: TimbreMatchError) -> None:

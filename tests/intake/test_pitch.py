@@ -4,8 +4,7 @@ import numpy as np
 import pytest
 from numpy.typing import NDArray
 
-from timbre_match.intake.pitch import HOP_S, reduce_rate, track_pitch
-from timbre_match.intake.warp import USABLE_BAND
+from timbre_match.intake.pitch import HOP_S, USABLE_BAND, reduce_rate, track_pitch
 
 Array = NDArray[np.float64]
 

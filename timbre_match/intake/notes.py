@@ -12,7 +12,7 @@ from timbre_match import units
 from timbre_match.errors import NoHeldNoteError
 from timbre_match.intake.envelope import Envelope, is_ringing, level_envelope, steady_stretch
 from timbre_match.intake.octave import settle_octave
-from timbre_match.intake.pitch import HOP_S, PitchTrack, reduce_rate, track_pitch
+from timbre_match.intake.pitch import HOP_S, USABLE_BAND, PitchTrack, reduce_rate, track_pitch
 from timbre_match.intake.recording import Recording
 from timbre_match.intake.warp import BandLimited, Clock, refine_clock
 
@@ -28,7 +28,7 @@ _SCRAP_S = 0.2
 _ABOVE_FLOOR_DB = 6.0
 _STEP_CENTS = 65.0
 _STEP_FRAMES = 8
-_SETTLE_S = 1.5
+_SETTLE_S = 1.0
 _BLUR_FRAMES = 3
 _NAMED_WITHIN_CENTS = 70.0
 
@@ -96,11 +96,11 @@ def held_notes(
     samples, rate = reduce_rate(recording.samples, recording.sample_rate_hz)
     track = track_pitch(samples, rate)
     envelope = level_envelope(samples, rate)
-    signal = BandLimited(samples, rate, oversample=1)
+    signal = BandLimited(samples, rate, USABLE_BAND * rate)
     wanted_hz = None if notes is None else [units.note_to_hz(name, a4_hz) for name in notes]
     settled = []
     for first, last in _segments(track, envelope):
-        f0_hz = _settled_hz(signal, rate, track, first, last)
+        f0_hz = _settled_hz(signal, track, first, last)
         if wanted_hz is not None:
             f0_hz *= _factor_to(f0_hz, wanted_hz)
         settled.append((first, last, f0_hz))
@@ -112,7 +112,7 @@ def held_notes(
         # The window blurs periodicity at both ends of a note; the level tells better where it begins and ends.
         first = max(first - _BLUR_FRAMES, edges[index])
         last = min(last + _BLUR_FRAMES, starts[index + 1])
-        note = _measured(signal, rate, track, envelope, first, last, f0_hz, a4_hz)
+        note = _measured(signal, track, envelope, first, last, f0_hz, a4_hz)
         if note is not None and (wanted_hz is None or _is_one_of(note.f0_hz, wanted_hz)):
             found.append(note)
     found = _without_scraps(found)
@@ -168,12 +168,12 @@ def _pitch_steps(track: PitchTrack, voiced: NDArray[np.bool_]) -> NDArray[np.int
     return np.array([round(float(np.mean(np.nonzero(labels == i + 1)[0]))) for i in range(count)], dtype=np.int64)
 
 
-def _settled_hz(signal: BandLimited, rate: float, track: PitchTrack, first: int, last: int) -> float:
-    """Fundamental in Hz of a segment, its octave decided over the loudest second and a half."""
+def _settled_hz(signal: BandLimited, track: PitchTrack, first: int, last: int) -> float:
+    """Fundamental in Hz of a segment, its octave decided over the loudest second."""
     frames = np.arange(first, last + 1)
     f0_hz = _folded(track.f0_hz[frames], _middle_hz(track.f0_hz[frames], track.strength[frames]))
     part = _loudest_part(track.level_db[frames])
-    clock = settle_octave(signal, rate, Clock(track.time_s[frames][part], f0_hz[part]))
+    clock = settle_octave(signal, Clock(track.time_s[frames][part], f0_hz[part]))
     return float(np.median(clock.f0_hz))
 
 
@@ -204,7 +204,6 @@ def _merged(
 
 def _measured(
     signal: BandLimited,
-    rate: float,
     track: PitchTrack,
     envelope: Envelope,
     first: int,
@@ -222,7 +221,7 @@ def _measured(
     time_s = track.time_s[frames].copy()
     # The track reaches to both ends of the stretch.
     time_s[0], time_s[-1] = start_s, stop_s
-    clock = refine_clock(signal, Clock(time_s, _folded(track.f0_hz[frames], f0_hz)), rate)
+    clock = refine_clock(signal, Clock(time_s, _folded(track.f0_hz[frames], f0_hz)))
     if clock.cycles < _FEWEST_CYCLES:
         return None
     mean_hz = clock.turns / (stop_s - start_s)
@@ -276,7 +275,7 @@ def _folded(f0_hz: NDArray[np.float64], around_hz: float) -> NDArray[np.float64]
 
 
 def _loudest_part(level_db: NDArray[np.float64]) -> slice:
-    """The frames of the loudest stretch of up to 1.5 s."""
+    """The frames of the loudest stretch of up to 1 s."""
     width = max(4, int(_SETTLE_S / HOP_S))
     if len(level_db) <= width:
         return slice(0, len(level_db))

@@ -15,12 +15,12 @@ import scipy.signal
 from numpy.typing import NDArray
 
 from timbre_match.intake.pitch import HIGHEST_HZ, LOWEST_HZ
-from timbre_match.intake.warp import USABLE_BAND, BandLimited, Clock, points_per_cycle, refine_clock
+from timbre_match.intake.warp import BandLimited, Clock, points_per_cycle, refine_clock
 
 _BLOCK = 12
 """Cycles per block: halves, thirds and quarters of the fundamental fall on whole bins."""
 _HARMONICS = 10
-_LONGEST_S = 1.5
+_LONGEST_S = 1.0
 # On 357 real notes of 18 instruments: at the true fundamental the lines between the harmonics hold less than -35 dB of
 # the harmonics' power wherever three or more stand out; at twice the true fundamental the missing ones hold more than
 # -25 dB in all but one. Lines of a register below the sounding one (overblown reeds) reach -35 dB.
@@ -32,14 +32,12 @@ _STANDS_OUT_DB = 10.0
 _CLEARLY_DB = 12.0
 
 
-def settle_octave(signal: BandLimited, sample_rate_hz: float, clock: Clock) -> Clock:
+def settle_octave(signal: BandLimited, clock: Clock) -> Clock:
     """Move a clock to the fundamental that the evidence is for.
 
     Parameters
     ----------
     signal : BandLimited
-    sample_rate_hz : float
-        The rate of `signal` before oversampling.
     clock : Clock
         At the fundamental, or at a half, third, twice or three times of it.
 
@@ -49,21 +47,21 @@ def settle_octave(signal: BandLimited, sample_rate_hz: float, clock: Clock) -> C
         Refined, at the fundamental, over the times of the one given.
     """
     for _ in range(3):
-        clock = refine_clock(signal, clock, sample_rate_hz)
-        factor = _better_factor(signal, sample_rate_hz, clock)
+        clock = refine_clock(signal, clock, roughly=True)
+        factor = _better_factor(signal, clock)
         if factor == 1.0:
             return clock
         clock = Clock(clock.time_s, clock.f0_hz * factor)
-    return refine_clock(signal, clock, sample_rate_hz)
+    return refine_clock(signal, clock, roughly=True)
 
 
-def _better_factor(signal: BandLimited, sample_rate_hz: float, clock: Clock) -> float:
+def _better_factor(signal: BandLimited, clock: Clock) -> float:
     """What to multiply the candidate by: 1, or 2, 3, 1/2, 1/3."""
     f0_hz = float(np.median(clock.f0_hz))
-    spectrum, cycles = _block_spectrum(signal, sample_rate_hz, clock)
+    spectrum, cycles = _block_spectrum(signal, clock)
     if spectrum is None:
         return 1.0
-    spectrum = spectrum[: int(USABLE_BAND * sample_rate_hz / f0_hz * cycles)]
+    spectrum = spectrum[: int(signal.highest_hz / f0_hz * cycles)]
     for divisor in (2, 3):
         step = cycles // divisor
         if f0_hz / divisor > LOWEST_HZ and _stands(spectrum, step, divisor):
@@ -74,10 +72,10 @@ def _better_factor(signal: BandLimited, sample_rate_hz: float, clock: Clock) -> 
     return 1.0
 
 
-def _block_spectrum(signal: BandLimited, sample_rate_hz: float, clock: Clock) -> tuple[NDArray[np.float64] | None, int]:
+def _block_spectrum(signal: BandLimited, clock: Clock) -> tuple[NDArray[np.float64] | None, int]:
     """Mean power spectrum of Hann blocks, and cycles per block (bins per harmonic); None for too few cycles."""
     f0_hz = float(np.median(clock.f0_hz))
-    points = points_per_cycle(f0_hz, sample_rate_hz)
+    points = points_per_cycle(f0_hz, signal.highest_hz)
     instants = clock.instants_s(points)
     most = max(4 * _BLOCK, int(_LONGEST_S * f0_hz))
     skip = max(0, (len(instants) - most) // 2)

@@ -19,6 +19,8 @@ LOWEST_HZ = 25.0
 HIGHEST_HZ = 4500.0
 
 HOP_S = 0.02
+USABLE_BAND = 0.38
+"""Up to which part of its rate a signal from :func:`reduce_rate` is free of mirror images."""
 _FRAME_S = 0.1
 _BAND_HZ = 5500.0
 _CANDIDATES = 6

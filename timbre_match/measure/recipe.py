@@ -6,7 +6,6 @@ import numpy as np
 import scipy.fft
 import scipy.special
 from numpy.typing import NDArray
-from scipy.interpolate import CubicSpline
 
 from timbre_match import units
 from timbre_match.intake.cycles import Cycles, cut_cycles
@@ -195,8 +194,8 @@ def _mean_fundamental_hz(cycles: Cycles, heard: NDArray[np.int64]) -> float:
     mean_period_s = (cycles.start_s[-1] - cycles.start_s[0]) / (count - 1)
     per_step = max(1, min(count // 8, round(_STEP_S / mean_period_s)))
     steps = count // per_step
-    each = scipy.fft.rfft(cycles.samples[: steps * per_step], axis=1)[:, heard]
-    each = each.reshape(steps, per_step, -1).sum(axis=1)
+    summed = cycles.samples[: steps * per_step].reshape(steps, per_step, -1).sum(axis=1)
+    each = scipy.fft.rfft(summed, axis=1)[:, heard]
     turn = np.zeros(steps)
     for _ in range(3):
         turned = each * np.exp(-1j * np.outer(turn, heard))
@@ -204,9 +203,10 @@ def _mean_fundamental_hz(cycles: Cycles, heard: NDArray[np.int64]) -> float:
         off = np.angle(turned * reference.conj())
         weight = np.abs(reference) ** 2 * heard
         turn += off @ weight / float(weight @ heard)
-    # A coefficient speaks for its whole cycle: its mean phase belongs to the mean time of that cycle.
-    time_s = CubicSpline(np.arange(count), cycles.start_s).antiderivative()
-    centre_s = np.diff(time_s(np.arange(count + 1)))[: steps * per_step].reshape(steps, per_step).mean(axis=1)
+    # A coefficient speaks for its whole cycle: its mean phase belongs to the middle of that cycle.
+    ends_s = np.append(cycles.start_s[1:], 2.0 * cycles.start_s[-1] - cycles.start_s[-2])
+    middle_s = 0.5 * (cycles.start_s + ends_s)
+    centre_s = middle_s[: steps * per_step].reshape(steps, per_step).mean(axis=1)
     phase = (np.arange(steps) + 0.5) * per_step + turn / (2.0 * np.pi)
     centre_s = centre_s - centre_s.mean()
     return float(centre_s @ phase / (centre_s @ centre_s))
