@@ -160,7 +160,7 @@ def test_listed_as_json(run: CommandLine, make: Callable[[Path], Path], tmp_path
 
 @pytest.mark.parametrize("jobs", ["1", "2"])
 def test_among_good_ones(run: CommandLine, jobs: str, tmp_path: Path, results: Path) -> None:
-    good = [write(tmp_path / f"good_{n}.wav", played_note(440.0, held_s=0.7, gap_s=0.25)) for n in (1, 2)]
+    good = [write(tmp_path / f"good_{n}.wav", played_note(440.0, held_s=0.7 + 0.1 * n, gap_s=0.25)) for n in (1, 2)]
     bad = [make(tmp_path) for make in HOSTILE]
     out = results / "p.json"
     ended = run("measure", good[0], *bad, good[1], "--out", out, "--jobs", jobs)

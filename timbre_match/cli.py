@@ -20,10 +20,11 @@ from timbre_match.errors import TimbreMatchError, UnknownNameError
 if TYPE_CHECKING:
     from rich.console import RenderableType
 
-    from timbre_match.pipeline import Heard, Listening
+    from timbre_match.measure.takes import Heard, Listening
 
 EXIT_ERROR = 1
 EXIT_PART = 3
+EXIT_INTERRUPTED = 130
 
 app = typer.Typer(
     name="timbre-match",
@@ -64,6 +65,9 @@ def main() -> None:
         os.environ.setdefault(f"{library}_NUM_THREADS", "1")
     try:
         app()
+    except KeyboardInterrupt:
+        typer.echo("timbre-match: stopped; nothing was left half written", err=True)
+        sys.exit(EXIT_INTERRUPTED)
     except TimbreMatchError as error:
         _complain(error)
         sys.exit(EXIT_ERROR)
@@ -88,7 +92,7 @@ def notes(
     as_json: AsJson = False,
 ) -> None:
     """List the held notes of recordings."""
-    from timbre_match.pipeline import listen_to_all
+    from timbre_match.measure.takes import listen_to_all
 
     results = listen_to_all(recordings, _listening(notes, a4, channel), measure=False, progress=_progress)
     if as_json:
@@ -119,10 +123,11 @@ def measure(
     jobs: Annotated[int, typer.Option("--jobs", min=1, help="Recordings to measure side by side.")] = 1,
 ) -> None:
     """Measure takes and write the instrument's profile."""
-    from timbre_match.keep.files import save_profile
-    from timbre_match.pipeline import measure_takes
+    from timbre_match.keep.files import refuse_to_overwrite, save_profile
+    from timbre_match.measure.takes import measure_takes
     from timbre_match.show.tables import profile_summary
 
+    refuse_to_overwrite(out, takes, kind="profile")
     measured = measure_takes(
         takes,
         _listening(notes, a4, channel),
@@ -133,7 +138,7 @@ def measure(
         progress=_progress,
     )
     save_profile(measured.profile, out)
-    _show(profile_summary(measured.profile, measured.warnings))
+    _show(profile_summary(measured.profile, (*measured.warnings, *_family_warning(family))))
     _show(f"Written to {out}.")
     _exit_for(measured.failures, usable=True)
 
@@ -147,8 +152,9 @@ def target(
     """Blend profiles into a target, with a tolerance from how far they differ among themselves."""
     from timbre_match.compare.comparison import tolerance_db
     from timbre_match.compare.target import blend
-    from timbre_match.keep.files import load_profile, save_target
+    from timbre_match.keep.files import load_profile, refuse_to_overwrite, save_target
 
+    refuse_to_overwrite(out, profiles, kind="target")
     blended = blend(name, tuple(load_profile(path) for path in profiles))
     tolerance = tolerance_db(blended)
     save_target(blended, out)
@@ -171,9 +177,17 @@ def compare(
     ] = None,
 ) -> None:
     """Compare an instrument with a target: verdicts, body curve, regions, and what to try."""
-    from timbre_match.keep.files import comparison_to_json, load_profile, load_target, save_comparison
+    from timbre_match.keep.files import (
+        comparison_to_json,
+        load_profile,
+        load_target,
+        refuse_to_overwrite,
+        save_comparison,
+    )
     from timbre_match.pipeline import compare_and_advise
 
+    if out is not None:
+        refuse_to_overwrite(out, [profile, target], kind="comparison")
     measured, wanted = load_profile(profile), load_target(target)
     with _working("comparing"):
         comparison, suggestions = compare_and_advise(measured, wanted, margin_db=margin)
@@ -189,7 +203,8 @@ def compare(
     from timbre_match.show.tables import comparison_summary, suggestions_list
 
     _show(comparison_summary(comparison))
-    _show(suggestions_list(suggestions))
+    if suggestions or not comparison.regions:
+        _show(suggestions_list(suggestions))
     for written in (out, figures):
         if written is not None:
             _show(f"Written to {written}.")
@@ -206,8 +221,9 @@ def export(
 ) -> None:
     """Write a profile for other programs."""
     from timbre_match.keep import export as exporting
-    from timbre_match.keep.files import load_profile
+    from timbre_match.keep.files import load_profile, refuse_to_overwrite
 
+    refuse_to_overwrite(out, [profile], kind="profile" if kind is ExportFormat.JSON else None)
     write = {
         ExportFormat.CSV: exporting.export_csv,
         ExportFormat.JSON: exporting.export_json,
@@ -229,8 +245,18 @@ def demo(
     _show(f"Written to {out}.")
 
 
+def _family_warning(family: str) -> tuple[str, ...]:
+    from timbre_match.advise.workshop import families, workshop_family
+
+    try:
+        workshop_family(family)
+    except UnknownNameError:
+        return (f"No table of what to try for {family!r}; there is one for {', '.join(families())}.",)
+    return ()
+
+
 def _listening(notes: str | None, a4_hz: float, channel: int | None) -> "Listening":
-    from timbre_match.pipeline import Listening
+    from timbre_match.measure.takes import Listening
     from timbre_match.units import parse_notes
 
     try:

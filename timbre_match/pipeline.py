@@ -1,8 +1,7 @@
 """The whole story on one page: recordings to held notes, to recipes, to a profile, to a comparison, to advice."""
 
 import dataclasses
-from collections.abc import Callable, Iterable, Iterator, Sequence
-from dataclasses import dataclass
+from collections.abc import Iterator, Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, Literal
 
@@ -10,180 +9,12 @@ from timbre_match import units
 from timbre_match.advise.suggestions import Suggestion, suggest
 from timbre_match.compare.comparison import DEFAULT_MARGIN_DB, compare
 from timbre_match.compare.records import Comparison
-from timbre_match.compare.target import Target
-from timbre_match.errors import RecordingError, TimbreMatchError
-from timbre_match.intake.notes import HeldNote, held_notes
-from timbre_match.intake.recording import Recording, read_recording
-from timbre_match.measure.profile import Profile, Source, Take
-from timbre_match.measure.recipe import Recipe, measure_recipe
+from timbre_match.compare.target import Target, as_target
+from timbre_match.measure.profile import Profile
+from timbre_match.measure.takes import Listening, Progress, measure_takes
 
 if TYPE_CHECKING:
     from rich.console import RenderableType
-
-Progress = Callable[[Iterable["Heard"], int], Iterable["Heard"]]
-"""Wraps results as they come, with their number: a progress bar, for example."""
-
-RECORDING_SUFFIXES = frozenset(
-    {
-        ".wav",
-        ".wave",
-        ".flac",
-        ".aif",
-        ".aiff",
-        ".aifc",
-        ".ogg",
-        ".oga",
-        ".opus",
-        ".mp3",
-        ".w64",
-        ".rf64",
-        ".caf",
-        ".au",
-    }
-)
-"""What counts as a recording inside a folder; a file that is named by itself is judged by its content."""
-
-
-@dataclass(frozen=True, kw_only=True, slots=True)
-class Listening:
-    """How recordings are to be read: the same for all takes of a profile.
-
-    `notes` are the notes that were played, if the maker says so; `channel` counts from 1, None takes the strongest.
-    """
-
-    notes: tuple[str, ...] | None = None
-    a4_hz: float = units.STANDARD_A4_HZ
-    channel: int | None = None
-
-
-@dataclass(frozen=True, kw_only=True, slots=True)
-class Heard:
-    """What one recording gave: its held notes and recipes, or the error that says why there are none."""
-
-    path: Path
-    recording: Recording | None = None
-    notes: tuple[HeldNote, ...] = ()
-    recipes: tuple[Recipe, ...] = ()
-    error: TimbreMatchError | None = None
-
-
-@dataclass(frozen=True, kw_only=True, slots=True)
-class Measured:
-    """A profile of what could be measured, and what could not."""
-
-    profile: Profile
-    warnings: tuple[str, ...]
-    failures: tuple[TimbreMatchError, ...]
-
-
-def listen(path: Path, listening: Listening, *, measure: bool = True) -> Heard:
-    """Read one recording, find its held notes and, if wanted, measure their recipes."""
-    recording = None
-    try:
-        recording = read_recording(path, channel=listening.channel)
-        notes = held_notes(recording, notes=listening.notes, a4_hz=listening.a4_hz)
-        recipes = [measure_recipe(recording, note, a4_hz=listening.a4_hz) for note in notes] if measure else []
-    except TimbreMatchError as error:
-        # The rooms behind the reading know the file's name without its folder, which several takes may share.
-        error.where = str(path)
-        return Heard(path=path, recording=_without_samples(recording), error=error)
-    return Heard(path=path, recording=_without_samples(recording), notes=notes, recipes=tuple(recipes))
-
-
-def listen_to_all(
-    paths: Sequence[Path],
-    listening: Listening,
-    *,
-    measure: bool = True,
-    jobs: int = 1,
-    progress: Progress | None = None,
-) -> list[Heard]:
-    """Listen to recordings in parallel; what each gave, in the order of `paths`."""
-    results: Iterable[Heard]
-    if jobs == 1 or len(paths) == 1:
-        results = (listen(path, listening, measure=measure) for path in paths)
-    else:
-        import joblib
-
-        parallel = joblib.Parallel(n_jobs=jobs, return_as="generator")
-        results = parallel(joblib.delayed(listen)(path, listening, measure=measure) for path in paths)
-    return list(progress(results, len(paths)) if progress else results)
-
-
-def recordings_of_take(place: Path) -> list[Path]:
-    """The recordings that make one take: the file itself, or all recordings in a folder, sorted by name.
-
-    Raises
-    ------
-    RecordingError
-        If the folder holds no recording.
-    """
-    if not place.is_dir():
-        return [place]
-    found = sorted(
-        entry
-        for entry in place.iterdir()
-        if entry.suffix.lower() in RECORDING_SUFFIXES and not entry.name.startswith(".")
-    )
-    if not found:
-        raise RecordingError(
-            "no recording in this folder",
-            where=str(place),
-            cause="another folder was meant, or the recordings lie one folder deeper",
-            remedy="name the folder whose recordings together are one take (WAV, FLAC, AIFF, OGG, MP3)",
-        )
-    return found
-
-
-def measure_takes(
-    takes: Sequence[Path],
-    listening: Listening,
-    *,
-    instrument: str = "",
-    stage: str = "",
-    family: str = "",
-    jobs: int = 1,
-    progress: Progress | None = None,
-) -> Measured:
-    """Measure takes, each a recording or a folder whose recordings together are one take.
-
-    What can be used is measured; what cannot is listed.
-
-    Raises
-    ------
-    TimbreMatchError
-        If no recording of any take can be used: the one failure, or all of them in one message.
-    """
-    failures: list[TimbreMatchError] = []
-    parts: list[list[Path]] = []
-    for place in takes:
-        try:
-            parts.append(recordings_of_take(place))
-        except TimbreMatchError as error:
-            failures.append(error)
-    results = listen_to_all([path for part in parts for path in part], listening, jobs=jobs, progress=progress)
-    failures += [heard.error for heard in results if heard.error is not None]
-    measured, first = [], 0
-    for part in parts:
-        usable = [heard for heard in results[first : first + len(part)] if heard.error is None]
-        first += len(part)
-        if usable:
-            measured.append(
-                Take(
-                    recordings=tuple(
-                        Source(file=heard.recording.file, sha256=heard.recording.sha256)
-                        for heard in usable
-                        if heard.recording is not None
-                    ),
-                    notes=tuple(recipe for heard in usable for recipe in heard.recipes),
-                )
-            )
-    if not measured:
-        if len(failures) == 1:
-            raise failures[0]
-        raise RecordingError("none of the recordings can be used:\n" + "\n".join(str(error) for error in failures))
-    profile = Profile(instrument=instrument, stage=stage, family=family, a4_hz=listening.a4_hz, takes=tuple(measured))
-    return Measured(profile=profile, warnings=_gathered_warnings(results), failures=tuple(failures))
 
 
 def measure_profile(
@@ -237,27 +68,14 @@ def compare_and_advise(
 ) -> tuple[Comparison, tuple[Suggestion, ...]]:
     """Compare a profile with a target, and what to try about the difference."""
     comparison = compare(profile, target, margin_db=margin_db)
+    families = {member.family for member in as_target(target).members} - {""}
+    if profile.family and families and profile.family not in families:
+        remark = (
+            f"The instrument is a {profile.family}, the target {' and '.join(sorted(families))}: no suggestions, since "
+            "nothing done to the one makes it the other."
+        )
+        return dataclasses.replace(comparison, remarks=(remark, *comparison.remarks)), ()
     return comparison, suggest(comparison)
-
-
-def _gathered_warnings(results: Iterable[Heard]) -> tuple[str, ...]:
-    """What was wrong with the recordings: each sentence once, led by the files that it is about."""
-    files: dict[str, list[str]] = {}
-    for heard in results:
-        for sentence in heard.recording.warnings if heard.recording is not None else ():
-            files.setdefault(sentence, []).append(heard.path.name)
-    return tuple(f"{_listed(names)}: {sentence}" for sentence, names in files.items())
-
-
-def _listed(names: list[str]) -> str:
-    return ", ".join(names[:3]) + (f" and {len(names) - 3} more" if len(names) > 3 else "")
-
-
-def _without_samples(recording: Recording | None) -> Recording | None:
-    """The recording's facts alone: samples of many recordings would fill the memory, and need not cross processes."""
-    if recording is None:
-        return None
-    return dataclasses.replace(recording, samples=recording.samples[:0])
 
 
 def write_figures(folder: Path, profile: Profile, target: Target, comparison: Comparison) -> tuple[Path, ...]:

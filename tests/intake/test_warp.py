@@ -21,7 +21,7 @@ def steady_clock(f0_hz: float, start_s: float = 0.0, length_s: float = 1.0) -> C
 
 @pytest.mark.parametrize(
     ("edge_of_rate", "part_of_rate", "error_db"),
-    # The images of a component f stand 120 lg((4 edge - f) / f) dB under it (the spectrum of a quintic spline is sinc^6),
+    # The images of a component f stand 120 lg((4 edge - f) / f) dB under it (a quintic spline: sinc^6),
     # and 6 dB for a pair of them: 101 dB at half the edge, 72 dB at 0.8 of it.
     [
         (0.5, 0.02, -110.0),

@@ -16,7 +16,7 @@ from matplotlib.image import imread
 from matplotlib.patches import Rectangle
 
 from tests.show import invented
-from timbre_match.compare.records import Comparison
+from timbre_match.compare.records import Comparison, Interval
 from timbre_match.compare.target import Target
 from timbre_match.measure.profile import Profile
 from timbre_match.show.drawing import VERDICT_COLOUR, drawable
@@ -120,18 +120,42 @@ def test_the_target_is_a_notch_for_every_harmonic_that_it_has() -> None:
         assert len(offsets(panel, "notches")) == heard.sum()
 
 
-def test_a_target_that_is_only_louder_has_its_notches_on_the_stems() -> None:
+def raised(profile: Profile, by_db: float) -> Target:
+    takes = tuple(
+        replace(take, notes=tuple(replace(recipe, level_db=recipe.level_db + by_db) for recipe in take.notes))
+        for take in profile.takes
+    )
+    return Target(name="raised", members=(replace(profile, takes=takes),))
+
+
+def test_without_a_comparison_the_notches_are_the_targets_true_shares() -> None:
     profile = invented.profile(takes=1)
-    louder = replace(
-        profile,
-        takes=tuple(
-            replace(take, notes=tuple(replace(recipe, level_db=recipe.level_db + 6.0) for recipe in take.notes))
-            for take in profile.takes
+    figure = recipe_figure(profile, raised(profile, 6.0))
+    for panel in figure.axes:
+        heads = np.array([segment[1] for segment in stems(panel)])
+        assert offsets(panel, "notches") == pytest.approx(heads + np.array([0.0, 6.0]))
+    assert not any("reference level" in text.get_text() for text in figure.texts)
+
+
+@pytest.mark.parametrize("told_db", [-4.0, 0.0, 2.5])
+def test_with_a_comparison_notch_and_stem_lie_apart_by_what_it_tells(told_db: float) -> None:
+    profile = invented.profile(takes=1)
+    compared = replace(
+        invented.comparison(),
+        harmonics=tuple(
+            replace(one, difference_db=Interval(value=told_db, low=told_db - 1.0, high=told_db + 1.0))
+            for one in invented.comparison().harmonics
+            if one.note != "A4"
         ),
     )
-    for panel in recipe_figure(profile, Target(name="louder", members=(louder,))).axes:
-        heads = [segment[1].tolist() for segment in stems(panel)]
-        assert offsets(panel, "notches") == pytest.approx(np.array(heads))
+    figure = recipe_figure(profile, raised(profile, 6.0), compared)
+    for panel, note in zip(figure.axes, reversed(invented.NOTES), strict=True):
+        if note == "A4":
+            assert "notches" not in {one.get_label() for one in panel.collections}
+            continue
+        heads = np.array([segment[1] for segment in stems(panel)])
+        assert heads - offsets(panel, "notches") == pytest.approx(np.tile([0.0, told_db], (len(heads), 1)), abs=1e-9)
+    assert any("at the comparison's reference level: raised" in text.get_text() for text in figure.texts)
 
 
 def test_the_recipe_marks_the_heard_harmonics_that_differ_and_no_others() -> None:

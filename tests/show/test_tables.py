@@ -11,7 +11,7 @@ from rich.console import Console, RenderableType
 
 from tests.show import invented
 from timbre_match.advise.suggestions import suggest
-from timbre_match.compare.records import ColourDistance, HarmonicDifference, Interval
+from timbre_match.compare.records import ColourDistance, Interval
 from timbre_match.intake.notes import HeldNote
 from timbre_match.intake.recording import Recording
 from timbre_match.show.marks import plain, signed, signed_interval
@@ -20,7 +20,6 @@ from timbre_match.show.tables import (
     held_notes_table,
     profile_summary,
     suggestions_list,
-    unsettled_sentence,
 )
 
 HOSTILE = [
@@ -135,7 +134,13 @@ def test_profile_summary_counts_what_is_in_the_profile() -> None:
 def test_the_comparison_begins_with_the_verdict_in_words() -> None:
     compared = invented.comparison()
     text = flowing(comparison_summary(compared))
-    assert text.index("Colour distance 3.4 dB (2.9 to 3.9); your own takes differ by 0.8 dB.") < text.index("▼")
+    words = (
+        "Colour distance 3.4 dB (2.9 to 3.9) between the averages of the takes; single takes of yours lie 0.8 dB "
+        "apart. All differences are relative: zero is the level that the middle half of the values over the frequency "
+        "range agrees on, so a broad change moves it."
+    )
+    assert text.index(words) < text.index("▼")
+    assert "Harmonics that differ, the largest first (each leans on its neighbours in frequency)" in text
     assert "Closeness 62 % (55 to 70): that share of the loudness lies within 3 dB of the target." in text
     assert "▼ 590 Hz 810 Hz −4.6 (−6.0 to −3.2) 8 6" in text
     assert "▲ 2250 Hz 3020 Hz +3.7 (+2.3 to +5.1) 8 6" in text
@@ -159,21 +164,6 @@ def test_a_comparison_without_differences_says_so() -> None:
     text = flowing(comparison_summary(compared))
     assert "No stretch of frequency is known to differ." in text
     assert "No single harmonic is known to differ." in text
-    assert "cannot be told yet" not in text
-
-
-def test_unsettled_sentence_says_what_more_takes_buy() -> None:
-    def unsettled(takes: int | None) -> HarmonicDifference:
-        return replace(invented.harmonic("A4", 1, 2.0, "unsettled"), takes_needed=takes)
-
-    harmonics = [*(unsettled(4) for _ in range(3)), unsettled(6), unsettled(9), unsettled(None)]
-    assert unsettled_sentence(harmonics) == (
-        "6 harmonics cannot be told yet. With 4 takes a side, 3 of them would be settled. With 9 takes a side, 5 of "
-        "them would be settled. For 1 no practicable number of takes is enough: they lie close to the margin."
-    )
-    assert unsettled_sentence([unsettled(5)]) == (
-        "1 harmonic cannot be told yet. With 5 takes a side, 1 of them would be settled."
-    )
 
 
 def test_suggestions_say_each_move_once_and_end_with_the_makers_judgement() -> None:

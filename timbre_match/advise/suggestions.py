@@ -10,6 +10,9 @@ Regions come first. Their order is by the product of three things:
 
 Single harmonics follow, and only those that differ, that no region covers, and whose interval leaves the body curve
 at their frequency, that is, which stand out of their neighbours.
+
+Two rules guard the instrument. What rests on one harmonic of one note asks for that note again and for nothing else.
+And where one side of the comparison rests on a single take, no move appears that cannot be undone.
 """
 
 import math
@@ -31,13 +34,15 @@ from timbre_match.compare.colour import LOUDNESS_EXPONENT, erb_number
 from timbre_match.compare.records import Comparison, HarmonicDifference, Interval, Region, Verdict
 from timbre_match.errors import UnknownNameError
 
-__all__ = ["Move", "Suggestion", "suggest"]
+__all__ = ["Move", "Suggestion", "ear_weight", "suggest"]
 
+_MOST_SUGGESTIONS = 5
 _NAMED_HARMONICS = 6
+_FEWEST_TAKES = 2
 _MEASUREMENT = "follows from the measurement"
-_BOTH_WAYS = Move(
-    text="Within this one resonance region the evidence points both ways, stronger at one place and weaker at another: "
-    "change nothing for it yet, record more takes, and measure again.",
+_ONE_TAKE = Move(
+    text="Moves that cannot be undone are left out, because one side rests on a single take: record more takes of it "
+    "and compare again first.",
     reversible=True,
     basis=_MEASUREMENT,
 )
@@ -66,14 +71,19 @@ class _Finding:
     verdict: Verdict
     evidence: str
     weight: float
+    lone_note: str = ""
+    """What to play again where the evidence is one harmonic of one note; empty where it is more."""
 
     @property
     def practices(self) -> tuple[Practice, ...]:
         return self.row.too_strong if self.verdict == "stronger" else self.row.too_weak
 
     def opposes(self, other: "_Finding") -> bool:
-        """Whether both lie in one row with opposite directions; a lone harmonic does not outvote a region."""
-        heard_out = self.region is None or other.region is not None
+        """Whether both lie in one row with opposite directions.
+
+        A single harmonic has no voice here, and several outside regions do not outvote a region.
+        """
+        heard_out = not self.lone_note and not other.lone_note and (self.region is None or other.region is not None)
         return heard_out and self.row == other.row and self.verdict != other.verdict
 
 
@@ -88,33 +98,83 @@ def suggest(comparison: Comparison) -> tuple[Suggestion, ...]:
     Returns
     -------
     tuple of Suggestion
-        Best rank (1) first; empty where nothing is known to differ. No two moves of the whole list contradict each
+        Best rank (1) first, five at most; empty where nothing is known to differ. A finding whose moves a better rank
+        has named already is left out. No two moves of the whole list contradict each
         other: within one row evidence for both directions replaces the moves, and between rows the better rank wins.
     """
     family = _family_or_general(comparison.family)
     findings = _region_findings(comparison, family.rows) + _harmonic_findings(comparison, family.rows)
     findings.sort(key=lambda finding: (finding.region is None, -finding.weight))
+    scatter = comparison.repeatability
+    one_take = min(scatter.takes, scatter.target_takes) < _FEWEST_TAKES
     accepted: list[tuple[int, Practice]] = []
-    suggestions = []
-    for rank, finding in enumerate(findings, start=1):
-        if any(finding.opposes(other) for other in findings):
-            kept = [one for one in finding.practices if one.way == "check" and one.move.reversible]
-            moves = [_BOTH_WAYS, *(one.move for one in kept)]
-        else:
-            kept = [one for one in finding.practices if not any(one.contradicts(other) for _, other in accepted)]
-            moves = [one.move for one in kept]
-            moves += _left_out(finding.practices, accepted)
+    named: set[str] = set()
+    suggestions: list[Suggestion] = []
+    for finding in findings:
+        opposing = [other for other in findings if finding.opposes(other)]
+        kept, moves = _moves(finding, opposing, accepted, one_take=one_take)
+        if named.issuperset(move.text for move in moves):
+            continue
+        rank = len(suggestions) + 1
         accepted += [(rank, one) for one in kept]
+        named.update(move.text for move in moves)
         suggestions.append(
             Suggestion(
                 rank=rank,
                 region=finding.region,
-                evidence=f"{finding.evidence}. {_what_lies_here(finding.row)}",
+                evidence=_in_words(finding, opposing),
                 moves=tuple(sorted(moves, key=lambda move: not move.reversible)),
                 cautions=(family.remark, *gather_cautions(tuple(kept))),
             )
         )
+        if rank == _MOST_SUGGESTIONS:
+            break
     return tuple(suggestions)
+
+
+def _moves(
+    finding: _Finding, opposing: list[_Finding], accepted: list[tuple[int, Practice]], *, one_take: bool
+) -> tuple[list[Practice], list[Move]]:
+    """Choose the practices that stand, and all moves that the suggestion names."""
+    if finding.lone_note:
+        return [], [_again(finding.lone_note)]
+    if opposing:
+        kept = [one for one in finding.practices if one.way == "check" and one.move.reversible]
+        return kept, [_both_ways(finding.row), *(one.move for one in kept)]
+    allowed = tuple(one for one in finding.practices if one.move.reversible or not one_take)
+    kept = [one for one in allowed if not any(one.contradicts(other) for _, other in accepted)]
+    moves = [one.move for one in kept] + _left_out(allowed, accepted)
+    if len(allowed) < len(finding.practices):
+        moves.append(_ONE_TAKE)
+    return kept, moves
+
+
+def _again(note: str) -> Move:
+    return Move(
+        text=f"Play {note} again on both sides and compare anew; change nothing on the instrument for it yet.",
+        reversible=True,
+        basis=_MEASUREMENT,
+    )
+
+
+def _both_ways(row: WorkshopRow) -> Move:
+    return Move(
+        text=f"Within this one resonance region ({row.name}) the evidence points both ways, stronger at one place and "
+        "weaker at another: change nothing for it yet, record more takes, and measure again.",
+        reversible=True,
+        basis=_MEASUREMENT,
+    )
+
+
+def _in_words(finding: _Finding, opposing: list[_Finding]) -> str:
+    """Put the evidence in sentences; with that for the other direction, whose own suggestion may be left out."""
+    if finding.lone_note:
+        return (
+            f"{finding.evidence}. This is one harmonic of one note: how that note was played can do it as well as the "
+            "instrument."
+        )
+    against = "".join(f". But: {other.evidence}" for other in opposing)
+    return f"{finding.evidence}{against}. Here lies: {finding.row.name}. {finding.row.about} ({finding.row.basis})"
 
 
 def ear_weight(freq_hz: float) -> float:
@@ -144,14 +204,16 @@ def _region_findings(comparison: Comparison, rows: tuple[WorkshopRow, ...]) -> l
         size = _towards(region.difference_db, region.verdict)
         width_erb = float(erb_number(region.high_hz) - erb_number(region.low_hz))
         middle_hz = math.sqrt(region.low_hz * region.high_hz)
+        stretch = _stretch(region.low_hz, region.high_hz)
         findings.append(
             _Finding(
                 region=region,
                 row=_row_of(region, rows),
                 verdict=region.verdict,
-                evidence=f"{_stretch(region.low_hz, region.high_hz)} is {region.verdict} than the target by "
+                evidence=f"{stretch} is {region.verdict} than the target by "
                 f"{_size(size)}, seen in {counted(region.harmonics, 'harmonic')} of {counted(region.notes, 'note')}",
                 weight=max(size.low, 0.0) * width_erb * ear_weight(middle_hz),
+                lone_note=f"the note with a harmonic at {stretch}" if region.harmonics == 1 else "",
             )
         )
     return findings
@@ -170,6 +232,7 @@ def _harmonic_findings(comparison: Comparison, rows: tuple[WorkshopRow, ...]) ->
             f"harmonic {harmonic.k} of {harmonic.note} ({hertz(harmonic.freq_hz)} Hz) by {_size(sizes[id(harmonic)])}"
             for harmonic in harmonics[:_NAMED_HARMONICS]
         ]
+        kind = "A single harmonic" if len(harmonics) == 1 else "Single harmonics"
         if len(harmonics) > _NAMED_HARMONICS:
             named.append(f"and {len(harmonics) - _NAMED_HARMONICS} more")
         findings.append(
@@ -177,9 +240,10 @@ def _harmonic_findings(comparison: Comparison, rows: tuple[WorkshopRow, ...]) ->
                 region=None,
                 row=rows[index],
                 verdict=verdict,
-                evidence=f"Single harmonics {verdict} than the target that stand out of their neighbours: "
+                evidence=f"{kind} {verdict} than the target, out of step with the neighbours in frequency: "
                 + ", ".join(named),
                 weight=sum(max(sizes[id(harmonic)].low, 0.0) * ear_weight(harmonic.freq_hz) for harmonic in harmonics),
+                lone_note=harmonics[0].note if len(harmonics) == 1 else "",
             )
         )
     return findings
@@ -233,10 +297,6 @@ def _row_of(region: Region, rows: tuple[WorkshopRow, ...]) -> WorkshopRow:
 
 def _row_index(rows: tuple[WorkshopRow, ...], freq_hz: float) -> int:
     return next((index for index, row in enumerate(rows) if freq_hz < row.high_hz), len(rows) - 1)
-
-
-def _what_lies_here(row: WorkshopRow) -> str:
-    return f"Here lies: {row.name}. {row.about} ({row.basis})"
 
 
 def _towards(difference_db: Interval, verdict: Verdict) -> Interval:

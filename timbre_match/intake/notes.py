@@ -12,7 +12,7 @@ from timbre_match import units
 from timbre_match.errors import NoHeldNoteError
 from timbre_match.intake.envelope import Envelope, is_ringing, level_envelope, steady_stretch
 from timbre_match.intake.octave import settle_octave
-from timbre_match.intake.pitch import HOP_S, USABLE_BAND, PitchTrack, reduce_rate, track_pitch
+from timbre_match.intake.pitch import HOP_S, USABLE_BAND, PitchTrack, reduce_rate, track_pitch, without_rumble
 from timbre_match.intake.recording import Recording
 from timbre_match.intake.warp import BandLimited, Clock, refine_clock
 
@@ -94,8 +94,9 @@ def held_notes(
         If no note is steady for long enough, or none of `notes` is there.
     """
     samples, rate = reduce_rate(recording.samples, recording.sample_rate_hz)
-    track = track_pitch(samples, rate)
-    envelope = level_envelope(samples, rate)
+    calm = without_rumble(samples, rate)
+    track = track_pitch(calm, rate)
+    envelope = level_envelope(calm, rate)
     signal = BandLimited(samples, rate, USABLE_BAND * rate)
     wanted_hz = None if notes is None else [units.note_to_hz(name, a4_hz) for name in notes]
     settled = []
@@ -112,7 +113,7 @@ def held_notes(
         # The window blurs periodicity at both ends of a note; the level tells better where it begins and ends.
         first = max(first - _BLUR_FRAMES, edges[index])
         last = min(last + _BLUR_FRAMES, starts[index + 1])
-        note = _measured(signal, track, envelope, first, last, f0_hz, a4_hz)
+        note = _measured(signal, track, envelope, first, last, f0_hz, a4_hz, wanted_hz)
         if note is not None and (wanted_hz is None or _is_one_of(note.f0_hz, wanted_hz)):
             found.append(note)
     found = _without_scraps(found)
@@ -136,8 +137,7 @@ def _segments(track: PitchTrack, envelope: Envelope) -> list[tuple[int, int]]:
     voiced = scipy.ndimage.binary_closing(np.pad(voiced, 3), iterations=2)[3:-3]
     cuts = np.zeros(len(voiced), dtype=bool)
     cuts[_pitch_steps(track, voiced)] = True
-    for instant in envelope.renewals_s:
-        cuts[min(len(cuts) - 1, round(instant / HOP_S))] = True
+    cuts[_frame_at(track, envelope.renewals_s)] = True
     segments, first = [], None
     for frame in range(len(voiced) + 1):
         inside = frame < len(voiced) and bool(voiced[frame])
@@ -147,6 +147,13 @@ def _segments(track: PitchTrack, envelope: Envelope) -> list[tuple[int, int]]:
         elif first is None and inside:
             first = frame
     return [(a, b) for a, b in segments if (b - a + 1) * HOP_S >= _SHORTEST_SEGMENT_S]
+
+
+def _frame_at(track: PitchTrack, instants_s: Sequence[float]) -> NDArray[np.int64]:
+    """The frames next to instants in seconds."""
+    hop_s = float(track.time_s[1] - track.time_s[0]) if len(track.time_s) > 1 else HOP_S
+    frames = np.round(np.asarray(instants_s, dtype=np.float64) / hop_s).astype(np.int64)
+    return np.asarray(np.minimum(frames, len(track.time_s) - 1))
 
 
 def _pitch_steps(track: PitchTrack, voiced: NDArray[np.bool_]) -> NDArray[np.int64]:
@@ -181,6 +188,7 @@ def _merged(
     segments: list[tuple[int, int, float]], track: PitchTrack, envelope: Envelope
 ) -> list[tuple[int, int, float]]:
     """Segments with neighbours joined that turned out to be one note: the track had slipped an octave between them."""
+    renewals = _frame_at(track, envelope.renewals_s)
 
     def peak_db(first: int, last: int) -> float:
         return float(track.level_db[first : last + 1].max())
@@ -189,7 +197,7 @@ def _merged(
     for first, last, f0_hz in segments:
         if joined:
             before, until, before_hz = joined[-1]
-            renewed = any(until - 1 <= instant / HOP_S <= first + 1 for instant in envelope.renewals_s)
+            renewed = bool(np.any((renewals >= until - 1) & (renewals <= first + 1)))
             same = abs(units.cents_between(f0_hz, before_hz)) < _STEP_CENTS
             if first - until <= 2 and same and not renewed:
                 joined[-1] = (before, last, f0_hz if last - first > until - before else before_hz)
@@ -210,6 +218,7 @@ def _measured(
     last: int,
     f0_hz: float,
     a4_hz: float,
+    wanted_hz: list[float] | None,
 ) -> HeldNote | None:
     """The held note between two frames, or None where too little of it is steady."""
     begin_s, end_s = float(track.time_s[first]), float(track.time_s[last])
@@ -226,6 +235,11 @@ def _measured(
         return None
     mean_hz = clock.turns / (stop_s - start_s)
     name, cents = units.nearest_note(mean_hz, a4_hz)
+    if wanted_hz:
+        # A note that was asked for keeps its name, however far out of tune it was played.
+        nearest = min(wanted_hz, key=lambda hz: abs(units.cents_between(mean_hz, hz)))
+        name = units.nearest_note(nearest, a4_hz)[0]
+        cents = units.cents_between(mean_hz, nearest)
     return HeldNote(
         note=name,
         f0_hz=mean_hz,

@@ -15,8 +15,9 @@ import scipy.signal
 from numpy.typing import NDArray
 
 LOWEST_HZ = 25.0
-"""Half a semitone below the contrabassoon's lowest note (27 to 29 Hz)."""
+"""A little below the contrabassoon's lowest note (27 to 29 Hz)."""
 HIGHEST_HZ = 4500.0
+_RUMBLE_HZ = 18.0
 
 HOP_S = 0.02
 USABLE_BAND = 0.38
@@ -62,6 +63,8 @@ class PitchTrack:
 def reduce_rate(samples: NDArray[np.float64], sample_rate_hz: int) -> tuple[NDArray[np.float64], float]:
     """Reduce the sample rate by a whole factor to 14 to 28 kHz, enough for every fundamental and its first harmonics.
 
+    A constant offset is taken out on the way.
+
     Parameters
     ----------
     samples : array, shape (n,)
@@ -73,14 +76,24 @@ def reduce_rate(samples: NDArray[np.float64], sample_rate_hz: int) -> tuple[NDAr
     sample_rate_hz : float
     """
     factor = max(1, int(sample_rate_hz // 14000))
+    level = samples - samples.mean() if len(samples) else samples
     if factor == 1:
-        return samples, float(sample_rate_hz)
+        return level, float(sample_rate_hz)
     half = 11 * factor
     # Falls from 0.38 to 0.62 of the new rate: nothing comes back mirrored into the part below 0.38 that is used.
     taps = scipy.signal.firwin(2 * half + 1, 1.0 / factor, window=("kaiser", 8.0))
     count = -(-len(samples) // factor)
-    filtered = scipy.signal.upfirdn(taps, samples, down=factor)
+    filtered = scipy.signal.upfirdn(taps, level, down=factor)
     return np.asarray(filtered[half // factor : half // factor + count]), sample_rate_hz / factor
+
+
+def without_rumble(samples: NDArray[np.float64], sample_rate_hz: float) -> NDArray[np.float64]:
+    """Take out what lies below the lowest note: steps on the floor, wind, traffic.
+
+    The filter rings for some cycles at the start of a sound; levels and tracks can bear that, phases cannot.
+    """
+    highpass = scipy.signal.butter(4, _RUMBLE_HZ, "highpass", fs=sample_rate_hz, output="sos")
+    return np.asarray(scipy.signal.sosfilt(highpass, samples))
 
 
 def track_pitch(samples: NDArray[np.float64], sample_rate_hz: float) -> PitchTrack:

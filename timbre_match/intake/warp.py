@@ -40,6 +40,7 @@ class Clock:
         if np.any(np.diff(smooth.antiderivative()(time_s)) <= 0.0):
             smooth = PchipInterpolator(time_s, f0_hz)
         # Integrated from the first time on, so that the phase is zero there.
+        self._f0_of_time = smooth
         self._phase_of_time = smooth.antiderivative()
         self._phase = self._phase_of_time(time_s)
         self._time_of_phase = (
@@ -59,8 +60,12 @@ class Clock:
     def instants_s(self, points: int) -> NDArray[np.float64]:
         """Times in seconds of `points` equal steps of every whole cycle, shape (cycles, points)."""
         count = self.cycles
-        knots = min(points, 16)
-        coarse = self._time_of_phase(np.arange(count * knots + 1) / knots)
+        # Straight lines between instants a millisecond apart are right to a tenth of a microsecond.
+        knots = min(points, max(8, int(np.ceil(1000.0 / float(self.f0_hz.min())))))
+        phase = np.arange(count * knots + 1) / knots
+        coarse = np.minimum(self._time_of_phase(phase), self.time_s[-1])
+        # The inverse of a spline is no spline: one step of Newton's method makes it exact.
+        coarse -= (self._phase_of_time(coarse) - phase) / self._f0_of_time(coarse)
         fine = np.interp(np.arange(count * points) * (knots / points), np.arange(count * knots + 1), coarse)
         return np.asarray(fine.reshape(count, points))
 

@@ -8,6 +8,7 @@ written: where a harmonic is not heard its level is null, and a floor without an
 
 import json
 import math
+from collections.abc import Iterable
 from pathlib import Path
 
 import numpy as np
@@ -32,6 +33,41 @@ from timbre_match.measure.profile import Profile, Source, Take
 from timbre_match.measure.recipe import Recipe
 
 Json = dict[str, object]
+
+
+def refuse_to_overwrite(path: str | Path, inputs: Iterable[str | Path], *, kind: str | None) -> None:
+    """Refuse to write over an input, or over a file that is not one of `kind` ("profile", "target", "comparison").
+
+    With `kind` None any file but an input may be replaced.
+
+    Raises
+    ------
+    OutputError
+        Before anything is written.
+    """
+    path = Path(path)
+    if not path.is_file():
+        return
+    for source in inputs:
+        same = Path(source).exists() and path.samefile(source)
+        if same or (Path(source).is_dir() and path.resolve().parent == Path(source).resolve()):
+            raise OutputError(
+                "this would be written over what it is made from",
+                where=str(path),
+                cause="the output has the name of an input",
+                remedy="give the output a name of its own",
+            )
+    if kind is None:
+        return
+    with path.open("rb") as existing:
+        start = existing.read(200).decode("utf-8", "replace")
+    if f"timbre-match/{kind}" not in start:
+        raise OutputError(
+            f"there is a file here already, and it is no {kind}; it was left alone",
+            where=str(path),
+            cause="a slip in the name after --out",
+            remedy="give the output a name of its own, or remove that file first",
+        )
 
 
 def profile_to_json(profile: Profile) -> str:

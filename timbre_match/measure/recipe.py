@@ -8,6 +8,7 @@ import scipy.special
 from numpy.typing import NDArray
 
 from timbre_match import units
+from timbre_match.errors import NoHeldNoteError
 from timbre_match.intake.cycles import Cycles, cut_cycles
 from timbre_match.intake.notes import HeldNote, NoteKind
 from timbre_match.intake.recording import Recording
@@ -108,6 +109,11 @@ def measure_recipe(recording: Recording, note: HeldNote, *, a4_hz: float = units
     Returns
     -------
     Recipe
+
+    Raises
+    ------
+    NoHeldNoteError
+        If none of its harmonics is heard.
     """
     cycles = cut_cycles(recording, note)
     count = max(1, min(int(cycles.highest_hz / note.f0_hz), (cycles.samples.shape[1] - 1) // 2))
@@ -116,18 +122,23 @@ def measure_recipe(recording: Recording, note: HeldNote, *, a4_hz: float = units
     raw = (np.abs(blocks.harmonics) ** 2).mean(axis=0)
     heard = raw > floor * _hearing_ratio(blocks)
     if not heard.any():
-        heard[int(np.argmax(raw))] = True
+        raise NoHeldNoteError(
+            f"nothing of {note.note} at {note.start_s:.2f} s stands out of the noise",
+            where=recording.file,
+            cause="the note is too soft against the noise around it",
+            remedy="record closer to the microphone, or in a quieter room",
+        )
     power = np.where(heard, np.maximum(raw - floor, 0.0), 0.0)
     total = float(power.sum())
     variance = _variance_of_shares(blocks, power, floor, heard)
     f0_hz = _mean_fundamental_hz(cycles, np.flatnonzero(heard) + 1)
-    name, cents = units.nearest_note(f0_hz, a4_hz)
+    cents = units.cents_between(f0_hz, units.note_to_hz(note.note, a4_hz))
     k = np.arange(1, count + 1)
     with np.errstate(divide="ignore", invalid="ignore"):
         level_db = np.where(heard, units.power_to_db(power / total), np.nan)
         se_db = np.where(heard, 10.0 / np.log(10.0) * np.sqrt(variance) * total / power, np.nan)
     return Recipe(
-        note=name,
+        note=note.note,
         f0_hz=f0_hz,
         cents=cents,
         start_s=note.start_s,
@@ -196,13 +207,7 @@ def _mean_fundamental_hz(cycles: Cycles, heard: NDArray[np.int64]) -> float:
     steps = count // per_step
     summed = cycles.samples[: steps * per_step].reshape(steps, per_step, -1).sum(axis=1)
     each = scipy.fft.rfft(summed, axis=1)[:, heard]
-    turn = np.zeros(steps)
-    for _ in range(3):
-        turned = each * np.exp(-1j * np.outer(turn, heard))
-        reference = turned.sum(axis=0)
-        off = np.angle(turned * reference.conj())
-        weight = np.abs(reference) ** 2 * heard
-        turn += off @ weight / float(weight @ heard)
+    turn = _common_turn(each, heard)
     # A coefficient speaks for its whole cycle: its mean phase belongs to the middle of that cycle.
     ends_s = np.append(cycles.start_s[1:], 2.0 * cycles.start_s[-1] - cycles.start_s[-2])
     middle_s = 0.5 * (cycles.start_s + ends_s)
@@ -212,11 +217,22 @@ def _mean_fundamental_hz(cycles: Cycles, heard: NDArray[np.int64]) -> float:
     return float(centre_s @ phase / (centre_s @ centre_s))
 
 
+def _common_turn(each: NDArray[np.complex128], order: NDArray[np.int64]) -> NDArray[np.float64]:
+    """Phase in radians of the fundamental in each row, shape (rows,), agreed on by the harmonics `order` (columns)."""
+    turn = np.zeros(len(each))
+    for _ in range(3):
+        turned = each * np.exp(-1j * np.outer(turn, order))
+        reference = turned.sum(axis=0)
+        off = np.angle(turned * reference.conj())
+        weight = np.abs(reference) ** 2 * order
+        turn += off @ weight / float(weight @ order)
+    return turn
+
+
 def _phases(harmonics: NDArray[np.complex128]) -> NDArray[np.float64]:
     """Phase of each c_k, shape (harmonics,), with time counted from where the fundamental's phase is zero."""
     k = np.arange(1, harmonics.shape[1] + 1)
-    # Blocks may still turn a little against each other: line them up by the fundamental first.
-    start = np.angle(harmonics[:, :1] * harmonics[:, :1].sum(axis=0).conj())
-    mean = (harmonics * np.exp(-1j * start * k)).sum(axis=0)
+    # Blocks may still turn a little against each other.
+    mean = (harmonics * np.exp(-1j * np.outer(_common_turn(harmonics, k), k))).sum(axis=0)
     turned = np.angle(mean) - k * np.angle(mean[0])
     return np.asarray((turned + np.pi) % (2.0 * np.pi) - np.pi)

@@ -46,8 +46,10 @@ def recipe_figure(profile: Profile, target: Target | None = None, comparison: Co
     """Draw the recipe of each note as stems, one panel a note, all on one frequency axis.
 
     The stem is the mean level of the takes, the grey band behind its head reaches from the lowest to the highest
-    take, a cross marks the noise floor of a harmonic that was not heard. The target is a notch across the stem, each
-    note of it shifted to the same overall level (by the median difference of the harmonics that both have).
+    take, a cross marks the noise floor of a harmonic that was not heard. The target is a notch across the stem: with
+    its own shares, or, where a comparison is given, at the comparison's reference level, so that notch and stem lie
+    apart by the differences that the comparison tells. Each note is shifted for this by the median over its compared
+    harmonics; a note that was not compared then has no notches.
 
     Parameters
     ----------
@@ -55,15 +57,14 @@ def recipe_figure(profile: Profile, target: Target | None = None, comparison: Co
     target : Target, optional
         Adds the notches.
     comparison : Comparison, optional
-        Adds the sign of `stronger` or `weaker` over the harmonics that differ.
+        Adds the sign of `stronger` or `weaker` over the harmonics that differ, and sets the target's level.
     """
     takes = len(profile.takes)
     notes = _drawn_recipes([profile])
     wanted = {drawn.note: drawn for drawn in _drawn_recipes(target.members)} if target else {}
-    differing: dict[str, list[HarmonicDifference]] = defaultdict(list)
+    compared: dict[str, list[HarmonicDifference]] = defaultdict(list)
     for harmonic in comparison.harmonics if comparison else ():
-        if harmonic.verdict in ("stronger", "weaker"):
-            differing[harmonic.note].append(harmonic)
+        compared[harmonic.note].append(harmonic)
     limits = drawing.frequency_limits([freq for drawn in notes for freq in drawn.freq_hz])
     top_db, bottom_db = _level_limits(notes)
     with drawing.look():
@@ -73,8 +74,9 @@ def recipe_figure(profile: Profile, target: Target | None = None, comparison: Co
                 _draw_spread(panel, drawn)
             _draw_recipe(panel, drawn, bottom_db)
             if drawn.note in wanted:
-                _draw_notches(panel, drawn, wanted[drawn.note])
-            _draw_signs(panel, drawn, differing[drawn.note])
+                shift_db = _target_shift_db(drawn, wanted[drawn.note], compared[drawn.note]) if comparison else 0.0
+                _draw_notches(panel, drawn, wanted[drawn.note], shift_db)
+            _draw_signs(panel, drawn, compared[drawn.note])
             panel.set_ylim(bottom_db, top_db)
             panel.set_yticks([tick for tick in (0, -20, -40, -60, -80) if bottom_db < tick < top_db])
             panel.tick_params(axis="y", labelsize=10)
@@ -82,7 +84,8 @@ def recipe_figure(profile: Profile, target: Target | None = None, comparison: Co
             drawing.note_label(panel, drawn.note)
             drawing.frequency_axis(panel, *limits, labelled=panel is panels[len(notes) - 1])
         drawing.level_axis(figure, panels, "Share in the note's sound (dB)" if len(notes) > 2 else "Share (dB)")
-        against = f", with the target: {drawing.drawable(target.name)}" if target else ""
+        level = " drawn at the comparison's reference level" if comparison else ""
+        against = f", with the target{level}: {drawing.drawable(target.name)}" if target else ""
         drawing.title(figure, drawing.named(profile.instrument, profile.stage), f"What each note is made of{against}")
         drawing.legend(figure, _recipe_handles(takes, with_target=bool(wanted), with_verdicts=comparison is not None))
     return figure
@@ -108,24 +111,35 @@ def _draw_recipe(panel: "Axes", drawn: _DrawnRecipe, bottom_db: float) -> None:
     )  # fmt: skip
 
 
-def _draw_notches(panel: "Axes", drawn: _DrawnRecipe, wanted: _DrawnRecipe) -> None:
+def _target_shift_db(drawn: _DrawnRecipe, wanted: _DrawnRecipe, compared: Sequence[HarmonicDifference]) -> float:
+    """Level that brings a note of the target to the comparison's reference level; NaN where nothing was compared."""
     shared = min(drawn.k.size, wanted.k.size)
-    apart_db = drawn.level_db[:shared] - wanted.level_db[:shared]
-    if not np.isfinite(apart_db).any():
-        return
-    target_db = wanted.level_db + np.nanmedian(apart_db)
+    apart_db = [
+        float(drawn.level_db[harmonic.k - 1] - wanted.level_db[harmonic.k - 1]) - harmonic.difference_db.value
+        for harmonic in compared
+        if harmonic.k <= shared
+    ]
+    known = [one for one in apart_db if math.isfinite(one)]
+    return float(np.median(known)) if known else math.nan
+
+
+def _draw_notches(panel: "Axes", drawn: _DrawnRecipe, wanted: _DrawnRecipe, shift_db: float) -> None:
+    shared = min(drawn.k.size, wanted.k.size)
+    target_db = wanted.level_db + shift_db
     shown = np.isfinite(target_db[:shared])
+    if not shown.any():
+        return
     freq_hz, level_db = drawn.freq_hz[:shared][shown], target_db[:shared][shown]
     panel.scatter(freq_hz, level_db, marker="_", s=100, color=INK, linewidths=2.2, zorder=3, label="notches")
 
 
-def _draw_signs(panel: "Axes", drawn: _DrawnRecipe, differing: Sequence[HarmonicDifference]) -> None:
+def _draw_signs(panel: "Axes", drawn: _DrawnRecipe, compared: Sequence[HarmonicDifference]) -> None:
     level_of = dict(zip(drawn.k.tolist(), drawn.level_db.tolist(), strict=True))
     freq_of = dict(zip(drawn.k.tolist(), drawn.freq_hz.tolist(), strict=True))
     for verdict in ("stronger", "weaker"):
         chosen = [
             harmonic
-            for harmonic in differing
+            for harmonic in compared
             if harmonic.verdict == verdict and math.isfinite(level_of.get(harmonic.k, math.nan))
         ]
         heads = [level_of[h.k] + max(-h.difference_db.value, 0.0) + 7.0 for h in chosen]

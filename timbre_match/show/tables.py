@@ -18,7 +18,7 @@ from rich.text import Text
 
 from timbre_match.advise.suggestions import Suggestion
 from timbre_match.advise.wording import counted, hertz
-from timbre_match.compare.records import Comparison, HarmonicDifference, Verdict
+from timbre_match.compare.records import Comparison, Verdict
 from timbre_match.intake.notes import HeldNote
 from timbre_match.intake.recording import Recording
 from timbre_match.measure.profile import Profile
@@ -27,6 +27,10 @@ from timbre_match.show.marks import SIGN, VERDICTS, plain, signed_interval
 
 _COLOUR: Final[dict[Verdict, str]] = {"stronger": "yellow", "weaker": "cyan", "alike": "green", "unsettled": "default"}
 _LISTED_HARMONICS: Final = 12
+_RELATIVE: Final = (
+    "All differences are relative: zero is the level that the middle half of the values over the frequency range "
+    "agrees on, so a broad change moves it."
+)
 _SOURCE_WORDS: Final = {
     "takes": "the takes themselves",
     "prior": "published figures, because a single take cannot show it",
@@ -101,20 +105,19 @@ def profile_summary(profile: Profile, warnings: Sequence[str] = ()) -> Renderabl
 
 
 def comparison_summary(comparison: Comparison) -> RenderableType:
-    """Show the verdict of a comparison: in words first, then regions, harmonics, notes, and what is not settled."""
+    """Show the verdict of a comparison: in words first, then regions, harmonics, notes, remarks."""
     name = plain(comparison.instrument) or "Unnamed instrument"
     stage = f", {plain(comparison.stage)}" if plain(comparison.stage) else ""
     parts: list[RenderableType] = [
         _heading(f"{name}{stage}", f"against {plain(comparison.target) or 'the target'}"),
         Text(_colour_sentence(comparison)),
+        Text(_RELATIVE),
         Text(_closeness_sentence(comparison)),
         Text(_scatter_sentence(comparison)),
         *_regions(comparison),
         *_differing_harmonics(comparison),
         *_verdict_counts(comparison),
     ]
-    if unsettled := unsettled_sentence(comparison.harmonics):
-        parts += [Text(), Text(unsettled)]
     return Group(*parts, *_remarks(comparison.remarks))
 
 
@@ -150,38 +153,18 @@ def suggestions_list(suggestions: Sequence[Suggestion]) -> RenderableType:
     return Group(*parts)
 
 
-def unsettled_sentence(harmonics: Iterable[HarmonicDifference]) -> str:
-    """Say what is unsettled and how many takes a side would settle it; empty where all is settled."""
-    counted_by_need = Counter(harmonic.takes_needed for harmonic in harmonics if harmonic.verdict == "unsettled")
-    total = sum(counted_by_need.values())
-    if not total:
-        return ""
-    hopeless = counted_by_need.pop(None, 0)
-    needs = sorted((takes, number) for takes, number in counted_by_need.items() if takes is not None)
-    words = [f"{counted(total, 'harmonic')} cannot be told yet."]
-    for quota in (0.5, 1.0):
-        settled = 0
-        for takes, number in needs:
-            settled += number
-            if settled >= quota * sum(counted_by_need.values()):
-                sentence = f"With {counted(takes, 'take')} a side, {settled} of them would be settled."
-                if sentence not in words:
-                    words.append(sentence)
-                break
-    if hopeless:
-        words.append(f"For {hopeless} no practicable number of takes is enough: they lie close to the margin.")
-    return " ".join(words)
-
-
 def _colour_sentence(comparison: Comparison) -> str:
     distance = comparison.colour_distance
     value = distance.distance_db
     own = (
-        "how far your own takes differ is not known yet"
+        "how far single takes of yours lie apart is not known yet"
         if distance.own_db is None
-        else f"your own takes differ by {distance.own_db:.1f} dB"
+        else f"single takes of yours lie {distance.own_db:.1f} dB apart"
     )
-    return f"Colour distance {value.value:.1f} dB ({value.low:.1f} to {value.high:.1f}); {own}."
+    return (
+        f"Colour distance {value.value:.1f} dB ({value.low:.1f} to {value.high:.1f}) "
+        f"between the averages of the takes; {own}."
+    )
 
 
 def _closeness_sentence(comparison: Comparison) -> str:
@@ -230,7 +213,11 @@ def _differing_harmonics(comparison: Comparison) -> list[RenderableType]:
             f"{hertz(harmonic.freq_hz)} Hz",
             signed_interval(harmonic.difference_db),
         )
-    parts: list[RenderableType] = [Text(), Text("Harmonics that differ, the largest first", "bold"), table]
+    parts: list[RenderableType] = [
+        Text(),
+        Text("Harmonics that differ, the largest first (each leans on its neighbours in frequency)", "bold"),
+        table,
+    ]
     if len(differing) > _LISTED_HARMONICS:
         parts.append(Text(f"and {len(differing) - _LISTED_HARMONICS} more"))
     return parts
