@@ -30,6 +30,7 @@ _STEP_CENTS = 65.0
 _STEP_FRAMES = 8
 _SETTLE_S = 1.0
 _BLUR_FRAMES = 3
+_LOW_HZ = 500.0
 _NAMED_WITHIN_CENTS = 70.0
 
 
@@ -98,6 +99,8 @@ def held_notes(
     track = track_pitch(calm, rate)
     envelope = level_envelope(calm, rate)
     signal = BandLimited(samples, rate, USABLE_BAND * rate)
+    # The clock of a low note needs no more than its first harmonics, and half the band is read in half the time.
+    low_signal = BandLimited(samples, rate, 0.5 * USABLE_BAND * rate)
     wanted_hz = None if notes is None else [units.note_to_hz(name, a4_hz) for name in notes]
     settled = []
     for first, last in _segments(track, envelope):
@@ -113,7 +116,9 @@ def held_notes(
         # The window blurs periodicity at both ends of a note; the level tells better where it begins and ends.
         first = max(first - _BLUR_FRAMES, edges[index])
         last = min(last + _BLUR_FRAMES, starts[index + 1])
-        note = _measured(signal, track, envelope, first, last, f0_hz, a4_hz, wanted_hz)
+        note = _measured(
+            low_signal if f0_hz < _LOW_HZ else signal, track, envelope, first, last, f0_hz, a4_hz, wanted_hz
+        )
         if note is not None and (wanted_hz is None or _is_one_of(note.f0_hz, wanted_hz)):
             found.append(note)
     found = _without_scraps(found)

@@ -4,6 +4,7 @@ On that clock a note with vibrato and drift becomes strictly periodic, N points 
 phase of the fundamental). The phase comes from the pitch track first and is then refined with the note's own harmonics.
 """
 
+from functools import cached_property
 from typing import Final
 
 import numpy as np
@@ -12,7 +13,7 @@ import scipy.ndimage
 import scipy.signal
 import scipy.special
 from numpy.typing import NDArray
-from scipy.interpolate import CubicSpline, PchipInterpolator
+from scipy.interpolate import CubicSpline, PchipInterpolator, PPoly
 
 _SPLINE_ORDER: Final = 5
 _FADED_AT = 1.05
@@ -35,17 +36,29 @@ class Clock:
     def __init__(self, time_s: NDArray[np.float64], f0_hz: NDArray[np.float64]) -> None:
         self.time_s = time_s
         self.f0_hz = f0_hz
-        # A spline through the track; the monotone one where a cubic would swing through zero between far values.
-        smooth = CubicSpline(time_s, f0_hz) if len(time_s) > 3 else PchipInterpolator(time_s, f0_hz)
-        if np.any(np.diff(smooth.antiderivative()(time_s)) <= 0.0):
-            smooth = PchipInterpolator(time_s, f0_hz)
+
+    @cached_property
+    def _f0_of_time(self) -> "CubicSpline | PchipInterpolator":
+        if len(self.time_s) > 3:
+            smooth = CubicSpline(self.time_s, self.f0_hz)
+            if np.all(np.diff(smooth.antiderivative()(self.time_s)) > 0.0):
+                return smooth
+        # The monotone one where a cubic would swing through zero between far values.
+        return PchipInterpolator(self.time_s, self.f0_hz)
+
+    @cached_property
+    def _phase_of_time(self) -> PPoly:
         # Integrated from the first time on, so that the phase is zero there.
-        self._f0_of_time = smooth
-        self._phase_of_time = smooth.antiderivative()
-        self._phase = self._phase_of_time(time_s)
-        self._time_of_phase = (
-            CubicSpline(self._phase, time_s) if len(time_s) > 3 else PchipInterpolator(self._phase, time_s)
-        )
+        return self._f0_of_time.antiderivative()
+
+    @cached_property
+    def _phase(self) -> NDArray[np.float64]:
+        return np.asarray(self._phase_of_time(self.time_s))
+
+    @cached_property
+    def _time_of_phase(self) -> "CubicSpline | PchipInterpolator":
+        invert = CubicSpline if len(self.time_s) > 3 else PchipInterpolator
+        return invert(self._phase, self.time_s)
 
     @property
     def cycles(self) -> int:
@@ -61,7 +74,7 @@ class Clock:
         """Times in seconds of `points` equal steps of every whole cycle, shape (cycles, points)."""
         count = self.cycles
         # Straight lines between instants a millisecond apart are right to a tenth of a microsecond.
-        knots = min(points, max(8, int(np.ceil(1000.0 / float(self.f0_hz.min())))))
+        knots = min(points, max(1, int(np.ceil(1000.0 / float(self.f0_hz.min())))))
         phase = np.arange(count * knots + 1) / knots
         coarse = np.minimum(self._time_of_phase(phase), self.time_s[-1])
         # The inverse of a spline is no spline: one step of Newton's method makes it exact.

@@ -19,6 +19,7 @@ _LEAST_EXCESS = 2.0
 _ACCURACY = 1e-11
 """What resampling itself leaves behind, as power re the strongest harmonic: -110 dB."""
 _STEP_S = 0.01
+_DECIDING = 32
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
@@ -219,6 +220,9 @@ def _mean_fundamental_hz(cycles: Cycles, heard: NDArray[np.int64]) -> float:
 
 def _common_turn(each: NDArray[np.complex128], order: NDArray[np.int64]) -> NDArray[np.float64]:
     """Phase in radians of the fundamental in each row, shape (rows,), agreed on by the harmonics `order` (columns)."""
+    # The few dozen that know most decide; the others would only cost time.
+    best = np.argsort((np.abs(each) ** 2).sum(axis=0) * order**2)[-_DECIDING:]
+    each, order = each[:, best], order[best]
     turn = np.zeros(len(each))
     for _ in range(3):
         turned = each * np.exp(-1j * np.outer(turn, order))
