@@ -30,7 +30,6 @@ _STEP_CENTS = 65.0
 _STEP_FRAMES = 8
 _SETTLE_S = 1.0
 _BLUR_FRAMES = 3
-_LOW_HZ = 200.0
 _NAMED_WITHIN_CENTS = 70.0
 
 
@@ -99,8 +98,6 @@ def held_notes(
     track = track_pitch(calm, rate)
     envelope = level_envelope(calm, rate)
     signal = BandLimited(samples, rate, USABLE_BAND * rate)
-    # The clock of a low note needs no more than its first harmonics, and half the band is read in half the time.
-    low_signal = BandLimited(samples, rate, 0.5 * USABLE_BAND * rate)
     wanted_hz = None if notes is None else [units.note_to_hz(name, a4_hz) for name in notes]
     settled = []
     for first, last in _segments(track, envelope):
