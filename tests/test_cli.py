@@ -436,6 +436,8 @@ def test_demo_finds_nothing_else(demo: tuple[Ended, Path]) -> None:
         ["measure", "--out", "p.json"],
         ["compare", "p.json"],
         ["compare", "p.json", "--target", "t.json", "--margin", "0"],
+        ["compare", "p.json", "--target", "t.json", "--control-now", "c.json"],
+        ["compare", "p.json", "--target", "t.json", "--control-then", "c.json"],
         ["export", "p.json", "--format", "xls", "--out", "x"],
         ["notes", "a.wav", "--a4", "300"],
         ["notes", "a.wav", "--channel", "0"],

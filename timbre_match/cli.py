@@ -163,6 +163,13 @@ def compare(
     profile: Annotated[Path, typer.Argument(metavar="PROFILE", help="The instrument's profile.")],
     target: Annotated[Path, typer.Option("--target", help="A target, or a plain profile.")],
     margin: Annotated[float, typer.Option("--margin", min=0.1, max=30.0, help="What counts as alike, dB.")] = 3.0,
+    control_now: Annotated[
+        Path | None,
+        typer.Option("--control-now", help="Profile of an unchanged instrument, recorded with the instrument."),
+    ] = None,
+    control_then: Annotated[
+        Path | None, typer.Option("--control-then", help="Profile of the same, recorded with the target.")
+    ] = None,
     as_json: AsJson = False,
     out: Annotated[Path | None, typer.Option("--out", help="The comparison to write (JSON).")] = None,
     figures: Annotated[
@@ -173,8 +180,13 @@ def compare(
     from timbre_match.keep.files import comparison_to_json, load_profile, load_target, save_comparison
     from timbre_match.pipeline import compare_and_advise
 
+    if (control_now is None) != (control_then is None):
+        raise typer.BadParameter(
+            "a control is compared with itself: name both of its profiles", param_hint="--control-now, --control-then"
+        )
     measured, wanted = load_profile(profile), load_target(target)
-    comparison, suggestions = compare_and_advise(measured, wanted, margin_db=margin)
+    now, then = (None if path is None else load_profile(path) for path in (control_now, control_then))
+    comparison, suggestions = compare_and_advise(measured, wanted, margin_db=margin, control_now=now, control_then=then)
     if out is not None:
         save_comparison(comparison, suggestions, out)
     if figures is not None:

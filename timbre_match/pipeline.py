@@ -233,10 +233,15 @@ def measure_profile(
 
 
 def compare_and_advise(
-    profile: Profile, target: Profile | Target, *, margin_db: float = DEFAULT_MARGIN_DB
+    profile: Profile,
+    target: Profile | Target,
+    *,
+    margin_db: float = DEFAULT_MARGIN_DB,
+    control_now: Profile | None = None,
+    control_then: Profile | None = None,
 ) -> tuple[Comparison, tuple[Suggestion, ...]]:
     """Compare a profile with a target, and what to try about the difference."""
-    comparison = compare(profile, target, margin_db=margin_db)
+    comparison = compare(profile, target, margin_db=margin_db, control_now=control_now, control_then=control_then)
     return comparison, suggest(comparison)
 
 
