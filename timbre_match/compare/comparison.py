@@ -1,5 +1,8 @@
 """Profile and target in, comparison out."""
 
+import math
+from dataclasses import replace
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -133,13 +136,24 @@ def tolerance_db(target: Target) -> float | None:
 
 
 def _estimated(evidence: Evidence, rng: np.random.Generator) -> tuple[Array, Estimates]:
-    """Grid in Hz, and the fitted model's estimates on it."""
+    """Grid in Hz, and the fitted model's estimates on it.
+
+    The draws see the difference the same way round whichever side is called the instrument, so that exchanging the
+    sides changes the answer's sign and nothing else.
+    """
+    sign = math.copysign(1.0, float(np.sum(evidence.differences.value_db)))
+    row = replace(evidence.differences, value_db=sign * evidence.differences.value_db)
     prior = model.informed_prior(list(evidence.repeats), evidence.prior)
-    solutions = sampling.sample(evidence.differences, prior, rng)
+    solutions = sampling.sample(row, prior, rng)
     grid_hz = body_curve.frequency_grid(evidence.freq_hz)
     octave, smooth = evidence.curve_columns(grid_hz)
-    return grid_hz, estimate(
-        solutions, evidence.differences, grid_hz, octave, smooth, rng, harmonics=evidence.freq_hz.size
+    found = estimate(solutions, row, grid_hz, octave, smooth, rng, harmonics=evidence.freq_hz.size)
+    return grid_hz, replace(
+        found,
+        harmonic_db=sign * found.harmonic_db,
+        curve_db=sign * found.curve_db,
+        harmonic_draws_db=sign * found.harmonic_draws_db,
+        curve_draws_db=sign * found.curve_draws_db,
     )
 
 
