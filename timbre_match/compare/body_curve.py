@@ -23,7 +23,7 @@ Array = NDArray[np.float64]
 
 GRID_PER_OCTAVE = 24
 KNOTS_PER_OCTAVE = 6.0
-WOBBLE_KNOTS_PER_OCTAVE = 2.0
+WOBBLE_KNOTS_PER_OCTAVE = 3.0
 CORRELATION_OCTAVES = 0.2
 
 _DEGREE = 3
@@ -73,7 +73,11 @@ def smooth_columns(octave: ArrayLike, low: float, high: float) -> Array:
 
 
 def wobble_columns(octave: ArrayLike, low: float, high: float) -> Array:
-    """Smooth columns, two an octave, whose independent unit-variance coefficients make a wobble of unit variance."""
+    """Smooth columns, three an octave, whose independent unit-variance coefficients make a wobble of unit variance.
+
+    At that distance places half an octave apart are correlated by about a quarter, as neighbouring half-octave bands
+    (those of the table that the wobble's size comes from) are where independent ones are joined by straight lines.
+    """
     basis = spline_basis(octave, low, high, WOBBLE_KNOTS_PER_OCTAVE)
     return np.asarray(basis / _mean_deviation(low, high, WOBBLE_KNOTS_PER_OCTAVE, np.eye(basis.shape[1])))
 
