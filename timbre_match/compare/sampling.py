@@ -16,7 +16,6 @@ samplers, *JASA* 103); and the variances once more given everything else.
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy import optimize
 
 from timbre_match.compare import model
 from timbre_match.compare.model import Prior, Row, Solution, Weights
@@ -31,7 +30,6 @@ ROUNDS = 240
 THINNING = 3
 METROPOLIS_EVERY = 2
 
-_STEP = 1e-3
 _METROPOLIS_SCALE = 2.38
 """Proposals are this, over the root of the number of parameters, times the posterior's spread (Gelman, Roberts & Gilks
 1996, Efficient Metropolis jumping rules, *Bayesian Statistics* 5)."""
@@ -56,8 +54,9 @@ def sample(row: Row, prior: Prior, rng: np.random.Generator) -> list[Solution]:
         Between them they hold the uncertainty of variances and precisions; each holds that of the effects.
     """
     weights = model.even_weights(row)
-    theta, jump = _start(row, prior, weights)
-    jump = jump * _METROPOLIS_SCALE / np.sqrt(theta.size)
+    mode = model.informed_prior([row], prior)
+    theta = mode.centre
+    jump = np.linalg.inv(np.linalg.cholesky(mode.precision)).T * _METROPOLIS_SCALE / np.sqrt(theta.size)
     kept = []
     for turn in range(BURN_IN + ROUNDS):
         solution = model.solve(row, theta, weights)
@@ -72,32 +71,6 @@ def sample(row: Row, prior: Prior, rng: np.random.Generator) -> list[Solution]:
             kept.append(solution)
         theta, weights = _given_effects(row, prior, theta, weights, solution, rng)
     return kept
-
-
-def _start(row: Row, prior: Prior, weights: Weights) -> tuple[Array, Array]:
-    """Parameters at their maximum with even weights, and a square root (6, 6) of the inverse curvature there."""
-
-    def objective(theta: Array) -> tuple[float, Array]:
-        solution = model.solve(row, theta, weights)
-        slope = model.gradient(row, solution) - prior.precision @ (theta - prior.centre)
-        return -solution.log_likelihood - _log_prior(prior, theta), -slope
-
-    reach = 5.0 / np.sqrt(np.diag(prior.precision))
-    found = optimize.minimize(
-        objective,
-        prior.centre,
-        jac=True,
-        method="L-BFGS-B",
-        bounds=list(zip(prior.centre - reach, prior.centre + reach, strict=True)),
-        options={"maxiter": 30, "ftol": 1e-6},
-    )
-    theta = np.asarray(found.x, dtype=np.float64)
-    columns = [
-        (objective(theta + step)[1] - objective(theta - step)[1]) / (2.0 * _STEP) for step in _STEP * np.eye(theta.size)
-    ]
-    values, vectors = np.linalg.eigh(0.5 * (np.array(columns) + np.array(columns).T))
-    values = np.maximum(values, 0.25 * float(np.min(np.diag(prior.precision))))
-    return theta, np.asarray(vectors / np.sqrt(values))
 
 
 def _log_prior(prior: Prior, theta: Array) -> float:
