@@ -170,6 +170,13 @@ def compare(
     profile: Annotated[Path, typer.Argument(metavar="PROFILE", help="The instrument's profile.")],
     target: Annotated[Path, typer.Option("--target", help="A target, or a plain profile.")],
     margin: Annotated[float, typer.Option("--margin", min=0.1, max=30.0, help="What counts as alike, dB.")] = 3.0,
+    control_now: Annotated[
+        Path | None,
+        typer.Option("--control-now", help="Profile of an unchanged instrument, recorded with the instrument."),
+    ] = None,
+    control_then: Annotated[
+        Path | None, typer.Option("--control-then", help="Profile of the same, recorded with the target.")
+    ] = None,
     as_json: AsJson = False,
     out: Annotated[Path | None, typer.Option("--out", help="The comparison to write (JSON).")] = None,
     figures: Annotated[
@@ -186,11 +193,19 @@ def compare(
     )
     from timbre_match.pipeline import compare_and_advise
 
+    if (control_now is None) != (control_then is None):
+        raise typer.BadParameter(
+            "a control is compared with itself: name both of its profiles", param_hint="--control-now, --control-then"
+        )
     if out is not None:
-        refuse_to_overwrite(out, [profile, target], kind="comparison")
+        controls = [path for path in (control_now, control_then) if path is not None]
+        refuse_to_overwrite(out, [profile, target, *controls], kind="comparison")
     measured, wanted = load_profile(profile), load_target(target)
+    now, then = (None if path is None else load_profile(path) for path in (control_now, control_then))
     with _working("comparing"):
-        comparison, suggestions = compare_and_advise(measured, wanted, margin_db=margin)
+        comparison, suggestions = compare_and_advise(
+            measured, wanted, margin_db=margin, control_now=now, control_then=then
+        )
         if out is not None:
             save_comparison(comparison, suggestions, out)
         if figures is not None:

@@ -64,10 +64,15 @@ def measure_profile(
 
 
 def compare_and_advise(
-    profile: Profile, target: Profile | Target, *, margin_db: float = DEFAULT_MARGIN_DB
+    profile: Profile,
+    target: Profile | Target,
+    *,
+    margin_db: float = DEFAULT_MARGIN_DB,
+    control_now: Profile | None = None,
+    control_then: Profile | None = None,
 ) -> tuple[Comparison, tuple[Suggestion, ...]]:
     """Compare a profile with a target, and what to try about the difference."""
-    comparison = compare(profile, target, margin_db=margin_db)
+    comparison = compare(profile, target, margin_db=margin_db, control_now=control_now, control_then=control_then)
     families = {member.family for member in as_target(target).members} - {""}
     if profile.family and families and profile.family not in families:
         remark = (

@@ -8,6 +8,7 @@ from timbre_match.compare import model
 from timbre_match.compare.playing import gather
 from timbre_match.compare.repeatability import scatter_prior
 from timbre_match.compare.target import as_target, blend
+from timbre_match.errors import ComparisonError
 from timbre_match.measure.profile import Take
 
 
@@ -17,7 +18,7 @@ def test_rows_of_repeats_come_from_every_profile_with_two_takes() -> None:
     # Three takes about their mean hold two independent ones, two takes hold one.
     assert sum(row.count for row in evidence.repeats) == pytest.approx(2 + 1)
     # Variance of one side's mean of three takes plus that of the mean of two members with one and two takes.
-    assert evidence.differences.playing == pytest.approx(1 / 3 + (1 / 1 + 1 / 2) / 4)
+    assert evidence.differences.note_playing == pytest.approx(1 / 3 + (1 / 1 + 1 / 2) / 4)
 
 
 def test_takes_a_side_is_the_harmonic_mean() -> None:
@@ -47,7 +48,7 @@ def test_gains_of_a_targets_members_drop_out() -> None:
     )
     plain = gather(profile(1), blend("two", (first, second))).differences.value_db
     shifted = gather(profile(1), blend("two", (first, replace(second, takes=louder)))).differences
-    for note in range(shifted.n_notes):
+    for note in range(shifted.note_playing.size):
         assert np.ptp((shifted.value_db - plain)[shifted.note == note]) < 1e-6
 
 
@@ -56,3 +57,20 @@ def test_a_note_that_one_take_skipped_is_still_compared() -> None:
     takes = (whole.takes[0], *(replace(take, notes=take.notes[1:]) for take in whole.takes[1:]))
     evidence = gather(replace(whole, takes=takes), as_target(profile(2)))
     assert evidence.notes[0] == whole.takes[0].notes[0].note
+
+
+def test_a_control_stands_after_the_instrument_and_outside_the_body_curve() -> None:
+    control = profile(4, notes=("G3", "A4")), profile(4, notes=("G3", "A4"))
+    plain = gather(profile(1), as_target(profile(2)))
+    whole = gather(profile(1), as_target(profile(2)), control)
+    count = plain.freq_hz.size
+    row = whole.differences
+    assert row.value_db[:count] == pytest.approx(plain.differences.value_db)
+    assert row.value_db[count:] == pytest.approx(np.zeros(row.value_db.size - count), abs=1e-9)
+    assert np.all(row.shared.matrix[count:, row.shared.curve_first :] == 0.0)
+    assert len(whole.repeats) == len(plain.repeats) + 6
+
+
+def test_a_control_of_two_instruments_is_refused() -> None:
+    with pytest.raises(ComparisonError, match="two instruments"):
+        gather(profile(1), as_target(profile(2)), (profile(3), profile(4)))

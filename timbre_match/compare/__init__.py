@@ -15,6 +15,8 @@ def compare(
     target: "Profile | Target",
     *,
     margin_db: float = 3.0,
+    control_now: "Profile | None" = None,
+    control_then: "Profile | None" = None,
     rng: "np.random.Generator | None" = None,
 ) -> "Comparison":
     """Compare an instrument with a target; see :func:`timbre_match.compare.comparison.compare`.
@@ -24,4 +26,6 @@ def compare(
     """
     from timbre_match.compare.comparison import compare as compare_in_full
 
-    return compare_in_full(profile, target, margin_db=margin_db, rng=rng)
+    return compare_in_full(
+        profile, target, margin_db=margin_db, control_now=control_now, control_then=control_then, rng=rng
+    )

@@ -4,9 +4,8 @@ Frequencies in Hz, levels in dB. The curve is a cubic B-spline over log2 frequen
 (Eilers & Marx 1996, Flexible smoothing with B-splines and penalties, *Statistical Science* 11), written as a mixed
 model: a straight line and random deviations from it. The penalty is not on second differences but the inverse of a
 Matern correlation of the coefficients (after Lindgren, Rue & Lindström 2011, *J. R. Stat. Soc. B* 73): bodies differ
-in peaks a third of an octave to an octave wide, and one variance for second differences smoothed the narrow ones away
-while its band claimed otherwise (five takes of twelve notes: the simultaneous band held in 14 of 20 simulated
-comparisons, and in 27 of 30 with the present penalty and its own prior).
+in peaks a third of an octave to an octave wide. The bumps that make the curve have heights of their own scale
+(:mod:`timbre_match.compare.sampling`), so that a lone peak is not shrunk to the size of the flat rest.
 
 **Reference level.** Each note's gain is free, so the curve is known up to a constant only. The constant is chosen so
 that the middle half of the curve's values, counted over the ear's scale of frequency (equal steps of ERB number,
@@ -24,8 +23,8 @@ Array = NDArray[np.float64]
 
 GRID_PER_OCTAVE = 24
 KNOTS_PER_OCTAVE = 6.0
-WOBBLE_KNOTS_PER_OCTAVE = 2.0
-CORRELATION_OCTAVES = 0.25
+WOBBLE_KNOTS_PER_OCTAVE = 3.0
+CORRELATION_OCTAVES = 0.2
 
 _DEGREE = 3
 _SCALE_POINTS = 400
@@ -58,7 +57,8 @@ def spline_basis(octave: ArrayLike, low: float, high: float, knots_per_octave: f
 def smooth_columns(octave: ArrayLike, low: float, high: float) -> Array:
     """Columns whose independent unit-variance coefficients make a curve of unit variance.
 
-    B L with L L' the Matern correlation (smoothness 5/2, length a quarter octave) of neighbouring spline coefficients.
+    B L with L L' the Matern correlation (smoothness 5/2, length a fifth of an octave) of neighbouring spline
+    coefficients. L is the symmetric root, so that each coefficient is the height of a bump at one place.
 
     Returns
     -------
@@ -67,12 +67,17 @@ def smooth_columns(octave: ArrayLike, low: float, high: float) -> Array:
     basis = spline_basis(octave, low, high, KNOTS_PER_OCTAVE)
     place = np.arange(basis.shape[1]) / KNOTS_PER_OCTAVE
     scaled = np.sqrt(5.0) * np.abs(np.subtract.outer(place, place)) / CORRELATION_OCTAVES
-    root = np.linalg.cholesky((1.0 + scaled + scaled**2 / 3.0) * np.exp(-scaled))
+    values, vectors = np.linalg.eigh((1.0 + scaled + scaled**2 / 3.0) * np.exp(-scaled))
+    root = (vectors * np.sqrt(np.maximum(values, 0.0))) @ vectors.T
     return np.asarray(basis @ root / _mean_deviation(low, high, KNOTS_PER_OCTAVE, root))
 
 
 def wobble_columns(octave: ArrayLike, low: float, high: float) -> Array:
-    """Smooth columns, two an octave, whose independent unit-variance coefficients make a wobble of unit variance."""
+    """Smooth columns, three an octave, whose independent unit-variance coefficients make a wobble of unit variance.
+
+    At that distance places half an octave apart are correlated by about a quarter, as neighbouring half-octave bands
+    (those of the table that the wobble's size comes from) are where independent ones are joined by straight lines.
+    """
     basis = spline_basis(octave, low, high, WOBBLE_KNOTS_PER_OCTAVE)
     return np.asarray(basis / _mean_deviation(low, high, WOBBLE_KNOTS_PER_OCTAVE, np.eye(basis.shape[1])))
 
@@ -90,16 +95,20 @@ def frequency_grid(freq_hz: Array) -> Array:
     return np.asarray(np.geomspace(low, high, points))
 
 
-def reference_weights(curve_db: Array, freq_hz: Array) -> Array:
-    """Weights (n,), summing to one, of the mean that is set to zero: the middle half of the values on the ERB scale."""
+def reference_level(curve_db: Array, freq_hz: Array) -> Array:
+    """Mean of the middle half of each curve's values, counted on the ERB scale, shape (n_curves,).
+
+    Parameters
+    ----------
+    curve_db : array, shape (n_curves, n_grid)
+    freq_hz : array, shape (n_grid,)
+    """
     share = np.gradient(21.4 * np.log10(4.37e-3 * freq_hz + 1.0)) if freq_hz.size > 1 else np.ones(1)
-    share = share / np.sum(share)
-    order = np.argsort(curve_db, kind="stable")
-    upper = np.cumsum(share[order])
-    lower = upper - share[order]
-    weights = np.zeros(curve_db.size)
-    weights[order] = np.clip(np.minimum(upper, 0.75) - np.maximum(lower, 0.25), 0.0, None)
-    return np.asarray(weights / np.sum(weights))
+    order = np.argsort(curve_db, axis=1, kind="stable")
+    upper = np.cumsum((share / np.sum(share))[order], axis=1)
+    lower = np.concatenate([np.zeros((upper.shape[0], 1)), upper[:, :-1]], axis=1)
+    weights = np.clip(np.minimum(upper, 0.75) - np.maximum(lower, 0.25), 0.0, None)
+    return np.asarray(np.sum(weights * np.take_along_axis(curve_db, order, axis=1), axis=1) / np.sum(weights, axis=1))
 
 
 def simultaneous_factor(draws_db: Array, centre_db: Array, sd_db: Array, level: float = 0.95) -> float:

@@ -1,9 +1,12 @@
 """Profile and target in, comparison out."""
 
+import math
+from dataclasses import replace
+
 import numpy as np
 from numpy.typing import NDArray
 
-from timbre_match.compare import body_curve, colour, model, verdicts
+from timbre_match.compare import body_curve, colour, model, sampling, verdicts
 from timbre_match.compare.estimates import Estimates, estimate
 from timbre_match.compare.playing import Evidence, gather
 from timbre_match.compare.records import (
@@ -38,7 +41,6 @@ DEFAULT_MARGIN_DB = 3.0
 
 _SEED = 20261
 _Z95 = 1.959963984540054
-_CORE = 0.9
 
 
 def compare(
@@ -46,6 +48,8 @@ def compare(
     target: Profile | Target,
     *,
     margin_db: float = DEFAULT_MARGIN_DB,
+    control_now: Profile | None = None,
+    control_then: Profile | None = None,
     rng: np.random.Generator | None = None,
 ) -> Comparison:
     """Compare an instrument with a target: verdicts, body curve, regions, colour distance and closeness.
@@ -58,6 +62,9 @@ def compare(
         What to match; a plain profile is a target with one member.
     margin_db : float
         Differences within +-margin count as alike where that is certain enough.
+    control_now, control_then : Profile, optional
+        An instrument that has not changed, recorded in the instrument's session and in the target's. What it seems to
+        have changed by is taken out, as a curve over frequency, and its uncertainty added.
     rng : numpy Generator, optional
         Source of the draws behind bands and intervals. By default a new generator with a fixed seed, so that the same
         input gives the same answer.
@@ -73,19 +80,23 @@ def compare(
     ComparisonError
         If the two have no note, or no heard harmonic, in common.
     ValueError
-        If `margin_db` is not positive.
+        If `margin_db` is not positive, or one of the controls is missing.
     """
     if not margin_db > 0:
         raise ValueError(f"margin_db is {margin_db}; a margin in dB is positive")
+    if (control_now is None) != (control_then is None):
+        raise ValueError("a control needs two profiles: as it was recorded now, and as it was recorded then")
     generator = np.random.default_rng(_SEED) if rng is None else rng
     whole = as_target(target)
-    evidence = gather(profile, whole)
+    control = None if control_now is None or control_then is None else (control_now, control_then)
+    evidence = gather(profile, whole, control)
     grid_hz, estimates = _estimated(evidence, generator)
     curve = _curve(grid_hz, estimates)
     bands = colour.all_bands(evidence.note_index, evidence.freq_hz, evidence.target_db, estimates.harmonic_draws_db)
     own = colour.distance_between_takes(
         evidence.note_index, evidence.freq_hz, evidence.instrument_db, evidence.instrument_takes_db
     )
+    distance = _interval(colour.colour_distance(bands))
     harmonics = _harmonics(evidence, estimates, margin_db)
     return Comparison(
         instrument=profile.instrument,
@@ -93,7 +104,7 @@ def compare(
         family=profile.family,
         target=whole.name,
         margin_db=margin_db,
-        colour_distance=ColourDistance(distance_db=_interval(colour.colour_distance(bands)), own_db=own),
+        colour_distance=ColourDistance(distance_db=distance, own_db=own),
         closeness_percent=_interval(colour.closeness(bands, margin_db)),
         repeatability=Repeatability(
             source="both" if evidence.repeats else "prior",
@@ -103,7 +114,7 @@ def compare(
         harmonics=harmonics,
         body_curve=curve,
         regions=_regions(evidence, estimates, curve),
-        remarks=evidence.remarks + _remarks(harmonics),
+        remarks=evidence.remarks + _family_remarks(whole, distance) + _remarks(harmonics),
     )
 
 
@@ -125,11 +136,25 @@ def tolerance_db(target: Target) -> float | None:
 
 
 def _estimated(evidence: Evidence, rng: np.random.Generator) -> tuple[Array, Estimates]:
-    """Grid in Hz, and the fitted model's estimates on it."""
-    fit = model.fit(evidence.differences, list(evidence.repeats), evidence.prior, rng)
+    """Grid in Hz, and the fitted model's estimates on it.
+
+    The draws see the difference the same way round whichever side is called the instrument, so that exchanging the
+    sides changes the answer's sign and nothing else.
+    """
+    sign = math.copysign(1.0, float(np.sum(evidence.differences.value_db)))
+    row = replace(evidence.differences, value_db=sign * evidence.differences.value_db)
+    prior = model.informed_prior(list(evidence.repeats), evidence.prior)
+    solutions = sampling.sample(row, prior, rng)
     grid_hz = body_curve.frequency_grid(evidence.freq_hz)
     octave, smooth = evidence.curve_columns(grid_hz)
-    return grid_hz, estimate(fit, evidence.differences, grid_hz, octave, smooth, rng)
+    found = estimate(solutions, row, grid_hz, octave, smooth, rng, harmonics=evidence.freq_hz.size)
+    return grid_hz, replace(
+        found,
+        harmonic_db=sign * found.harmonic_db,
+        curve_db=sign * found.curve_db,
+        harmonic_draws_db=sign * found.harmonic_draws_db,
+        curve_draws_db=sign * found.curve_draws_db,
+    )
 
 
 def _interval(draws: Array) -> Interval:
@@ -194,7 +219,8 @@ def _curve(grid_hz: Array, estimates: Estimates) -> tuple[CurvePoint, ...]:
 def _regions(evidence: Evidence, estimates: Estimates, curve: tuple[CurvePoint, ...]) -> tuple[Region, ...]:
     """Stretches where the simultaneous band leaves zero and at least one harmonic was measured.
 
-    A region's size is the mean of the curve over its core, where it exceeds 0.9 of its largest value in the region.
+    A region's size is the curve's value where it is farthest from zero: a mean over a stretch would call every peak
+    smaller than it is.
     """
     low = np.array([point.simultaneous_low_db for point in curve])
     high = np.array([point.simultaneous_high_db for point in curve])
@@ -208,9 +234,8 @@ def _regions(evidence: Evidence, estimates: Estimates, curve: tuple[CurvePoint, 
         if not np.any(members):
             continue
         values = estimates.curve_db[inside]
-        core = np.abs(values) >= _CORE * np.max(np.abs(values))
-        value = float(np.mean(values[core]))
-        sd = float(np.std(np.mean(estimates.curve_draws_db[:, inside][:, core], axis=1)))
+        peak = int(np.argmax(np.abs(values)))
+        value, sd = float(values[peak]), float(estimates.curve_sd_db[inside][peak])
         found.append(
             Region(
                 low_hz=float(max(bounds[0], hz[0])),
@@ -222,6 +247,19 @@ def _regions(evidence: Evidence, estimates: Estimates, curve: tuple[CurvePoint, 
             )
         )
     return tuple(found)
+
+
+def _family_remarks(target: Target, distance_db: Interval) -> tuple[str, ...]:
+    """Say where the instrument stands among the members of a blended target; certain only beyond the interval."""
+    tolerance = tolerance_db(target)
+    if tolerance is None:
+        return ()
+    apart = f"its members differ among themselves by {tolerance:.1f} dB"
+    if distance_db.value <= tolerance:
+        sure = "" if distance_db.high <= tolerance else ", though the interval reaches beyond"
+        return (f"inside the family: no further from {target.name} than {apart}{sure}",)
+    sure = "" if distance_db.low > tolerance else ", though the interval reaches into it"
+    return (f"outside the family of {target.name}: {apart}{sure}",)
 
 
 def _remarks(harmonics: tuple[HarmonicDifference, ...]) -> tuple[str, ...]:

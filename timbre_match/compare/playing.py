@@ -10,6 +10,7 @@ from timbre_match.compare import body_curve, model
 from timbre_match.compare.alignment import SET_ASIDE_WEIGHT, AlignedTakes, Pairing, align_takes, pair
 from timbre_match.compare.repeatability import ScatterPrior, fit_variance_prior, moderated_variance, scatter_prior
 from timbre_match.compare.target import Target
+from timbre_match.errors import ComparisonError
 from timbre_match.measure.profile import Profile
 
 Array = NDArray[np.float64]
@@ -17,9 +18,10 @@ IntArray = NDArray[np.int64]
 
 _LEAST_VARIANCES = 12
 _LEAST_RATIO = 1e-4
+_MOST_DF = 1e3
 _LISTED = 8
 
-_SMOOTH_DB, _SMOOTH_LOG_SD = 0.8, 1.0
+_SMOOTH_DB, _SMOOTH_LOG_SD = 2.0, 0.4  # chosen by benchmarks/calibration.py on seeds that its table does not use
 _OWN_DB, _OWN_LOG_SD = 1.0, 0.8
 _SCATTER_LOG_SD = 0.35
 _TAKE_TILT_LOG_SD = 0.5
@@ -72,56 +74,138 @@ class Evidence:
         return octave, body_curve.smooth_columns(octave, *self.span)
 
 
-def gather(profile: Profile, target: Target) -> Evidence:
+@dataclass(frozen=True, kw_only=True, slots=True, eq=False)
+class _Difference:
+    """Two sides paired, aligned and subtracted; arrays over their harmonics, shape (n,)."""
+
+    paired: Pairing
+    prior: ScatterPrior
+    aligned: tuple[AlignedTakes, ...]
+    take_counts: tuple[int, ...]
+    octave: Array
+    scale_db: Array
+    second_db: Array
+    playing: float
+    scatter_variance: Array
+    scatter_df: Array
+    error_variance: Array
+
+
+def gather(profile: Profile, target: Target, control: tuple[Profile, Profile] | None = None) -> Evidence:
     """Pair, align and average the takes of both sides, and lay out the rows of the model.
+
+    Parameters
+    ----------
+    profile : Profile
+    target : Target
+    control : (now, then), optional
+        An instrument that has not changed, recorded with the instrument and with the target. What it seems to have
+        changed by is microphone, room and player: a curve of its own, which both differences contain.
 
     Raises
     ------
     ComparisonError
-        If the two have nothing in common.
+        If the two have nothing in common, or the controls have not.
     """
     paired = pair(profile, target.members)
-    prior = scatter_prior(profile.family or target.members[0].family)
-    scale = prior.scale_at(paired.freq_hz)
     origin = math.exp(float(np.mean(np.log(paired.freq_hz))))
-    octave = np.log2(paired.freq_hz / origin)
+    main = _difference(paired, profile.family or target.members[0].family, origin)
+    parts, remarks = [main], paired.remarks
+    if control is not None:
+        parts.append(_control_difference(*control, origin))
+        remarks += _control_remarks(parts[1].paired, control[0])
+    octave = np.concatenate([part.octave for part in parts])
     span = float(np.min(octave)), float(np.max(octave))
-    levels = [*paired.instrument, *paired.target]
-    aligned = [align_takes(level, paired.note_index, octave, prior, scale) for level, _ in levels]
-    ours, theirs = aligned[0], aligned[1:]
-    target_db = _blended([member.mean_db for member in theirs], paired.note_index)
-    moderation, df = _moderation(aligned, prior)
-    spread = [one.spread for one in aligned]
-    errors = [np.sqrt(np.mean(np.where(np.isfinite(level), se, 0.0) ** 2, axis=0)) for level, se in levels]
-    take_counts = [level.shape[0] for level, _ in levels]
-    playing = _both_sides([np.full(1, 1.0 / count) for count in take_counts])
-    differences = model.Row(
-        value_db=ours.mean_db - target_db,
-        note=paired.note_index,
-        n_notes=len(paired.notes),
-        octave=octave,
-        smooth=body_curve.smooth_columns(octave, *span),
-        wobble=body_curve.wobble_columns(octave, *span),
-        scatter_variance=scale**2 * moderation * _uncertain(df, prior) * _both_sides(spread),
-        error_variance=_both_sides([error**2 * part for error, part in zip(errors, spread, strict=True)]),
-        repeat_df=df,
-        playing=float(playing[0]),
-    )
     return Evidence(
         notes=paired.notes,
         note_index=paired.note_index,
         k=paired.k,
         freq_hz=paired.freq_hz,
-        instrument_db=ours.mean_db,
-        target_db=target_db,
+        instrument_db=main.aligned[0].mean_db,
+        target_db=main.second_db,
         instrument_takes_db=paired.instrument[0][0],
-        differences=differences,
-        repeats=tuple(row for one in aligned for row in _repeat_rows(one, differences, scale)),
-        prior=_model_prior(prior),
-        takes=2.0 / float(playing[0]),
+        differences=_stacked(parts, span),
+        repeats=tuple(row for part in parts for one in part.aligned for row in _repeat_rows(one, part, span)),
+        prior=_model_prior(main.prior),
+        takes=2.0 / main.playing,
         span=span,
         origin_hz=origin,
-        remarks=paired.remarks + _scatter_remarks(prior, take_counts) + _set_aside(paired, aligned),
+        remarks=remarks + _scatter_remarks(main.prior, main.take_counts) + _set_aside(paired, main.aligned),
+    )
+
+
+def _difference(paired: Pairing, family: str, origin_hz: float) -> _Difference:
+    prior = scatter_prior(family)
+    scale = prior.scale_at(paired.freq_hz)
+    octave = np.log2(paired.freq_hz / origin_hz)
+    levels = [*paired.instrument, *paired.target]
+    aligned = tuple(align_takes(level, paired.note_index, octave, prior, scale) for level, _ in levels)
+    moderation, df = _moderation(aligned, prior)
+    spread = [one.spread for one in aligned]
+    errors = [np.sqrt(np.mean(np.where(np.isfinite(level), se, 0.0) ** 2, axis=0)) for level, se in levels]
+    take_counts = tuple(level.shape[0] for level, _ in levels)
+    return _Difference(
+        paired=paired,
+        prior=prior,
+        aligned=aligned,
+        take_counts=take_counts,
+        octave=octave,
+        scale_db=scale,
+        second_db=_blended([member.mean_db for member in aligned[1:]], paired.note_index),
+        playing=float(_both_sides([np.full(1, 1.0 / count) for count in take_counts])[0]),
+        scatter_variance=scale**2 * moderation * _both_sides(spread),
+        scatter_df=df,
+        error_variance=_both_sides([error**2 * part for error, part in zip(errors, spread, strict=True)]),
+    )
+
+
+def _control_difference(now: Profile, then: Profile, origin_hz: float) -> _Difference:
+    if now.instrument and then.instrument and now.instrument != then.instrument:
+        raise ComparisonError(
+            f"the controls are two instruments: {now.instrument} now, {then.instrument} then",
+            cause="a control is one instrument that has not changed, recorded in both sessions",
+            remedy="name profiles of the same instrument",
+        )
+    try:
+        paired = pair(now, (then,))
+    except ComparisonError as error:
+        raise ComparisonError(
+            f"the two recordings of the control cannot be compared: {error.what}",
+            cause=error.cause,
+            remedy=error.remedy,
+        ) from error
+    return _difference(paired, now.family or then.family, origin_hz)
+
+
+def _stacked(parts: list[_Difference], span: tuple[float, float]) -> model.Row:
+    """One row of all differences: playing of each part, the sessions' curve where there is a control, the body curve.
+
+    The body curve is in the first part alone, the sessions' curve in both.
+    """
+    sizes = [part.octave.size for part in parts]
+    octave = np.concatenate([part.octave for part in parts])
+    smooth = body_curve.smooth_columns(octave, *span)
+    first = np.repeat(np.arange(len(parts)), sizes) == 0
+    blocks = []
+    for place, part in enumerate(parts):
+        inside = (np.repeat(np.arange(len(parts)), sizes) == place)[:, None]
+        wobble = body_curve.wobble_columns(octave, *span) * inside
+        blocks.append(model.playing_columns(octave * inside[:, 0], wobble, part.playing))
+    columns = model.joined(blocks)
+    if len(parts) > 1:
+        columns = model.with_curve(columns, octave, smooth)
+    columns = model.with_curve(columns, octave * first, smooth * first[:, None])
+    notes = [len(part.paired.notes) for part in parts]
+    return model.Row(
+        value_db=np.concatenate([part.aligned[0].mean_db - part.second_db for part in parts]),
+        note=np.concatenate([part.paired.note_index + sum(notes[:place]) for place, part in enumerate(parts)]),
+        octave=octave,
+        shared=columns,
+        note_playing=np.repeat([part.playing for part in parts], notes),
+        own=True,
+        scatter_variance=np.concatenate([part.scatter_variance for part in parts]),
+        scatter_df=np.concatenate([part.scatter_df for part in parts]),
+        error_variance=np.concatenate([part.error_variance for part in parts]),
     )
 
 
@@ -146,30 +230,29 @@ def _both_sides(values: list[Array]) -> Array:
     return np.asarray(values[0] + np.nansum(members, axis=0) / count**2)
 
 
-def _moderation(aligned: list[AlignedTakes], prior: ScatterPrior) -> tuple[Array, Array]:
-    """Each harmonic's variance over what its frequency lets one expect (n,), and its degrees of freedom (n,)."""
+def _moderation(aligned: tuple[AlignedTakes, ...], prior: ScatterPrior) -> tuple[Array, Array]:
+    """Each harmonic's variance over what its frequency lets one expect (n,), and its degrees of freedom (n,).
+
+    The prior counts among those degrees of freedom: as far as variances agree where many repeats show them, as the
+    tables' tails say where not.
+    """
     df = np.sum([one.df for one in aligned], axis=0)
     weighted = np.sum([one.df * one.variance_ratio for one in aligned], axis=0)
     ratio = np.divide(weighted, df, out=np.ones(df.shape), where=df > 0)
     seen = df > 0
     if np.count_nonzero(seen) < _LEAST_VARIANCES:
-        return moderated_variance(ratio, df, prior_df=prior.tail_df, prior_variance=1.0), df
+        return moderated_variance(ratio, df, prior_df=prior.tail_df, prior_variance=1.0), prior.tail_df + df
     prior_df, prior_variance = fit_variance_prior(np.maximum(ratio[seen], _LEAST_RATIO), df[seen])
-    return moderated_variance(ratio, df, prior_df=prior_df, prior_variance=prior_variance) / prior_variance, df
+    prior_df = min(prior_df, _MOST_DF)
+    moderated = moderated_variance(ratio, df, prior_df=prior_df, prior_variance=prior_variance) / prior_variance
+    return moderated, np.where(seen, prior_df, min(prior_df, prior.tail_df)) + df
 
 
-def _uncertain(df: Array, prior: ScatterPrior) -> Array:
-    """Return by how much not knowing a variance widens it, (n,): v / (v - 2), the mean of an inverse chi-square.
-
-    Where no repeats speak, the model's own weights for odd harmonics carry this.
-    """
-    known = prior.tail_df + df
-    return np.where(df > 0, known / (known - 2.0), 1.0)
-
-
-def _repeat_rows(aligned: AlignedTakes, whole: model.Row, scale: Array) -> list[model.Row]:
+def _repeat_rows(aligned: AlignedTakes, part: _Difference, span: tuple[float, float]) -> list[model.Row]:
     takes = aligned.residual_db.shape[0]
     count = np.sum(np.isfinite(aligned.residual_db), axis=0)
+    wobble = body_curve.wobble_columns(part.octave, *span)
+    playing = 1.0 - 1.0 / takes
     rows = []
     for residual, weight in zip(aligned.residual_db, aligned.weight, strict=True):
         here = np.flatnonzero(np.isfinite(residual))
@@ -177,16 +260,15 @@ def _repeat_rows(aligned: AlignedTakes, whole: model.Row, scale: Array) -> list[
             rows.append(
                 model.Row(
                     value_db=residual[here],
-                    note=whole.note[here],
-                    n_notes=whole.n_notes,
-                    octave=whole.octave[here],
-                    smooth=np.zeros((here.size, 0)),
-                    wobble=whole.wobble[here],
-                    scatter_variance=(scale**2 * (1.0 - 1.0 / np.maximum(count, 2)))[here] / weight[here],
+                    note=part.paired.note_index[here],
+                    octave=part.octave[here],
+                    shared=model.playing_columns(part.octave[here], wobble[here], playing),
+                    note_playing=np.full(len(part.paired.notes), playing),
+                    own=False,
+                    scatter_variance=(part.scale_db**2 * (1.0 - 1.0 / np.maximum(count, 2)))[here] / weight[here],
+                    scatter_df=part.scatter_df[here],
                     error_variance=np.zeros(here.size),
-                    repeat_df=whole.repeat_df[here],
-                    playing=1.0 - 1.0 / takes,
-                    count=1.0 - 1.0 / takes,
+                    count=playing,
                 )
             )
     return rows
@@ -203,10 +285,18 @@ def _model_prior(prior: ScatterPrior) -> model.Prior:
         (model.WOBBLE, prior.wobble_db, _WOBBLE_LOG_SD),
     ):
         centre[place], sd[place] = math.log(value), log_sd
-    return model.Prior(centre=centre, sd=sd)
+    return model.Prior(centre=centre, precision=np.diag(1.0 / sd**2))
 
 
-def _scatter_remarks(prior: ScatterPrior, take_counts: list[int]) -> tuple[str, ...]:
+def _control_remarks(paired: Pairing, control: Profile) -> tuple[str, ...]:
+    return (
+        f"what the control ({control.instrument or 'unnamed'}) seems to have changed by between the sessions "
+        f"is subtracted, as a curve from {paired.k.size} harmonics of {len(paired.notes)} notes; "
+        "its uncertainty is in the intervals",
+    )
+
+
+def _scatter_remarks(prior: ScatterPrior, take_counts: tuple[int, ...]) -> tuple[str, ...]:
     if max(take_counts) > 1:
         return ()
     return (
@@ -215,7 +305,7 @@ def _scatter_remarks(prior: ScatterPrior, take_counts: list[int]) -> tuple[str, 
     )
 
 
-def _set_aside(paired: Pairing, aligned: list[AlignedTakes]) -> tuple[str, ...]:
+def _set_aside(paired: Pairing, aligned: tuple[AlignedTakes, ...]) -> tuple[str, ...]:
     """List the levels that lie far from the other takes' and therefore weigh little."""
     names = ["instrument", *(["target"] * (len(aligned) - 1))]
     found = [

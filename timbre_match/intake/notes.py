@@ -113,9 +113,7 @@ def held_notes(
         # The window blurs periodicity at both ends of a note; the level tells better where it begins and ends.
         first = max(first - _BLUR_FRAMES, edges[index])
         last = min(last + _BLUR_FRAMES, starts[index + 1])
-        note = _measured(
-            low_signal if f0_hz < _LOW_HZ else signal, track, envelope, first, last, f0_hz, a4_hz, wanted_hz
-        )
+        note = _measured(signal, track, envelope, first, last, f0_hz, a4_hz, wanted_hz)
         if note is not None and (wanted_hz is None or _is_one_of(note.f0_hz, wanted_hz)):
             found.append(note)
     found = _without_scraps(found)
