@@ -10,6 +10,8 @@ from numpy.typing import NDArray
 _BLOCK_S = 0.1
 _FEWEST_FOR_HANN = 6
 _DIP_DB = 6.0
+_HANN_INDEPENDENT = 0.51
+"""1 / (1 + 2 (2/3)^2 + 2 (1/6)^2): a Hann window's bins are correlated by 2/3 and 1/6 (Harris 1978)."""
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
@@ -113,5 +115,8 @@ def _floor(power: NDArray[np.float64], per_block: int, count: int, shape: float)
     both = np.concatenate([gaps[:-1], gaps[1:]], axis=1)
     # The gap below the fundamental holds rumble that is no noise of the note.
     both[0, : len(offsets)] = gaps[1]
-    bias = (1.0 - 1.0 / (9.0 * shape)) ** 3
-    return np.median(both, axis=1) / bias, shape * both.shape[1]
+    # The median of two is their mean, which needs no correction.
+    bias = (1.0 - 1.0 / (9.0 * shape)) ** 3 if both.shape[1] > 2 else 1.0
+    # A median knows as much as 2 / pi of the values in a mean; neighbouring bins under a Hann window say much the same.
+    independent = 2.0 / np.pi * (_HANN_INDEPENDENT if per_block >= _FEWEST_FOR_HANN else 1.0)
+    return np.median(both, axis=1) / bias, max(1.0, shape * both.shape[1] * independent)
