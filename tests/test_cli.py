@@ -318,8 +318,10 @@ def test_an_instrument_against_itself(run: CommandLine, profile: Path) -> None:
     assert whole["regions"] == []
     assert whole["suggestions"] == []
     assert {entry["verdict"] for entry in whole["harmonics"]} <= {"alike", "unsettled"}
-    # Estimates are means of random draws, so nothing is exactly nothing.
-    assert all(abs(entry["difference_db"]) < 0.15 for entry in whole["harmonics"])
+    # Estimates are means of random draws: what is left of nothing is the error of that mean, far inside each interval.
+    assert all(
+        abs(entry["difference_db"]) < 0.06 * (entry["high_db"] - entry["low_db"]) for entry in whole["harmonics"]
+    )
 
 
 def test_margin_is_passed_on(run: CommandLine, profile: Path) -> None:

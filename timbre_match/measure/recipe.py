@@ -208,7 +208,7 @@ def _mean_fundamental_hz(cycles: Cycles, heard: NDArray[np.int64]) -> float:
     steps = count // per_step
     summed = cycles.samples[: steps * per_step].reshape(steps, per_step, -1).sum(axis=1)
     each = scipy.fft.rfft(summed, axis=1)[:, heard]
-    turn = _common_turn(each, heard)
+    turn = _agreed_turn(each, heard)
     # A coefficient speaks for its whole cycle: its mean phase belongs to the middle of that cycle.
     ends_s = np.append(cycles.start_s[1:], 2.0 * cycles.start_s[-1] - cycles.start_s[-2])
     middle_s = 0.5 * (cycles.start_s + ends_s)
@@ -218,7 +218,7 @@ def _mean_fundamental_hz(cycles: Cycles, heard: NDArray[np.int64]) -> float:
     return float(centre_s @ phase / (centre_s @ centre_s))
 
 
-def _common_turn(each: NDArray[np.complex128], order: NDArray[np.int64]) -> NDArray[np.float64]:
+def _agreed_turn(each: NDArray[np.complex128], order: NDArray[np.int64]) -> NDArray[np.float64]:
     """Phase in radians of the fundamental in each row, shape (rows,), agreed on by the harmonics `order` (columns)."""
     # The few dozen that know most decide; the others would only cost time.
     best = np.argsort((np.abs(each) ** 2).sum(axis=0) * order**2)[-_DECIDING:]
@@ -237,6 +237,6 @@ def _phases(harmonics: NDArray[np.complex128]) -> NDArray[np.float64]:
     """Phase of each c_k, shape (harmonics,), with time counted from where the fundamental's phase is zero."""
     k = np.arange(1, harmonics.shape[1] + 1)
     # Blocks may still turn a little against each other.
-    mean = (harmonics * np.exp(-1j * np.outer(_common_turn(harmonics, k), k))).sum(axis=0)
+    mean = (harmonics * np.exp(-1j * np.outer(_agreed_turn(harmonics, k), k))).sum(axis=0)
     turned = np.angle(mean) - k * np.angle(mean[0])
     return np.asarray((turned + np.pi) % (2.0 * np.pi) - np.pi)
