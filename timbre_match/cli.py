@@ -14,6 +14,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
 
 import typer
+from typer.core import TyperGroup
 
 from timbre_match.errors import TimbreMatchError, UnknownNameError
 
@@ -26,8 +27,21 @@ EXIT_ERROR = 1
 EXIT_PART = 3
 EXIT_INTERRUPTED = 130
 
+
+class _Commands(TyperGroup):
+    """The commands; an interrupted one says so, which typer alone would not."""
+
+    def invoke(self, ctx: typer.Context) -> object:  # type: ignore[override]
+        try:
+            return super().invoke(ctx)
+        except KeyboardInterrupt:
+            _say_interrupted()
+            raise typer.Exit(EXIT_INTERRUPTED) from None
+
+
 app = typer.Typer(
     name="timbre-match",
+    cls=_Commands,
     help="What an instrument's notes are made of, how it differs from a target, and whether that is more than the "
     "player's hand.",
     no_args_is_help=True,
@@ -66,7 +80,7 @@ def main() -> None:
     try:
         app()
     except KeyboardInterrupt:
-        typer.echo("timbre-match: stopped; nothing was left half written", err=True)
+        _say_interrupted()
         sys.exit(EXIT_INTERRUPTED)
     except TimbreMatchError as error:
         _complain(error)
@@ -334,6 +348,10 @@ def _working(what: str) -> AbstractContextManager[object]:
     from rich.console import Console
 
     return Console(stderr=True).status(what)
+
+
+def _say_interrupted() -> None:
+    typer.echo("timbre-match: interrupted; no file was left half written", err=True)
 
 
 def _complain(error: TimbreMatchError) -> None:

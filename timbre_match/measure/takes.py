@@ -1,6 +1,7 @@
 """Takes to a profile: what each recording gives, and what the maker should know about the takes as a whole."""
 
 import dataclasses
+import warnings
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass
 from pathlib import Path
@@ -9,6 +10,7 @@ from timbre_match import units
 from timbre_match.errors import NoHeldNoteError, RecordingError, TimbreMatchError
 from timbre_match.intake.notes import HeldNote, held_notes
 from timbre_match.intake.recording import Recording, read_recording
+from timbre_match.measure.interrupts import deaf_children, interrupts_held_back
 from timbre_match.measure.profile import Profile, Source, Take
 from timbre_match.measure.recipe import Recipe, measure_recipe
 
@@ -72,7 +74,8 @@ def listen(path: Path, listening: Listening, *, measure: bool = True) -> Heard:
     """Read one recording, find its held notes and, if wanted, measure their recipes."""
     recording = None
     try:
-        recording = read_recording(path, channel=listening.channel)
+        with interrupts_held_back():
+            recording = read_recording(path, channel=listening.channel)
         notes = held_notes(recording, notes=listening.notes, a4_hz=listening.a4_hz)
         recipes = _recipes(recording, notes, listening.a4_hz) if measure else []
     except TimbreMatchError as error:
@@ -114,15 +117,21 @@ def listen_to_all(
     progress: Progress | None = None,
 ) -> list[Heard]:
     """Listen to recordings in parallel; what each gave, in the order of `paths`."""
-    results: Iterable[Heard]
     if jobs == 1 or len(paths) == 1:
-        results = (listen(path, listening, measure=measure) for path in paths)
-    else:
-        import joblib
+        in_turn = (listen(path, listening, measure=measure) for path in paths)
+        return list(progress(in_turn, len(paths)) if progress else in_turn)
+    import joblib
 
-        parallel = joblib.Parallel(n_jobs=jobs, return_as="generator")
+    parallel = joblib.Parallel(n_jobs=jobs, return_as="generator")
+    with deaf_children():
         results = parallel(joblib.delayed(listen)(path, listening, measure=measure) for path in paths)
-    return list(progress(results, len(paths)) if progress else results)
+    try:
+        return list(progress(results, len(paths)) if progress else results)
+    finally:
+        with warnings.catch_warnings():
+            # After an interrupt this ends the processes, and joblib would warn that their work was in vain.
+            warnings.simplefilter("ignore")
+            results.close()
 
 
 def recordings_of_take(place: Path) -> list[Path]:
