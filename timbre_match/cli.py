@@ -10,6 +10,7 @@ import sys
 from collections.abc import Iterable, Iterator, Sequence
 from contextlib import AbstractContextManager, nullcontext
 from enum import StrEnum
+from itertools import islice
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
 
@@ -99,16 +100,17 @@ def root(version: Annotated[bool, typer.Option("--version", help="Print the vers
 
 @app.command()
 def notes(
-    recordings: Annotated[list[Path], typer.Argument(metavar="RECORDING...", help="Recordings to listen to.")],
+    recordings: Annotated[
+        list[Path],
+        typer.Argument(metavar="RECORDING...", help="Recordings to listen to; a folder stands for those in it."),
+    ],
     notes: Notes = None,
     a4: A4 = 440.0,
     channel: Channel = None,
     as_json: AsJson = False,
 ) -> None:
     """List the held notes of recordings."""
-    from timbre_match.measure.takes import listen_to_all
-
-    results = listen_to_all(recordings, _listening(notes, a4, channel), measure=False, progress=_progress)
+    results = _heard_in(recordings, _listening(notes, a4, channel))
     if as_json:
         _print_json({"recordings": [_heard_as_json(heard) for heard in results]})
     else:
@@ -293,6 +295,21 @@ def _listening(notes: str | None, a4_hz: float, channel: int | None) -> "Listeni
     except UnknownNameError as error:
         raise typer.BadParameter(str(error), param_hint="--notes") from error
     return Listening(notes=names, a4_hz=a4_hz, channel=channel)
+
+
+def _heard_in(places: Sequence[Path], listening: "Listening") -> "list[Heard]":
+    """What the recordings gave, in order; a folder without any is a place that cannot be used."""
+    from timbre_match.measure.takes import Heard, listen_to_all, recordings_of_take
+
+    found: list[list[Path] | Heard] = []
+    for place in places:
+        try:
+            found.append(recordings_of_take(place))
+        except TimbreMatchError as error:
+            found.append(Heard(path=place, error=error))
+    paths = [path for part in found if not isinstance(part, Heard) for path in part]
+    results = iter(listen_to_all(paths, listening, measure=False, progress=_progress))
+    return [heard for part in found for heard in ([part] if isinstance(part, Heard) else islice(results, len(part)))]
 
 
 def _heard_as_json(heard: "Heard") -> dict[str, object]:
