@@ -24,7 +24,7 @@ import numpy as np
 import soundfile
 from numpy.typing import NDArray
 
-from tests.conftest import npm_package
+from tests.open_data import npm_package
 from timbre_match.measure.takes import RECORDING_SUFFIXES, Listening, listen
 
 Array = NDArray[np.float64]

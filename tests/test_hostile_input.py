@@ -17,11 +17,6 @@ from tests.command_line import CommandLine, run_process
 from tests.intake.sounds import RATE, played_note, write
 
 
-@pytest.fixture
-def run(capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch) -> CommandLine:
-    return CommandLine(capsys, monkeypatch)
-
-
 def zero_bytes(folder: Path) -> Path:
     path = folder / "nothing.wav"
     path.touch()

@@ -13,7 +13,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from tests.conftest import npm_package
+from tests.open_data import npm_package
 from timbre_match.intake.notes import HeldNote, held_notes
 from timbre_match.intake.recording import Recording, read_recording
 from timbre_match.units import cents_between, note_to_hz

@@ -1,7 +1,7 @@
 """Recipes that nobody here made, taken apart again: the SHARC archive.
 
 Sandell's archive of the steady-state amplitudes and phases of recorded notes (1990s; public domain). The file is no
-part of the project, see :func:`tests.conftest.shared_data`.
+part of the project, see :func:`tests.open_data.shared_data`.
 """
 
 import hashlib
@@ -15,7 +15,7 @@ import pytest
 from numpy.typing import NDArray
 
 from benchmarks.accuracy import longest_recipe, recording_of
-from tests.conftest import shared_data
+from tests.open_data import shared_data
 from timbre_match.measure.recipe import Recipe
 from timbre_match.units import cents_between
 

@@ -1,0 +1,59 @@
+"""The command `compare`."""
+
+from pathlib import Path
+
+from tests.cli.outputs import assert_comparison_keys, assert_figures, assert_same, content, parsed, short_note
+from tests.command_line import CommandLine
+from tests.intake.sounds import write
+
+
+def test_compare_prints_json_and_nothing_else(run: CommandLine, profile: Path, tmp_path: Path) -> None:
+    out = tmp_path / "c.json"
+    ended = run("compare", profile, "--target", profile, "--json", "--out", out)
+    assert (ended.code, ended.err) == (0, "")
+    whole = parsed(ended.out)
+    assert_same(whole, content(out))
+    assert_comparison_keys(whole)
+    assert whole["harmonics"]
+    assert whole["body_curve"]
+
+
+def test_an_instrument_against_itself(run: CommandLine, profile: Path) -> None:
+    whole = parsed(run("compare", profile, "--target", profile, "--json").out)
+    assert whole["regions"] == []
+    assert whole["suggestions"] == []
+    assert {entry["verdict"] for entry in whole["harmonics"]} <= {"alike", "unsettled"}
+    # Estimates are means of random draws: what is left of nothing is the error of that mean, far inside each interval.
+    assert all(
+        abs(entry["difference_db"]) < 0.06 * (entry["high_db"] - entry["low_db"]) for entry in whole["harmonics"]
+    )
+
+
+def test_margin_is_passed_on(run: CommandLine, profile: Path) -> None:
+    whole = {
+        margin: parsed(run("compare", profile, "--target", profile, "--margin", margin, "--json").out)
+        for margin in ("0.1", "20")
+    }
+    alike = {margin: sum(row["verdict"] == "alike" for row in entry["harmonics"]) for margin, entry in whole.items()}
+    assert [entry["margin_db"] for entry in whole.values()] == [0.1, 20.0]
+    # A harmonic or two in the middle of few can define the reference level, and is then known by definition.
+    assert alike["0.1"] < 0.5 * alike["20"]
+    assert alike["20"] == len(whole["20"]["harmonics"])
+
+
+def test_compare_for_human_eyes(run: CommandLine, profile: Path, tmp_path: Path) -> None:
+    ended = run("compare", profile, "--target", profile, "--figures", tmp_path / "figures")
+    assert (ended.code, ended.err) == (0, "")
+    assert "Colour distance" in ended.out
+    assert "Closeness" in ended.out
+    assert str(tmp_path / "figures") in ended.out
+    assert_figures(tmp_path / "figures")
+
+
+def test_nothing_in_common(run: CommandLine, profile: Path, tmp_path: Path) -> None:
+    other = tmp_path / "other.json"
+    assert run("measure", write(tmp_path / "c6.wav", short_note(1046.5)), "--out", other).code == 0
+    before = sorted(tmp_path.iterdir())
+    ended = run("compare", profile, "--target", other, "--out", tmp_path / "c.json", "--figures", tmp_path / "figures")
+    ended.assert_plain_error("likely cause", "what to do")
+    assert sorted(tmp_path.iterdir()) == before
