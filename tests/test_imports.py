@@ -264,3 +264,16 @@ def test_help_loads_nothing_heavy(arguments: list[str]) -> None:
 
 def test_measuring_loads_no_plotting() -> None:
     assert "matplotlib" not in modules_after("import timbre_match.pipeline, timbre_match.show.tables")
+
+
+def test_tests_lean_on_no_benchmark() -> None:
+    # Benchmarks may use what the tests share, so the way back must stay closed.
+    trees = {path: ast.parse(path.read_text(encoding="utf-8")) for path in Path(__file__).parent.rglob("*.py")}
+    leaning = [
+        path.name
+        for path, tree in trees.items()
+        for entry in _walk(tree, "tests", False, types_only=False, in_function=False)
+        if entry.target.split(".")[0] == "benchmarks"
+    ]
+    assert len(trees) > len(ROOMS)
+    assert leaning == []

@@ -9,6 +9,8 @@ import soundfile
 from numpy.typing import NDArray
 from scipy.fft import irfft, next_fast_len, rfft
 
+from timbre_match.intake.recording import Recording
+
 Array = NDArray[np.float64]
 
 RATE = 44_100
@@ -95,3 +97,10 @@ def band(x: Array, low_hz: float, high_hz: float) -> Array:
 def write(path: Path, samples: Array, rate: int = RATE, **options: str) -> Path:
     soundfile.write(path, samples, rate, **options)
     return path
+
+
+def recording_of(samples: Array, sample_rate_hz: int) -> Recording:
+    """Samples as a recording with no file behind it."""
+    return Recording(
+        file="tone", sha256="", samples=samples, sample_rate_hz=sample_rate_hz, channel=1, channel_count=1, warnings=()
+    )

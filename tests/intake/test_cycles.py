@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 from numpy.typing import NDArray
 
-from benchmarks.accuracy import recording_of
+from tests.intake.sounds import recording_of
 from timbre_match.intake.cycles import cut_cycles
 from timbre_match.intake.notes import HeldNote, held_notes
 

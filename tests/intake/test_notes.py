@@ -5,8 +5,7 @@ import pytest
 import scipy.ndimage
 import scipy.signal
 
-from benchmarks.accuracy import recording_of
-from tests.intake.sounds import RATE, Array, hum
+from tests.intake.sounds import RATE, Array, hum, recording_of
 from timbre_match.errors import NoHeldNoteError
 from timbre_match.intake.notes import HeldNote, held_notes
 from timbre_match.units import cents_between, note_to_hz

@@ -6,7 +6,8 @@ import numpy as np
 import pytest
 from scipy import stats
 
-from benchmarks.accuracy import (
+from tests.intake.sounds import recording_of
+from tests.measure.known_tones import (
     BIAS_LIMIT_DB,
     F0_LIMIT,
     LEVEL_LIMIT,
@@ -18,7 +19,6 @@ from benchmarks.accuracy import (
     f0_bound_hz,
     level_bound_db,
     longest_recipe,
-    recording_of,
     rms,
     run,
 )
@@ -27,11 +27,11 @@ from timbre_match.measure.recipe import measure_recipe
 
 RATE_HZ = 44_100
 
-# Bounds: Kay (1993); Nielsen, Jensen & Christensen (2017), see benchmarks/accuracy.py, which runs 200 trials of many
-# more settings. Here a few trials of each are pooled: n errors, each divided by its bound, have a sum of squares of
-# ratio^2 times chi-square with n degrees of freedom. A test passes where that shows the ratio to be under its limit
-# beyond doubt (one-sided, 1 %), so sampling luck cannot pass a poor estimator, and more errors make it easier for a
-# good one. The errors of one trial's harmonics are independent but for their common total.
+# Bounds: Kay (1993); Nielsen, Jensen & Christensen (2017), see known_tones.py. benchmarks/accuracy.py runs 200 trials
+# of many more settings. Here a few trials of each are pooled: n errors, each divided by its bound, have a sum of
+# squares of ratio^2 times chi-square with n degrees of freedom. A test passes where that shows the ratio to be under
+# its limit beyond doubt (one-sided, 1 %), so sampling luck cannot pass a poor estimator, and more errors make it easier
+# for a good one. The errors of one trial's harmonics are independent but for their common total.
 SURE = 0.01
 STEADY = (
     Setting(f0_hz=30.0, sample_rate_hz=44_100, snr_db=10.0),

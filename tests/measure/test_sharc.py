@@ -14,7 +14,8 @@ import numpy as np
 import pytest
 from numpy.typing import NDArray
 
-from benchmarks.accuracy import longest_recipe, recording_of
+from tests.intake.sounds import recording_of
+from tests.measure.known_tones import longest_recipe
 from tests.open_data import shared_data
 from timbre_match.measure.recipe import Recipe
 from timbre_match.units import cents_between
