@@ -11,14 +11,14 @@ from hypothesis import strategies as st
 
 from tests.show import invented
 from timbre_match.advise.suggestions import Suggestion, ear_weight, suggest
-from timbre_match.advise.workshop import Practice, families, workshop_rows
+from timbre_match.advise.workshop import Practice, families, workshop_family
 from timbre_match.compare.records import Comparison, CurvePoint, HarmonicDifference, Interval, Region, Verdict
 from timbre_match.show.marks import VERDICTS
 
 PRACTICES = {
     practice.move.text: practice
     for name in (*families(), "")
-    for row in workshop_rows(name)
+    for row in workshop_family(name).rows
     for practice in row.too_strong + row.too_weak
 }
 
@@ -94,7 +94,7 @@ def test_the_evidence_is_a_sentence_with_region_size_interval_and_counts() -> No
 
 
 def test_moves_are_those_of_the_row_and_the_direction() -> None:
-    row = next(row for row in workshop_rows("violin") if "A0" in row.name)
+    row = next(row for row in workshop_family("violin").rows if "A0" in row.name)
     (strong,) = suggest(comparison(invented.region(255.0, 300.0, 4.0)))
     (weak,) = suggest(comparison(invented.region(255.0, 300.0, -4.0)))
     assert strong.moves == tuple(practice.move for practice in row.too_strong)
@@ -104,7 +104,7 @@ def test_moves_are_those_of_the_row_and_the_direction() -> None:
 @pytest.mark.parametrize("family", ["", "theremin", "guitar"])
 def test_without_a_table_the_advice_is_general(family: str) -> None:
     (only,) = suggest(comparison(invented.region(255.0, 300.0, 4.0), family=family))
-    general = {p.move.text for row in workshop_rows("") for p in row.too_strong + row.too_weak}
+    general = {p.move.text for row in workshop_family("").rows for p in row.too_strong + row.too_weak}
     assert {move.text for move in only.moves} <= general
     assert only.cautions[0].startswith("General advice")
 
@@ -203,7 +203,7 @@ def test_a_single_harmonic_asks_for_its_note_again_and_for_nothing_else(lone: Co
 @pytest.mark.parametrize("family", [*families(), ""])
 def test_a_single_take_on_either_side_leaves_out_what_cannot_be_undone(family: str) -> None:
     said = 0
-    for row in workshop_rows(family):
+    for row in workshop_family(family).rows:
         for size in (-8.0, 8.0):
             whole = comparison(invented.region(row.low_hz, row.high_hz, size), family=family)
             irreversible = [move for one in suggest(whole) for move in one.moves if not move.reversible]

@@ -14,12 +14,13 @@ from timbre_match.advise.workshop import (
     read_family,
     read_moves,
     workshop_family,
-    workshop_rows,
 )
 from timbre_match.errors import SavedFileError, UnknownNameError
 
 NAMES = (*families(), "")
-ROWS = [pytest.param(row, id=f"{name or 'general'}-{row.low_hz:g}") for name in NAMES for row in workshop_rows(name)]
+ROWS = [
+    pytest.param(row, id=f"{name or 'general'}-{row.low_hz:g}") for name in NAMES for row in workshop_family(name).rows
+]
 
 
 def test_the_families_of_the_design_are_there() -> None:
@@ -39,7 +40,7 @@ def test_the_families_of_the_design_are_there() -> None:
 @pytest.mark.parametrize("name", NAMES)
 @given(freq_hz=st.floats(20.0, 20000.0, exclude_max=True))
 def test_every_audible_frequency_lies_in_exactly_one_row(name: str, freq_hz: float) -> None:
-    assert sum(row.low_hz <= freq_hz < row.high_hz for row in workshop_rows(name)) == 1
+    assert sum(row.low_hz <= freq_hz < row.high_hz for row in workshop_family(name).rows) == 1
 
 
 @pytest.mark.parametrize("row", ROWS)
@@ -113,7 +114,7 @@ def test_published_resonances_lie_in_the_row_that_names_them(
     family: str, word: str, published_hz: tuple[float, ...]
 ) -> None:
     for freq_hz in published_hz:
-        (row,) = [row for row in workshop_rows(family) if row.low_hz <= freq_hz < row.high_hz]
+        (row,) = [row for row in workshop_family(family).rows if row.low_hz <= freq_hz < row.high_hz]
         assert word in row.name
 
 
@@ -134,13 +135,13 @@ def test_names_are_read_generously(written: str, meant: str) -> None:
 
 def test_an_ambiguous_name_names_both_meanings() -> None:
     with pytest.raises(UnknownNameError) as caught:
-        workshop_rows("guitar")
+        workshop_family("guitar")
     assert "classical guitar or steel-string guitar" in str(caught.value)
 
 
 def test_an_unknown_name_lists_the_known_ones() -> None:
     with pytest.raises(UnknownNameError) as caught:
-        workshop_rows("nose flute band")
+        workshop_family("nose flute band")
     assert all(name in str(caught.value) for name in families())
 
 
@@ -148,7 +149,7 @@ def test_every_written_move_is_used() -> None:
     data = files("timbre_match") / "advise" / "data"
     cautions = {key: key for key in ("strings", "dust", "glue", "heat", "knife", "removed")}
     written = read_moves((data / "moves.toml").read_text(encoding="utf-8"), "moves.toml", cautions)
-    used = {p.move.text for name in NAMES for row in workshop_rows(name) for p in row.too_strong + row.too_weak}
+    used = {p.move.text for name in NAMES for row in workshop_family(name).rows for p in row.too_strong + row.too_weak}
     assert {practice.move.text for practice in written.values()} == used
 
 

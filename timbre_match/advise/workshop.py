@@ -123,11 +123,6 @@ def workshop_family(family: str) -> Family:
     )
 
 
-def workshop_rows(family: str) -> tuple[WorkshopRow, ...]:
-    """Rows of one family from low to high frequency; see :func:`workshop_family` for names and errors."""
-    return workshop_family(family).rows
-
-
 def gather_cautions(practices: tuple[Practice, ...]) -> tuple[str, ...]:
     """Cautions of several moves, each once, in order, ending with the playback level and the maker's judgement."""
     known = _cautions()

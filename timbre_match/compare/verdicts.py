@@ -26,16 +26,6 @@ def false_discovery_threshold(p: ArrayLike, rate: float = FALSE_DISCOVERY_RATE) 
     return float(ordered[below[-1]]) if below.size else 0.0
 
 
-def adjusted_p(p: ArrayLike) -> Array:
-    """Benjamini-Hochberg adjusted p-values: min over j >= i of m p_(j) / j, in the order given."""
-    values = np.asarray(p, dtype=np.float64)
-    order = np.argsort(values)
-    scaled = values[order] * values.size / np.arange(1, values.size + 1)
-    result = np.empty(values.size)
-    result[order] = np.minimum(np.minimum.accumulate(scaled[::-1])[::-1], 1.0)
-    return result
-
-
 def equivalence_p(difference_db: ArrayLike, se_db: ArrayLike, margin_db: float, df: ArrayLike = np.inf) -> Array:
     """p-value of two one-sided tests that the difference lies within +-margin: the larger of the two.
 
