@@ -16,7 +16,7 @@ from matplotlib.image import imread
 from matplotlib.patches import Rectangle
 
 from tests.show import invented
-from timbre_match.compare.records import Comparison, Interval
+from timbre_match.compare.records import Comparison, Interval, Verdict
 from timbre_match.compare.target import Target
 from timbre_match.measure.profile import Profile
 from timbre_match.show.drawing import VERDICT_COLOUR, drawable
@@ -200,6 +200,58 @@ def test_a_larger_difference_has_a_larger_arrow_head() -> None:
     sizes = np.asarray(scatter(differences_figure(compared).axes[0], "stronger").get_sizes())
     assert sizes.tolist() == sorted(sizes.tolist())
     assert len(set(sizes.tolist())) == 3
+
+
+def gaps_between_marks(figure: Figure, panel: Axes) -> np.ndarray[tuple[int, ...], np.dtype[np.float64]]:
+    """Free width between neighbouring marks of one row, in points; negative where two overlap."""
+    marks = []
+    for verdict in SIGN:
+        drawn = scatter(panel, verdict)
+        box = drawn.get_paths()[0].get_extents()
+        middles = panel.transData.transform(np.asarray(drawn.get_offsets()))[:, 0] * 72.0 / figure.dpi
+        for middle, size in zip(middles, np.sqrt(drawn.get_sizes()), strict=True):
+            marks.append((middle + size * box.x0, middle + size * box.x1))
+    ends = np.array(sorted(marks))
+    return np.asarray(ends[1:, 0] - ends[:-1, 1], dtype=np.float64)
+
+
+@pytest.mark.parametrize("kinds", [("alike",), ("unsettled",), ("stronger",), tuple(SIGN)], ids=" ".join)
+@pytest.mark.parametrize(("which", "count"), [(differences_figure, 90), (body_curve_figure, 45)])
+def test_marks_of_a_low_note_do_not_run_together(which: object, count: int, kinds: tuple[Verdict, ...]) -> None:
+    low = tuple(invented.harmonic("C2", k, 12.0, kinds[k % len(kinds)]) for k in range(1, count + 1))
+    assert callable(which)
+    figure = which(replace(invented.comparison(), harmonics=low))
+    gaps = gaps_between_marks(figure, figure.axes[0])
+    assert len(gaps) == count - 1
+    assert gaps.min() > (1.5 if kinds == ("alike",) and which is differences_figure else 0.0)
+
+
+def test_signs_stand_over_stem_and_notch_and_within_the_panel() -> None:
+    profile = invented.profile(takes=1)
+    # The target has 40 dB more in a stretch of which the comparison tells some 5 dB, as it leans on neighbours.
+    takes = tuple(
+        replace(
+            take,
+            notes=tuple(
+                replace(one, level_db=one.level_db + 40.0 * ((one.freq_hz > 590.0) & (one.freq_hz < 810.0)))
+                for one in take.notes
+            ),
+        )
+        for take in profile.takes
+    )
+    loud = Target(name="loud", members=(replace(profile, takes=takes),))
+    figure = recipe_figure(profile, loud, invented.comparison())
+    signs = 0
+    for panel in figure.axes:
+        heads = {round(segment[1, 0], 6): segment[1, 1] for segment in stems(panel)}
+        notches = {round(freq_hz, 6): level_db for freq_hz, level_db in offsets(panel, "notches")}
+        for verdict in ("stronger", "weaker"):
+            for freq_hz, level_db in offsets(panel, verdict):
+                place = round(freq_hz, 6)
+                assert level_db > max(heads[place], notches[place]) + 3.0
+                assert level_db < panel.get_ylim()[1] - 3.0
+                signs += 1
+    assert signs > 10
 
 
 def test_the_body_curve_and_its_regions_are_drawn_where_they_are() -> None:

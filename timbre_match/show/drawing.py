@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
     from matplotlib.lines import Line2D
+    from matplotlib.path import Path
 
 INK: Final = "#26221f"
 STEM: Final = "#8b5a3c"
@@ -32,8 +33,6 @@ VERDICT_COLOUR: Final[dict[Verdict, str]] = {
     "unsettled": "#857b71",
 }
 """Orange against blue stays apart in every common kind of colour blindness, and in grey the blue is the darker."""
-
-VERDICT_MARKER: Final[dict[Verdict, str]] = {"stronger": "^", "weaker": "v", "alike": "$=$", "unsettled": "$?$"}
 
 _TICKS_HZ: Final = (20, 30, 50, 100, 200, 300, 500, 1000, 2000, 3000, 5000, 10000, 20000)
 _LOOK: Final[Any] = {
@@ -133,10 +132,21 @@ def mark(label: str, **style: Any) -> "Line2D":
     return Line2D([], [], **{"linestyle": "none", "color": INK, **style}, label=label)
 
 
+@lru_cache(maxsize=len(VERDICT_COLOUR))
+def verdict_marker(verdict: Verdict) -> "Path | str":
+    """Return the shape of a verdict as a marker; the equals sign with room between its strokes, as no font has it."""
+    from matplotlib.path import Path
+
+    if verdict != "alike":
+        return {"stronger": "^", "weaker": "v", "unsettled": "$?$"}[verdict]
+    strokes = [[(-0.5, low), (0.5, low), (0.5, low + 0.2), (-0.5, low + 0.2), (-0.5, low)] for low in (-0.4, 0.2)]
+    return Path.make_compound_path(*(Path(stroke, closed=True) for stroke in strokes))
+
+
 def verdict_mark(verdict: Verdict, label: str) -> "Line2D":
     """Return the legend entry of a verdict, in its shape and colour."""
     return mark(
-        label, marker=VERDICT_MARKER[verdict], color=VERDICT_COLOUR[verdict], markersize=10, markeredgewidth=0.4
+        label, marker=verdict_marker(verdict), color=VERDICT_COLOUR[verdict], markersize=10, markeredgewidth=0.4
     )
 
 

@@ -13,7 +13,7 @@ import numpy as np
 from timbre_match.advise.wording import hertz
 from timbre_match.compare.records import Comparison, HarmonicDifference, Region
 from timbre_match.show import drawing
-from timbre_match.show.drawing import BAND, INK, QUIET, STEM, VERDICT_COLOUR, VERDICT_MARKER, render
+from timbre_match.show.drawing import BAND, INK, QUIET, STEM, VERDICT_COLOUR, render
 from timbre_match.show.marks import SIGN, VERDICTS
 from timbre_match.show.recipes import recipe_figure
 
@@ -27,6 +27,7 @@ __all__ = ["body_curve_figure", "differences_figure", "recipe_figure", "render"]
 _LARGEST_SHOWN_DB: Final = 20.0
 _FULL_SIZE_DB: Final = 12.0
 _LEAST_CELL, _LARGEST_CELL = 7.0, 26.0
+_LEAST_ROOM, _LARGEST_ROOM = 3.0, 11.0
 _LABEL_STEPS: Final = 3
 _LABEL_ROOM: Final = 2.0
 """Frequency ratio that keeps two labels apart."""
@@ -43,8 +44,9 @@ def differences_figure(comparison: Comparison) -> "Figure":
     with drawing.look():
         figure, (panel,) = drawing.sheet([0.42 * max(len(rows), 1) + 0.2], top_in=1.35, bottom_in=0.75, gap_in=0.0)
         _draw_verdicts(
-            panel, comparison.harmonics, rows, [harmonic.k for harmonic in comparison.harmonics], cell_points
-        )
+            panel, comparison.harmonics, rows, [harmonic.k for harmonic in comparison.harmonics],
+            [cell_points] * len(comparison.harmonics),
+        )  # fmt: skip
         _note_rows(panel, rows)
         panel.set_xlim(0.3, highest_k + 0.7)
         panel.set_xticks(_harmonic_ticks(highest_k))
@@ -73,7 +75,7 @@ def body_curve_figure(comparison: Comparison) -> "Figure":
     with drawing.look():
         heights_in = [0.27 * max(len(rows), 1) + 0.2, 3.7]
         figure, (upper, lower) = drawing.sheet(heights_in, top_in=1.75, bottom_in=0.75, gap_in=0.18)
-        _draw_verdicts(upper, comparison.harmonics, rows, freqs_hz, 9.0)
+        _draw_verdicts(upper, comparison.harmonics, rows, freqs_hz, _room_points(comparison.harmonics, limits))
         _note_rows(upper, rows)
         _draw_body_curve(lower, comparison)
         for region in comparison.regions:
@@ -108,29 +110,45 @@ def _harmonic_ticks(highest_k: int) -> list[int]:
     return sorted({*first, *range(step, highest_k + 1, step)})
 
 
+def _room_points(harmonics: Sequence[HarmonicDifference], limits_hz: tuple[float, float]) -> list[float]:
+    """Width that each mark may have on the frequency axis before it touches its nearest neighbour of the same note."""
+    by_note: dict[str, list[float]] = {}
+    for harmonic in harmonics:
+        by_note.setdefault(harmonic.note, []).append(harmonic.freq_hz)
+    points_per_neper = drawing.panel_width_points() / math.log(limits_hz[1] / limits_hz[0])
+    room: dict[tuple[str, float], float] = {}
+    for note, freqs_hz in by_note.items():
+        places = points_per_neper * np.log(np.sort(freqs_hz))
+        gaps = np.concatenate([[np.inf], np.diff(places), [np.inf]])
+        nearest = np.clip(np.minimum(gaps[:-1], gaps[1:]), _LEAST_ROOM, _LARGEST_ROOM)
+        room.update(zip([(note, freq_hz) for freq_hz in sorted(freqs_hz)], nearest.tolist(), strict=True))
+    return [room[harmonic.note, harmonic.freq_hz] for harmonic in harmonics]
+
+
 def _draw_verdicts(
     panel: "Axes",
     harmonics: Sequence[HarmonicDifference],
     rows: dict[str, int],
     across: Sequence[float],
-    cell_points: float,
+    room_points: Sequence[float],
 ) -> None:
     for verdict in VERDICTS:
         chosen = [index for index, harmonic in enumerate(harmonics) if harmonic.verdict == verdict]
-        sizes = [_mark_area(harmonics[index], cell_points) for index in chosen]
+        sizes = [_mark_width(harmonics[index], room_points[index]) ** 2 for index in chosen]
         panel.scatter(
             [across[index] for index in chosen], [rows[harmonics[index].note] for index in chosen],
-            s=sizes, marker=VERDICT_MARKER[verdict], color=VERDICT_COLOUR[verdict],
-            linewidths=0.0 if verdict in ("stronger", "weaker") else 0.3, zorder=3, label=verdict,
+            s=sizes, marker=drawing.verdict_marker(verdict), color=VERDICT_COLOUR[verdict],
+            linewidths=0.3 if verdict == "unsettled" else 0.0, snap=False, zorder=3, label=verdict,
         )  # fmt: skip
 
 
-def _mark_area(harmonic: HarmonicDifference, cell_points: float) -> float:
-    """Area in square points: arrow heads fill a quarter of the cell at 0 dB and all of it at 12 dB."""
+def _mark_width(harmonic: HarmonicDifference, room_points: float) -> float:
+    """Size in points: arrow heads fill a quarter of their room at 0 dB and nearly all of it at 12 dB."""
     if harmonic.verdict in ("stronger", "weaker"):
         share = 0.25 + 0.75 * min(abs(harmonic.difference_db.value) / _FULL_SIZE_DB, 1.0)
-        return share * cell_points**2
-    return min(0.35 * cell_points**2, 60.0)
+        return 0.95 * math.sqrt(share) * room_points
+    # An equals sign is as wide as its size, a question mark half as wide.
+    return min(0.7 * room_points, 7.5) if harmonic.verdict == "alike" else min(0.9 * room_points, 10.0)
 
 
 def _note_rows(panel: "Axes", rows: dict[str, int]) -> None:

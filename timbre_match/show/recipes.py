@@ -15,7 +15,7 @@ from timbre_match.compare.target import Target
 from timbre_match.measure.profile import Profile
 from timbre_match.measure.recipe import Recipe
 from timbre_match.show import drawing
-from timbre_match.show.drawing import BAND, INK, QUIET, RANGE, STEM, VERDICT_COLOUR, VERDICT_MARKER
+from timbre_match.show.drawing import BAND, INK, QUIET, RANGE, STEM, VERDICT_COLOUR
 from timbre_match.show.marks import VERDICTS
 
 if TYPE_CHECKING:
@@ -27,6 +27,7 @@ Array = NDArray[np.float64]
 
 _DEEPEST_DB: Final = 60.0
 _LEAST_BAND_DB: Final = 0.8
+_SIGN_RISE_DB: Final = 7.0
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
@@ -66,17 +67,18 @@ def recipe_figure(profile: Profile, target: Target | None = None, comparison: Co
     for harmonic in comparison.harmonics if comparison else ():
         compared[harmonic.note].append(harmonic)
     limits = drawing.frequency_limits([freq for drawn in notes for freq in drawn.freq_hz])
-    top_db, bottom_db = _level_limits(notes)
+    targets_db = [
+        _target_db(drawn, wanted.get(drawn.note), compared[drawn.note] if comparison else None) for drawn in notes
+    ]
+    top_db, bottom_db = _level_limits(notes, targets_db)
     with drawing.look():
         figure, panels = drawing.sheet([1.5] * max(len(notes), 1), top_in=1.35, bottom_in=0.75, gap_in=0.16)
-        for panel, drawn in zip(panels, notes, strict=False):
+        for panel, drawn, target_db in zip(panels, notes, targets_db, strict=False):
             if takes > 1:
                 _draw_spread(panel, drawn)
             _draw_recipe(panel, drawn, bottom_db)
-            if drawn.note in wanted:
-                shift_db = _target_shift_db(drawn, wanted[drawn.note], compared[drawn.note]) if comparison else 0.0
-                _draw_notches(panel, drawn, wanted[drawn.note], shift_db)
-            _draw_signs(panel, drawn, compared[drawn.note])
+            _draw_notches(panel, drawn, target_db)
+            _draw_signs(panel, drawn, target_db, compared[drawn.note], bottom_db)
             panel.set_ylim(bottom_db, top_db)
             panel.set_yticks([tick for tick in (0, -20, -40, -60, -80) if bottom_db < tick < top_db])
             panel.tick_params(axis="y", labelsize=10)
@@ -123,28 +125,40 @@ def _target_shift_db(drawn: _DrawnRecipe, wanted: _DrawnRecipe, compared: Sequen
     return float(np.median(known)) if known else math.nan
 
 
-def _draw_notches(panel: "Axes", drawn: _DrawnRecipe, wanted: _DrawnRecipe, shift_db: float) -> None:
-    shared = min(drawn.k.size, wanted.k.size)
-    target_db = wanted.level_db + shift_db
-    shown = np.isfinite(target_db[:shared])
-    if not shown.any():
-        return
-    freq_hz, level_db = drawn.freq_hz[:shared][shown], target_db[:shared][shown]
-    panel.scatter(freq_hz, level_db, marker="_", s=100, color=INK, linewidths=2.2, zorder=3, label="notches")
+def _target_db(
+    drawn: _DrawnRecipe, wanted: _DrawnRecipe | None, compared: Sequence[HarmonicDifference] | None
+) -> Array:
+    """Levels at which the target is drawn, one per harmonic of the note; NaN where there is none."""
+    levels = np.full(drawn.k.size, np.nan)
+    if wanted is not None:
+        shared = min(drawn.k.size, wanted.k.size)
+        shift_db = 0.0 if compared is None else _target_shift_db(drawn, wanted, compared)
+        levels[:shared] = wanted.level_db[:shared] + shift_db
+    return levels
 
 
-def _draw_signs(panel: "Axes", drawn: _DrawnRecipe, compared: Sequence[HarmonicDifference]) -> None:
-    level_of = dict(zip(drawn.k.tolist(), drawn.level_db.tolist(), strict=True))
-    freq_of = dict(zip(drawn.k.tolist(), drawn.freq_hz.tolist(), strict=True))
+def _draw_notches(panel: "Axes", drawn: _DrawnRecipe, target_db: Array) -> None:
+    shown = np.isfinite(target_db)
+    if shown.any():
+        panel.scatter(
+            drawn.freq_hz[shown], target_db[shown], marker="_", s=100, color=INK, linewidths=2.2, zorder=3,
+            label="notches",
+        )  # fmt: skip
+
+
+def _draw_signs(
+    panel: "Axes", drawn: _DrawnRecipe, target_db: Array, compared: Sequence[HarmonicDifference], bottom_db: float
+) -> None:
+    """Put a sign over stem and notch, whichever is higher, unless both lie under the panel's edge."""
+    over_db = np.fmax(drawn.level_db, target_db)
     for verdict in ("stronger", "weaker"):
         chosen = [
-            harmonic
-            for harmonic in compared
-            if harmonic.verdict == verdict and math.isfinite(level_of.get(harmonic.k, math.nan))
+            index
+            for index in (harmonic.k - 1 for harmonic in compared if harmonic.verdict == verdict)
+            if index < drawn.k.size and math.isfinite(drawn.level_db[index]) and over_db[index] > bottom_db
         ]
-        heads = [level_of[h.k] + max(-h.difference_db.value, 0.0) + 7.0 for h in chosen]
         panel.scatter(
-            [freq_of[h.k] for h in chosen], heads, marker=VERDICT_MARKER[verdict], s=46,
+            drawn.freq_hz[chosen], over_db[chosen] + _SIGN_RISE_DB, marker=drawing.verdict_marker(verdict), s=46,
             color=VERDICT_COLOUR[verdict], linewidths=0, zorder=4, label=verdict,
         )  # fmt: skip
 
@@ -199,9 +213,14 @@ def _drawn_recipe(note: str, recipes: Sequence[Recipe]) -> _DrawnRecipe:
     )
 
 
-def _level_limits(notes: Sequence[_DrawnRecipe]) -> tuple[float, float]:
+def _level_limits(notes: Sequence[_DrawnRecipe], targets_db: Sequence[Array]) -> tuple[float, float]:
+    """Top and bottom of all panels: room for a sign over the highest, and no more than 60 dB down from the strongest.
+
+    The target moves only the top: what lies far down in it is no reason to make the stems smaller.
+    """
     levels = np.concatenate([drawn.level_db[np.isfinite(drawn.level_db)] for drawn in notes] or [np.zeros(1)])
     if not levels.size:
         levels = np.zeros(1)
     strongest = float(levels.max())
-    return strongest + 14.0, max(float(levels.min()) - 6.0, strongest - _DEEPEST_DB)
+    highest = float(np.nanmax(np.concatenate([levels, *targets_db])))
+    return highest + 2.0 * _SIGN_RISE_DB, max(float(levels.min()) - 6.0, strongest - _DEEPEST_DB)
