@@ -102,7 +102,7 @@ def root(version: Annotated[bool, typer.Option("--version", help="Print the vers
 def notes(
     recordings: Annotated[
         list[Path],
-        typer.Argument(metavar="RECORDING...", help="Recordings to listen to; a folder stands for those in it."),
+        typer.Argument(metavar="RECORDING", help="Recordings to listen to; a folder stands for those in it."),
     ],
     notes: Notes = None,
     a4: A4 = 440.0,
@@ -127,7 +127,7 @@ def notes(
 def measure(
     takes: Annotated[
         list[Path],
-        typer.Argument(metavar="TAKE...", help="Each a recording, or a folder whose recordings together are one take."),
+        typer.Argument(metavar="TAKE", help="Each a recording, or a folder whose recordings together are one take."),
     ],
     out: Annotated[Path, typer.Option("--out", help="The profile to write (JSON).")],
     instrument: Annotated[str, typer.Option("--instrument", help="The instrument's name.")] = "",
@@ -139,11 +139,11 @@ def measure(
     jobs: Annotated[int, typer.Option("--jobs", min=1, help="Recordings to measure side by side.")] = 1,
 ) -> None:
     """Measure takes and write the instrument's profile."""
-    from timbre_match.keep.files import refuse_to_overwrite, save_profile
+    from timbre_match.keep.files import check_output, save_profile
     from timbre_match.measure.takes import measure_takes
     from timbre_match.show.tables import profile_summary
 
-    refuse_to_overwrite(out, takes, kind="profile")
+    check_output(out, takes, kind="profile")
     measured = measure_takes(
         takes,
         _listening(notes, a4, channel),
@@ -161,16 +161,16 @@ def measure(
 
 @app.command()
 def target(
-    profiles: Annotated[list[Path], typer.Argument(metavar="PROFILE...", help="Profiles to blend.")],
+    profiles: Annotated[list[Path], typer.Argument(metavar="PROFILE", help="Profiles to blend.")],
     name: Annotated[str, typer.Option("--name", help="The target's name.")],
     out: Annotated[Path, typer.Option("--out", help="The target to write (JSON).")],
 ) -> None:
     """Blend profiles into a target, with a tolerance from how far they differ among themselves."""
     from timbre_match.compare.comparison import tolerance_db
     from timbre_match.compare.target import blend
-    from timbre_match.keep.files import load_profile, refuse_to_overwrite, save_target
+    from timbre_match.keep.files import check_output, load_profile, save_target
 
-    refuse_to_overwrite(out, profiles, kind="target")
+    check_output(out, profiles, kind="target")
     blended = blend(name, tuple(load_profile(path) for path in profiles))
     tolerance = tolerance_db(blended)
     save_target(blended, out)
@@ -201,12 +201,13 @@ def compare(
 ) -> None:
     """Compare an instrument with a target: verdicts, body curve, regions, and what to try."""
     from timbre_match.keep.files import (
+        check_output,
         comparison_to_json,
         load_profile,
         load_target,
-        refuse_to_overwrite,
         save_comparison,
     )
+    from timbre_match.keep.writing import check_folder_place
     from timbre_match.pipeline import compare_and_advise
 
     if (control_now is None) != (control_then is None):
@@ -215,7 +216,9 @@ def compare(
         )
     if out is not None:
         controls = [path for path in (control_now, control_then) if path is not None]
-        refuse_to_overwrite(out, [profile, target, *controls], kind="comparison")
+        check_output(out, [profile, target, *controls], kind="comparison")
+    if figures is not None:
+        check_folder_place(figures)
     measured, wanted = load_profile(profile), load_target(target)
     now, then = (None if path is None else load_profile(path) for path in (control_now, control_then))
     with _working("comparing"):
@@ -252,9 +255,9 @@ def export(
 ) -> None:
     """Write a profile for other programs."""
     from timbre_match.keep import export as exporting
-    from timbre_match.keep.files import load_profile, refuse_to_overwrite
+    from timbre_match.keep.files import check_output, load_profile
 
-    refuse_to_overwrite(out, [profile], kind="profile" if kind is ExportFormat.JSON else None)
+    check_output(out, [profile], kind="profile" if kind is ExportFormat.JSON else None)
     write = {
         ExportFormat.CSV: exporting.export_csv,
         ExportFormat.JSON: exporting.export_json,

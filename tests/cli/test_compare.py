@@ -50,6 +50,18 @@ def test_compare_for_human_eyes(run: CommandLine, profile: Path, tmp_path: Path)
     assert_figures(tmp_path / "figures")
 
 
+def test_places_that_cannot_be_written_are_named_before_the_work(
+    run: CommandLine, profile: Path, tmp_path: Path
+) -> None:
+    # Had the profile been read first, the message would be about that.
+    (tmp_path / "file").touch()
+    for option, place in (("--out", tmp_path / "missing" / "c.json"), ("--figures", tmp_path / "file")):
+        ended = run("compare", tmp_path / "none.json", "--target", profile, option, place)
+        ended.assert_plain_error(str(place), "what to do")
+        assert "none.json" not in ended.err
+    assert [path.name for path in tmp_path.iterdir()] == ["file"]
+
+
 def test_nothing_in_common(run: CommandLine, profile: Path, tmp_path: Path) -> None:
     other = tmp_path / "other.json"
     assert run("measure", write(tmp_path / "c6.wav", short_note(1046.5)), "--out", other).code == 0

@@ -3,12 +3,13 @@
 import errno
 import os
 import stat
+from collections.abc import Callable
 from pathlib import Path
 
 import pytest
 
 from timbre_match.errors import OutputError
-from timbre_match.keep.writing import write_folder_whole, write_whole
+from timbre_match.keep.writing import check_file_place, check_folder_place, make_folder, write_folder_whole, write_whole
 
 
 def names(folder: Path) -> list[str]:
@@ -58,6 +59,9 @@ def test_impossible_place_is_refused_in_plain_words(tmp_path: Path, name: str, m
     with pytest.raises(OutputError, match=message) as caught:
         write_whole(tmp_path / name, b"data")
     assert caught.value.where == str(tmp_path / name)
+    with pytest.raises(OutputError, match=message) as early:
+        check_file_place(tmp_path / name)
+    assert str(early.value) == str(caught.value)
     assert caught.value.remedy
     assert names(tmp_path) == ["file"]
 
@@ -125,3 +129,18 @@ def test_folder_with_files_is_left_alone(tmp_path: Path) -> None:
     with pytest.raises(OutputError, match="this is a file"):
         write_folder_whole(tmp_path / "diary.txt", {"A4.wav": b"a"})
     assert names(tmp_path) == ["diary.txt"]
+
+
+def test_a_place_that_can_be_written_is_left_as_it_is(tmp_path: Path) -> None:
+    check_file_place(tmp_path / "new.json")
+    check_folder_place(tmp_path / "new" / "newer")
+    assert names(tmp_path) == []
+
+
+@pytest.mark.parametrize("make", [check_folder_place, make_folder])
+def test_a_file_in_the_place_of_a_folder_is_named(tmp_path: Path, make: Callable[[Path], None]) -> None:
+    (tmp_path / "file").write_bytes(b"kept")
+    with pytest.raises(OutputError, match="no folder can be made here") as caught:
+        make(tmp_path / "file")
+    assert caught.value.remedy
+    assert (tmp_path / "file").read_bytes() == b"kept"

@@ -28,17 +28,18 @@ from timbre_match.compare.target import Target, as_target
 from timbre_match.errors import OutputError
 from timbre_match.keep import layout
 from timbre_match.keep.checking import check, first_fault, read_saved, refuse_format
-from timbre_match.keep.writing import write_whole
+from timbre_match.keep.writing import check_file_place, write_whole
 from timbre_match.measure.profile import Profile, Source, Take
 from timbre_match.measure.recipe import Recipe
 
 Json = dict[str, object]
 
 
-def refuse_to_overwrite(path: str | Path, inputs: Iterable[str | Path], *, kind: str | None) -> None:
-    """Refuse to write over an input, or over a file that is not one of `kind` ("profile", "target", "comparison").
+def check_output(path: str | Path, inputs: Iterable[str | Path], *, kind: str | None) -> None:
+    """Refuse a place that cannot be written, an input, or a file that is not one of `kind`.
 
-    With `kind` None any file but an input may be replaced.
+    A `kind` is "profile", "target" or "comparison"; with None any file but an input may be replaced, and `path` may
+    be a folder.
 
     Raises
     ------
@@ -46,6 +47,8 @@ def refuse_to_overwrite(path: str | Path, inputs: Iterable[str | Path], *, kind:
         Before anything is written.
     """
     path = Path(path)
+    if kind is not None:
+        check_file_place(path)
     if not path.is_file():
         return
     for source in inputs:

@@ -32,14 +32,7 @@ def write_whole(path: str | Path, data: bytes) -> None:
     """
     path = Path(path)
     with _plain_errors(path):
-        place = Path(os.path.realpath(path))
-        if place.is_dir():
-            raise OutputError(
-                "this is a folder, so no file can be written here", where=str(path), remedy="add a file name to it"
-            )
-        if place.exists() and not place.is_file():
-            # Moving a file onto a device's name would replace the device.
-            raise OutputError("this is a device or a pipe, not a file", where=str(path), remedy="name a file instead")
+        place = _place_of_file(path)
         temporary = _temporary_beside(place)
         try:
             _write_synced(temporary, data)
@@ -49,6 +42,35 @@ def write_whole(path: str | Path, data: bytes) -> None:
             _sync_folder(place.parent)
         finally:
             temporary.unlink(missing_ok=True)
+
+
+def check_file_place(path: str | Path) -> None:
+    """Refuse a place where no file can be written, before the work for it is done.
+
+    Raises
+    ------
+    OutputError
+        If the folder is missing, or `path` is a folder or a device.
+    """
+    path = Path(path)
+    with _plain_errors(path):
+        # The dot asks for a folder: a file in its place is an error of its own.
+        os.stat(os.path.join(_place_of_file(path).parent, "."))  # noqa: PTH116, PTH118 (a path drops the dot)
+
+
+def check_folder_place(folder: str | Path) -> None:
+    """Refuse a place where no folder can be made because a file stands there.
+
+    Raises
+    ------
+    OutputError
+    """
+    folder = Path(folder)
+    with _plain_errors(folder):
+        if folder.exists() and not folder.is_dir():
+            raise OutputError(
+                "this is a file, so no folder can be made here", where=str(folder), remedy="name another folder"
+            )
 
 
 def write_folder_whole(folder: str | Path, files: Mapping[str, bytes]) -> None:
@@ -65,8 +87,7 @@ def write_folder_whole(folder: str | Path, files: Mapping[str, bytes]) -> None:
     folder = Path(folder)
     with _plain_errors(folder):
         place = Path(os.path.realpath(folder))
-        if place.exists() and not place.is_dir():
-            raise OutputError("this is a file, so no folder can be written here", where=str(folder))
+        check_folder_place(folder)
         if place.exists() and any(place.iterdir()):
             raise OutputError(
                 "this folder already holds files",
@@ -96,10 +117,21 @@ def make_folder(folder: str | Path) -> None:
         If it cannot be made, or a file stands in its place.
     """
     folder = Path(folder)
+    check_folder_place(folder)
     with _plain_errors(folder):
-        if folder.exists() and not folder.is_dir():
-            raise OutputError("this is a file, so no folder can be made here", where=str(folder))
         folder.mkdir(parents=True, exist_ok=True)
+
+
+def _place_of_file(path: Path) -> Path:
+    place = Path(os.path.realpath(path))
+    if place.is_dir():
+        raise OutputError(
+            "this is a folder, so no file can be written here", where=str(path), remedy="add a file name to it"
+        )
+    if place.exists() and not place.is_file():
+        # Moving a file onto a device's name would replace the device.
+        raise OutputError("this is a device or a pipe, not a file", where=str(path), remedy="name a file instead")
+    return place
 
 
 def _temporary_beside(place: Path) -> Path:
