@@ -22,7 +22,7 @@ from scipy import optimize, stats
 
 from timbre_match.compare import colour, compare
 from timbre_match.compare.body_curve import reference_level
-from timbre_match.compare.comparison import Comparison
+from timbre_match.compare.comparison import Comparison, loudness_on
 from timbre_match.compare.playing import gather
 from timbre_match.compare.target import as_target
 from timbre_match.measure.profile import Profile, Source, Take
@@ -178,8 +178,9 @@ def outcome(rng: np.random.Generator, truth: Truth, takes: int, notes: int) -> O
     comparison = compare(instrument, target, margin_db=MARGIN_DB)
     seconds = time.process_time() - start
     hz = np.array([point.freq_hz for point in comparison.body_curve])
+    evidence = gather(instrument, as_target(target))
     curve = truth.curve(hz)
-    constant = float(reference_level(curve[None], hz)[0])
+    constant = float(reference_level(curve[None], loudness_on(hz, evidence))[0])
     curve = curve - constant
     low, high, band_low, band_high = np.array(
         [
@@ -196,7 +197,6 @@ def outcome(rng: np.random.Generator, truth: Truth, takes: int, notes: int) -> O
     alike = verdicts == "alike"
     lone_value, lone_half = unpooled(instrument, target)
     found, centre, size = _found(comparison, truth)
-    evidence = gather(instrument, as_target(target))
     true_bands = colour.all_bands(evidence.note_index, evidence.freq_hz, evidence.target_db, d[None, :])
     true_distance = float(colour.colour_distance(true_bands)[0])
     distance = comparison.colour_distance.distance_db

@@ -4,12 +4,15 @@ import math
 from pathlib import Path
 from typing import Any
 
+import numpy as np
 import pytest
 
 from tests.cli.outputs import assert_comparison_keys, assert_figures, content
 from tests.command_line import Ended, run_process
-from timbre_match.demo.workshop import NOTES, WREN_IN_THE_WHITE
+from timbre_match.demo.workshop import NOTES, STAGES, WREN_IN_THE_WHITE, Stage, true_difference_db
 from timbre_match.keep.files import load_comparison, load_profile
+
+_BRIDGE_HILL_HZ = 2450.0
 
 
 @pytest.fixture(scope="module")
@@ -32,6 +35,22 @@ def test_demo_writes_everything(demo: tuple[Ended, Path]) -> None:
         ] * 3
         assert "Colour distance" in (place / "comparison.txt").read_text(encoding="utf-8")
         assert (place / "profile.csv").stat().st_size > 0
+
+
+@pytest.mark.parametrize("stage", STAGES[1:], ids=lambda stage: stage.file_stem)
+def test_demo_holds_the_truth_of_each_stage(demo: tuple[Ended, Path], stage: Stage) -> None:
+    comparison, _ = load_comparison(demo[1] / stage.file_stem / "comparison.json")
+    hz = np.array([point.freq_hz for point in comparison.body_curve])
+    low = np.array([point.simultaneous_low_db for point in comparison.body_curve])
+    high = np.array([point.simultaneous_high_db for point in comparison.body_curve])
+    truth = true_difference_db(stage, hz)
+    assert np.all((low <= truth) & (truth <= high))
+    for region in comparison.regions:
+        inside = truth[(hz >= region.low_hz) & (hz <= region.high_hz)]
+        largest = np.max(inside) if region.verdict == "stronger" else np.min(inside)
+        assert region.difference_db.low <= largest <= region.difference_db.high
+        assert (largest > 0) == (region.verdict == "stronger")
+    assert any(region.low_hz < _BRIDGE_HILL_HZ < region.high_hz for region in comparison.regions)
 
 
 @pytest.mark.parametrize("change", WREN_IN_THE_WHITE.changes, ids=lambda change: f"{change.gain_db:+g} dB")

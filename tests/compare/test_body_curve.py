@@ -15,6 +15,7 @@ from timbre_match.compare.body_curve import (
 )
 
 GRID = np.geomspace(200.0, 8000.0, 128)
+EVEN = np.ones(128)
 
 
 @given(st.lists(st.floats(-3.0, 3.0), min_size=1, max_size=30))
@@ -40,18 +41,37 @@ def test_columns_of_curve_and_wobble_have_unit_variance() -> None:
 @given(st.floats(-20, 20), st.integers(0, 1000))
 def test_reference_follows_a_constant(constant: float, seed: int) -> None:
     curve = np.random.default_rng(seed).normal(0, 2, GRID.size)
-    plain, moved = reference_level(np.array([curve, curve + constant]), GRID)
+    plain, moved = reference_level(np.array([curve, curve + constant]), EVEN)
     assert moved == pytest.approx(plain + constant, abs=1e-6)
+
+
+@given(st.integers(0, 1000))
+def test_reference_is_where_the_curves_values_are_densest(seed: int) -> None:
+    # A mode of the kernel density that scipy estimates from the same values with the same kernel.
+    curve = np.random.default_rng(seed).normal(0, 2, GRID.size)
+    weight = np.random.default_rng(seed + 1).uniform(0.2, 1.0, GRID.size)
+    found = reference_level(curve[None], weight)[0]
+    spread = float(np.sqrt(np.cov(curve, aweights=weight)))
+    density = stats.gaussian_kde(curve, bw_method=1.5 / spread, weights=weight)
+    assert density(found)[0] >= max(density(found - 0.1)[0], density(found + 0.1)[0])
 
 
 @pytest.mark.parametrize("centre_hz", [400.0, 1000.0, 2500.0])
 def test_a_narrow_change_does_not_move_the_rest(centre_hz: float) -> None:
     curve = np.where(np.abs(np.log2(GRID / centre_hz)) < 0.35, -5.0, 0.0)
-    assert reference_level(curve[None], GRID) == pytest.approx([0.0], abs=1e-12)
+    assert reference_level(curve[None], EVEN) == pytest.approx([0.0], abs=0.01)
+
+
+def test_neither_does_a_broad_one_nor_what_is_scarcely_heard() -> None:
+    broad = np.where(np.arange(GRID.size) >= 0.6 * GRID.size, -4.0, 0.0)
+    assert reference_level(broad[None], EVEN) == pytest.approx([0.0], abs=0.15)
+    most = np.where(np.arange(GRID.size) >= 0.3 * GRID.size, -4.0, 0.0)
+    faint = np.where(most < 0, 0.1, 1.0)
+    assert reference_level(most[None], faint) == pytest.approx([0.0], abs=0.1)
 
 
 def test_one_point_is_its_own_reference() -> None:
-    assert reference_level(np.array([[2.0]]), np.array([440.0])) == pytest.approx([2.0])
+    assert reference_level(np.array([[2.0]]), np.ones(1)) == pytest.approx([2.0])
 
 
 def test_grid_spans_the_harmonics() -> None:

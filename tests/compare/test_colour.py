@@ -10,6 +10,8 @@ from timbre_match.compare.colour import (
     closeness,
     colour_distance,
     distance_between_takes,
+    erb_number,
+    loudness_over_frequency,
 )
 
 FREQ = np.linspace(220.0, 6600.0, 30)
@@ -74,3 +76,23 @@ def test_distance_between_takes_is_the_distance_of_their_difference() -> None:
     expected = colour_distance(all_bands(note, FREQ, LEVEL, gap[None]))[0]
     assert distance_between_takes(note, FREQ, LEVEL, takes) == pytest.approx(expected)
     assert distance_between_takes(note, FREQ, LEVEL, takes[:1]) is None
+
+
+def test_loudness_over_frequency_is_that_of_the_bands() -> None:
+    # Stevens (1957): loudness goes as power^0.3; Glasberg & Moore (1990): bands are one ERB wide.
+    note = np.zeros(30, dtype=np.int64)
+    grid = np.geomspace(220.0, 6600.0, 400)
+    plain = loudness_over_frequency(note, FREQ, np.zeros(30), grid)
+    assert np.sum(plain) == pytest.approx(1.0)
+    louder = loudness_over_frequency(note, FREQ, np.where(np.arange(30) == 3, 10.0, 0.0), grid)
+    same_band = np.floor(erb_number(grid)) == np.floor(erb_number(FREQ[3]))
+    gain = np.sum(louder[same_band]) / np.sum(louder[~same_band])
+    assert gain == pytest.approx(10.0**0.3 * np.sum(plain[same_band]) / np.sum(plain[~same_band]))
+
+
+def test_notes_count_alike_in_the_loudness() -> None:
+    grid = np.geomspace(220.0, 6600.0, 400)
+    two = np.repeat([0, 1], 30)
+    freq, level = np.concatenate([FREQ, FREQ]), np.concatenate([LEVEL, LEVEL - 30.0])
+    alone = loudness_over_frequency(two[:30], FREQ, LEVEL, grid)
+    assert loudness_over_frequency(two, freq, level, grid) == pytest.approx(alone)

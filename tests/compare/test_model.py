@@ -44,7 +44,7 @@ def parts(one: model.Row, theta: Array) -> tuple[Array, Array, Array]:
     same_note = (one.note[:, None] == one.note[None, :]).astype(float)
     tilt = np.outer(one.octave, one.octave)
     smooth, wobble = (basis(one.octave, -2.0, 2.0) for basis in (smooth_columns, wobble_columns))
-    curve = 9.0 * tilt + variance[model.SMOOTH] * smooth @ smooth.T
+    curve = 0.7**2 * tilt + variance[model.SMOOTH] * smooth @ smooth.T
     own = variance[model.OWN] * np.eye(one.note.size)
     rest = (
         1e4 * same_note
@@ -88,10 +88,9 @@ def test_predictions_and_their_variances_are_those_of_conditional_normals() -> N
     mean = gain @ one.value_db
     covariance = curve + own - gain @ (curve + own)
     order = np.argsort(one.octave)
-    grid = 1000.0 * 2.0 ** one.octave[order]
     smooth = smooth_columns(one.octave[order], -2.0, 2.0)
     found = estimate(
-        [solved(one)], one, grid, one.octave[order], smooth, np.random.default_rng(0),
+        [solved(one)], one, one.octave[order], smooth, np.ones(order.size), np.random.default_rng(0),
         harmonics=one.octave.size, draws_per_solution=8000,
     )  # fmt: skip
     # The reference level of each draw is its own, so differences of two places are what does not hang on it.

@@ -33,7 +33,7 @@ def estimated(one: model.Row) -> Estimates:
     solutions = sampling.sample(one, PRIOR, np.random.default_rng(0))
     grid = OCTAVE[:30]
     return estimate(
-        solutions, one, 1000 * 2.0**grid, grid, smooth_columns(grid, -2.0, 2.0), np.random.default_rng(1),
+        solutions, one, grid, smooth_columns(grid, -2.0, 2.0), np.ones(grid.size), np.random.default_rng(1),
         harmonics=OCTAVE.size,
     )  # fmt: skip
 

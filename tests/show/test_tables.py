@@ -136,8 +136,8 @@ def test_the_comparison_begins_with_the_verdict_in_words() -> None:
     text = flowing(comparison_summary(compared))
     words = (
         "Colour distance 3.4 dB (2.9 to 3.9) between the averages of the takes; single takes of yours lie 0.8 dB "
-        "apart. All differences are relative: zero is the level that the middle half of the values over the frequency "
-        "range agrees on, so a broad change moves it."
+        "apart. All differences are relative: zero is the level on which most of what is heard agrees. Where much of "
+        "the range differs, what the zero is becomes unsure, and the intervals say so."
     )
     assert text.index(words) < text.index("▼")
     assert "Harmonics that differ, the largest first (each leans on its neighbours in frequency)" in text

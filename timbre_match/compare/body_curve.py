@@ -8,9 +8,10 @@ in peaks a third of an octave to an octave wide. The bumps that make the curve h
 (:mod:`timbre_match.compare.sampling`), so that a lone peak is not shrunk to the size of the flat rest.
 
 **Reference level.** Each note's gain is free, so the curve is known up to a constant only. The constant is chosen so
-that the middle half of the curve's values, counted over the ear's scale of frequency (equal steps of ERB number,
-Glasberg & Moore 1990), has mean zero: "no difference" is what most of the range does, and a change confined to less
-than a quarter of the range does not move the rest.
+that zero is where most of what is heard lies: the densest of the curve's values, each counting for the loudness around
+its frequency, is the mean of those within some 1.5 dB of it. A change of 4 dB or more hardly moves that level, be it as
+broad as two fifths of the loudness; what is scarcely heard does not move it either. A mean, or the middle of the sorted
+values, would be drawn towards each broad change, and noise in the curve would draw it further.
 """
 
 from dataclasses import dataclass
@@ -28,6 +29,8 @@ CORRELATION_OCTAVES = 0.2
 
 _DEGREE = 3
 _SCALE_POINTS = 400
+_REFERENCE_WIDTH_DB = 1.5  # wider than the noise of a curve, narrower than the changes that makers work for
+_MEAN_SHIFTS = 50
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -95,20 +98,25 @@ def frequency_grid(freq_hz: Array) -> Array:
     return np.asarray(np.geomspace(low, high, points))
 
 
-def reference_level(curve_db: Array, freq_hz: Array) -> Array:
-    """Mean of the middle half of each curve's values, counted on the ERB scale, shape (n_curves,).
+def reference_level(curve_db: Array, loudness: Array) -> Array:
+    """Where most of each curve lies, shape (n_curves,): the mode of its values, found by mean shift from the median.
+
+    Mean shift (Fukunaga & Hostetler 1975, The estimation of the gradient of a density function, *IEEE Trans. Inf.
+    Theory* 21) climbs to the densest value of a kernel estimate; here the kernel is normal, 1.5 dB wide.
 
     Parameters
     ----------
     curve_db : array, shape (n_curves, n_grid)
-    freq_hz : array, shape (n_grid,)
+    loudness : array, shape (n_grid,)
+        What each grid point counts for (:func:`timbre_match.compare.colour.loudness_over_frequency`).
     """
-    share = np.gradient(21.4 * np.log10(4.37e-3 * freq_hz + 1.0)) if freq_hz.size > 1 else np.ones(1)
     order = np.argsort(curve_db, axis=1, kind="stable")
-    upper = np.cumsum((share / np.sum(share))[order], axis=1)
-    lower = np.concatenate([np.zeros((upper.shape[0], 1)), upper[:, :-1]], axis=1)
-    weights = np.clip(np.minimum(upper, 0.75) - np.maximum(lower, 0.25), 0.0, None)
-    return np.asarray(np.sum(weights * np.take_along_axis(curve_db, order, axis=1), axis=1) / np.sum(weights, axis=1))
+    half = np.argmax(np.cumsum(loudness[order], axis=1) >= 0.5 * np.sum(loudness), axis=1)
+    level = np.take_along_axis(curve_db, np.take_along_axis(order, half[:, None], axis=1), axis=1)
+    for _ in range(_MEAN_SHIFTS):
+        weight = loudness * np.exp(-0.5 * ((curve_db - level) / _REFERENCE_WIDTH_DB) ** 2)
+        level = np.sum(weight * curve_db, axis=1, keepdims=True) / np.sum(weight, axis=1, keepdims=True)
+    return np.asarray(level[:, 0])
 
 
 def simultaneous_factor(draws_db: Array, centre_db: Array, sd_db: Array, level: float = 0.95) -> float:

@@ -103,6 +103,34 @@ def all_bands(note_index: IntArray, freq_hz: Array, target_db: Array, difference
     ]
 
 
+def loudness_over_frequency(note_index: IntArray, freq_hz: Array, level_db: Array, grid_hz: Array) -> Array:
+    """Share of the loudness that each point of a frequency grid stands for, all notes counting alike.
+
+    Parameters
+    ----------
+    note_index, freq_hz, level_db : arrays, shape (n,)
+    grid_hz : array, shape (g,)
+        Ascending.
+
+    Returns
+    -------
+    array, shape (g,)
+        Sums to one. The loudness of a band one ERB wide is spread evenly over the band.
+    """
+    if grid_hz.size == 1:
+        return np.ones(1)
+    band = np.floor(erb_number(freq_hz)).astype(np.int64)
+    total = np.zeros(int(np.max(band)) + 1)
+    for note in np.unique(note_index):
+        here = note_index == note
+        power = np.bincount(band[here], weights=db_to_power(level_db[here]), minlength=total.size)
+        loudness = power**LOUDNESS_EXPONENT
+        total += loudness / np.sum(loudness)
+    place = erb_number(grid_hz)
+    share = total[np.clip(np.floor(place).astype(np.int64), 0, total.size - 1)] * np.gradient(place)
+    return np.asarray(share / np.sum(share))
+
+
 def colour_distance(bands: list[BandDifferences]) -> Array:
     """Root-mean-square difference in dB over all audible bands of all notes, shape (n_draws,)."""
     squares = np.concatenate([note.difference_db**2 for note in bands], axis=1)

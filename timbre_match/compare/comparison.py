@@ -92,11 +92,10 @@ def compare(
     evidence = gather(profile, whole, control)
     grid_hz, estimates = _estimated(evidence, generator)
     curve = _curve(grid_hz, estimates)
-    bands = colour.all_bands(evidence.note_index, evidence.freq_hz, evidence.target_db, estimates.harmonic_draws_db)
+    distance, close = _distance_and_closeness(evidence, estimates, margin_db)
     own = colour.distance_between_takes(
         evidence.note_index, evidence.freq_hz, evidence.instrument_db, evidence.instrument_takes_db
     )
-    distance = _interval(colour.colour_distance(bands))
     harmonics = _harmonics(evidence, estimates, margin_db)
     return Comparison(
         instrument=profile.instrument,
@@ -105,7 +104,7 @@ def compare(
         target=whole.name,
         margin_db=margin_db,
         colour_distance=ColourDistance(distance_db=distance, own_db=own),
-        closeness_percent=_interval(colour.closeness(bands, margin_db)),
+        closeness_percent=close,
         repeatability=Repeatability(
             source="both" if evidence.repeats else "prior",
             takes=len(profile.takes),
@@ -130,9 +129,14 @@ def tolerance_db(target: Target) -> float | None:
         others = target.members[:place] + target.members[place + 1 :]
         evidence = gather(member, Target(name=target.name, members=others))
         estimates = _estimated(evidence, np.random.default_rng(_SEED))[1]
-        bands = colour.all_bands(evidence.note_index, evidence.freq_hz, evidence.target_db, estimates.harmonic_draws_db)
-        found.append(_interval(colour.colour_distance(bands)).value)
+        found.append(_distance_and_closeness(evidence, estimates, DEFAULT_MARGIN_DB)[0].value)
     return float(np.sqrt(np.mean(np.square(found))))
+
+
+def loudness_on(grid_hz: Array, evidence: Evidence) -> Array:
+    """What each point of a grid counts for in the reference level: the loudness of the sides' mean, shape (g,)."""
+    level = 0.5 * (evidence.instrument_db + evidence.target_db)
+    return colour.loudness_over_frequency(evidence.note_index, evidence.freq_hz, level, grid_hz)
 
 
 def _estimated(evidence: Evidence, rng: np.random.Generator) -> tuple[Array, Estimates]:
@@ -147,7 +151,8 @@ def _estimated(evidence: Evidence, rng: np.random.Generator) -> tuple[Array, Est
     solutions = sampling.sample(row, prior, rng)
     grid_hz = body_curve.frequency_grid(evidence.freq_hz)
     octave, smooth = evidence.curve_columns(grid_hz)
-    found = estimate(solutions, row, grid_hz, octave, smooth, rng, harmonics=evidence.freq_hz.size)
+    loudness = loudness_on(grid_hz, evidence)
+    found = estimate(solutions, row, octave, smooth, loudness, rng, harmonics=evidence.freq_hz.size)
     return grid_hz, replace(
         found,
         harmonic_db=sign * found.harmonic_db,
@@ -157,9 +162,25 @@ def _estimated(evidence: Evidence, rng: np.random.Generator) -> tuple[Array, Est
     )
 
 
-def _interval(draws: Array) -> Interval:
+def _distance_and_closeness(evidence: Evidence, estimates: Estimates, margin_db: float) -> tuple[Interval, Interval]:
+    """Colour distance in dB and closeness in per cent, those of the mean differences, with intervals from the draws.
+
+    A draw differs from the mean by noise, and noise adds to a distance and takes from closeness. What it does so on
+    average is taken off (bias correction as in the bootstrap: Efron & Tibshirani 1993, *An Introduction to the
+    Bootstrap*, chapter 10), for the distance from its square, which is where noise adds up.
+    """
+    differences = np.vstack([estimates.harmonic_db, estimates.harmonic_draws_db])
+    bands = colour.all_bands(evidence.note_index, evidence.freq_hz, evidence.target_db, differences)
+    square, share = colour.colour_distance(bands) ** 2, colour.closeness(bands, margin_db)
+    square, share = (np.append(one[0], one[1:] + one[0] - np.mean(one[1:])) for one in (square, share))
+    distance, share = np.sqrt(np.maximum(square, 0.0)), np.clip(share, 0.0, 100.0)
+    return _interval(distance[1:], distance[0]), _interval(share[1:], share[0])
+
+
+def _interval(draws: Array, value: float | None = None) -> Interval:
+    """95 % of the draws about their median, or about another `value`."""
     low, middle, high = np.quantile(draws, [0.025, 0.5, 0.975])
-    return Interval(value=float(middle), low=float(low), high=float(high))
+    return Interval(value=float(middle if value is None else value), low=float(low), high=float(high))
 
 
 def _normal_interval(value: float, sd: float) -> Interval:

@@ -44,9 +44,9 @@ class Estimates:
 def estimate(
     solutions: list[Solution],
     row: Row,
-    grid_hz: Array,
     grid_octave: Array,
     grid_smooth: Array,
+    grid_loudness: Array,
     rng: np.random.Generator,
     *,
     harmonics: int,
@@ -60,10 +60,12 @@ def estimate(
         From :func:`timbre_match.compare.sampling.sample`.
     row : Row
         The differences that were fitted.
-    grid_hz, grid_octave : arrays, shape (g,)
-        The grid's frequencies, and their log2 on the origin of `row.octave`.
+    grid_octave : array, shape (g,)
+        log2 of the grid's frequencies, on the origin of `row.octave`.
     grid_smooth : array, shape (g, n_smooth)
         Columns of the curve on the grid.
+    grid_loudness : array, shape (g,)
+        What each point counts for in the reference level.
     rng : numpy Generator
     harmonics : int
         How many of the row's first values are the instrument's; a control's may follow.
@@ -75,7 +77,7 @@ def estimate(
     for solution in solutions:
         shared = _shared_draws(solution, rng, draws_per_solution)
         curve = shared[:, curve_part] @ grid.T
-        level = reference_level(curve, grid_hz)[:, None]
+        level = reference_level(curve, grid_loudness)[:, None]
         curve_draws.append(curve - level)
         draws.append(_harmonic_draws(solution, row, shared, rng)[:, :harmonics] - level)
     harmonic, curve = np.concatenate(draws), np.concatenate(curve_draws)

@@ -34,7 +34,7 @@ FIXED = -1
 """Group of a column whose variance is no parameter."""
 
 _GAIN_SD_DB = 100.0
-_SLOPE_SD_DB = 3.0
+_SLOPE_DB = 0.7
 _STEP = 1e-3
 
 
@@ -155,7 +155,7 @@ def with_curve(columns: Columns, octave: Array, smooth: Array) -> Columns:
     return Columns(
         matrix=np.column_stack([columns.matrix, octave, smooth]),
         group=np.concatenate([columns.group, [FIXED], np.full(smooth.shape[1], SMOOTH)]),
-        unit=np.concatenate([columns.unit, [_SLOPE_SD_DB**2], np.ones(smooth.shape[1])]),
+        unit=np.concatenate([columns.unit, [_SLOPE_DB**2], np.ones(smooth.shape[1])]),
         curve_first=first,
         curve_last=first + 1 + smooth.shape[1],
     )

@@ -1,7 +1,7 @@
 r"""Draws from the model: variances, heavy tails and effects together.
 
-Scatter, own deviations and the bumps of the body curve have heavy tails: each is normal with a precision of its own
-that is gamma distributed about the common one, which makes it Student t (West 1987, On scale mixtures of normal
+Scatter, own deviations, and the slope and bumps of the body curve have heavy tails: each is normal with a precision of
+its own that is gamma distributed about the common one, which makes it Student t (West 1987, On scale mixtures of normal
 distributions, *Biometrika* 74). So one odd level does not bend the curve, and one strong bump does not have to share
 its size with a flat rest: a curve of bumps whose heights are heavy-tailed is smooth where nothing happens and free
 where something does (Wallin & Bolin 2015, Geostatistical modelling using non-Gaussian Matern fields, *Scandinavian
@@ -100,16 +100,17 @@ def _given_effects(
     scatter_square = scatter**2 / row.scatter_variance
     columns = row.shared
     column_square = shared**2 / columns.unit
-    bump = columns.group == model.SMOOTH
-    bump_weights = np.ones(shared.size)
-    bump_weights[bump] = _precisions(column_square[bump] / variance[model.SMOOTH], CURVE_TAIL_DF, rng)
+    curve = (columns.group == model.SMOOTH) | (columns.group == model.FIXED)
+    common = np.where(columns.group == model.SMOOTH, variance[model.SMOOTH], 1.0)
+    curve_weights = np.ones(shared.size)
+    curve_weights[curve] = _precisions((column_square / common)[curve], CURVE_TAIL_DF, rng)
     drawn = Weights(
         own=_precisions(own_square / variance[model.OWN], OWN_TAIL_DF, rng),
         scatter=_precisions(scatter_square / variance[model.SCATTER], row.scatter_df, rng),
-        columns=bump_weights,
+        columns=curve_weights,
     )
     count = np.array([np.count_nonzero(columns.group == place) for place in range(6)], dtype=np.float64)
-    square = np.array([np.sum((column_square * bump_weights)[columns.group == place]) for place in range(6)])
+    square = np.array([np.sum((column_square * curve_weights)[columns.group == place]) for place in range(6)])
     count[model.OWN], square[model.OWN] = left.size, np.sum(own_square * drawn.own)
     count[model.SCATTER], square[model.SCATTER] = left.size, np.sum(scatter_square * drawn.scatter)
     count[model.NOTE_TILT], square[model.NOTE_TILT] = note.shape[0], np.sum(note[:, 1] ** 2 / row.note_playing)

@@ -28,8 +28,8 @@ from timbre_match.show.marks import SIGN, VERDICTS, plain, signed_interval
 _COLOUR: Final[dict[Verdict, str]] = {"stronger": "yellow", "weaker": "cyan", "alike": "green", "unsettled": "default"}
 _LISTED_HARMONICS: Final = 12
 _RELATIVE: Final = (
-    "All differences are relative: zero is the level that the middle half of the values over the frequency range "
-    "agrees on, so a broad change moves it."
+    "All differences are relative: zero is the level on which most of what is heard agrees. Where much of the range "
+    "differs, what the zero is becomes unsure, and the intervals say so."
 )
 _SOURCE_WORDS: Final = {
     "takes": "the takes themselves",
