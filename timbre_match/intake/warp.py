@@ -16,6 +16,24 @@ from numpy.typing import NDArray
 from scipy.interpolate import CubicSpline, PchipInterpolator, PPoly
 
 _SPLINE_ORDER: Final = 5
+_SPLINE_PIECES: Final = (
+    np.array(
+        [
+            [1.0, 26.0, 66.0, 26.0, 1.0, 0.0],
+            [-5.0, -50.0, 0.0, 50.0, 5.0, 0.0],
+            [10.0, 20.0, -60.0, 20.0, 10.0, 0.0],
+            [-10.0, 20.0, 0.0, -20.0, 10.0, 0.0],
+            [5.0, -20.0, 30.0, -20.0, 5.0, 0.0],
+            [-1.0, 5.0, -10.0, 10.0, -5.0, 1.0],
+        ],
+        dtype=np.float32,
+    )
+    / 120.0
+)
+"""From the six coefficients around a place (columns) to the polynomial in the fraction of a step that a quintic
+B-spline is there (rows, the constant first)."""
+_CHUNK: Final = 8192
+"""Places that are read at a time: their working memory stays in the processor's cache."""
 _FADED_AT = 1.05
 _STEP_S = 0.01
 _SMOOTH_STEPS = 19
@@ -55,11 +73,6 @@ class Clock:
     def _phase(self) -> NDArray[np.float64]:
         return np.asarray(self._phase_of_time(self.time_s))
 
-    @cached_property
-    def _time_of_phase(self) -> "CubicSpline | PchipInterpolator":
-        invert = CubicSpline if len(self.time_s) > 3 else PchipInterpolator
-        return invert(self._phase, self.time_s)
-
     @property
     def cycles(self) -> int:
         """Number of whole cycles between the first and the last time."""
@@ -74,12 +87,15 @@ class Clock:
         """Times in seconds of `points` equal steps of every whole cycle, shape (cycles, points)."""
         count = self.cycles
         # Straight lines between instants a millisecond apart are right to a tenth of a microsecond.
-        knots = min(points, max(1, int(np.ceil(1000.0 / float(self.f0_hz.min())))))
+        each = max(1, int(points * float(self.f0_hz.min()) / 1000.0))
+        while points % each:
+            each -= 1
+        knots = points // each
         phase = np.arange(count * knots + 1) / knots
-        coarse = np.minimum(self._time_of_phase(phase), self.time_s[-1])
-        # The inverse of a spline is no spline: one step of Newton's method makes it exact.
+        coarse = np.interp(phase, self._phase, self.time_s)
+        # The track is nearly straight from one of its values to the next: one step of Newton's method makes it exact.
         coarse -= (self._phase_of_time(coarse) - phase) / self._f0_of_time(coarse)
-        fine = np.interp(np.arange(count * points) * (knots / points), np.arange(count * knots + 1), coarse)
+        fine = coarse[:-1, None] + np.diff(coarse)[:, None] * (np.arange(each) / each)
         return np.asarray(fine.reshape(count, points))
 
     def phase_at(self, time_s: NDArray[np.float64]) -> NDArray[np.float64]:
@@ -136,16 +152,28 @@ class BandLimited:
         spectrum = spectrum[:kept] * _flattening(kept, highest_hz / sample_rate_hz * size, dense)
         self._coefficients = scipy.fft.irfft(spectrum, dense) * np.float32(dense / size)
         self._scale = sample_rate_hz * dense / size
-        self._origin = margin * dense / size
+        # Counted from the first of the six coefficients around a place.
+        self._origin = margin * dense / size - 2.0
         self.highest_hz = highest_hz
 
     def at(self, time_s: NDArray[np.float64]) -> NDArray[np.float64]:
         """The signal at any times in seconds, same shape."""
-        position = time_s.ravel() * self._scale + self._origin
-        values = scipy.ndimage.map_coordinates(
-            self._coefficients, position[None], output=np.float64, order=_SPLINE_ORDER, prefilter=False, mode="nearest"
-        )
-        return np.asarray(values.reshape(time_s.shape))
+        values = np.empty(time_s.size)
+        around, polynomial = np.empty((2, _SPLINE_ORDER + 1, min(_CHUNK, time_s.size)), dtype=np.float32)
+        for start in range(0, time_s.size, _CHUNK):
+            place = time_s.ravel()[start : start + _CHUNK] * self._scale + self._origin
+            count = len(place)
+            whole = place.astype(np.intp)
+            fraction = (place - whole).astype(np.float32)
+            for tap in range(_SPLINE_ORDER + 1):
+                around[tap, :count] = self._coefficients[tap:].take(whole, mode="clip")
+            np.matmul(_SPLINE_PIECES, around[:, :count], out=polynomial[:, :count])
+            value = polynomial[-1, :count]
+            for power in polynomial[-2::-1, :count]:
+                value *= fraction
+                value += power
+            values[start : start + count] = value
+        return values.reshape(time_s.shape)
 
 
 def _flattening(count: int, edge: float, dense: int) -> NDArray[np.float32]:
@@ -255,12 +283,14 @@ def _common_turn(coefficients: NDArray[np.complex128], width: int) -> tuple[NDAr
     step = coefficients[1:] * coefficients[:-1].conj()
     k = np.arange(1, step.shape[1] + 1)
     turn = np.zeros(len(step))
+    weight = k * np.abs(step)
     # Low harmonics first: theirs cannot wrap while the clock is still far off.
     for highest in (4, 16, _MOST_HARMONICS):
-        order = k[:highest]
-        rest = step[:, :highest] * np.exp(-1j * np.outer(turn, order))
-        weight = np.abs(rest)
-        turn += (weight * order * np.angle(rest)).sum(axis=1) / ((weight * order**2).sum(axis=1) + 1e-300)
+        part = step[:, :highest]
+        # Powers of one phasor: e^{-jk turn}.
+        back = np.cumprod(np.broadcast_to(np.exp(-1j * turn)[:, None], part.shape), axis=1)
+        rest = np.einsum("ij,ij->i", weight[:, :highest], np.angle(part * back))
+        turn += rest / (weight[:, :highest] @ k[:highest] + 1e-300)
         if highest >= step.shape[1]:
             break
     if not 5 <= width <= len(turn):
