@@ -8,7 +8,8 @@ from hypothesis import given
 from hypothesis import strategies as st
 from numpy.typing import NDArray
 
-from timbre_match.intake.warp import BandLimited, Clock, points_per_cycle, refine_clock
+from timbre_match.intake.spectrum import BandLimited, Spectrum, points_per_cycle
+from timbre_match.intake.warp import Clock, refine_clock
 
 Array = NDArray[np.float64]
 RATE = 44_100
@@ -37,7 +38,7 @@ def test_sine_between_samples(edge_of_rate: float, part_of_rate: float, error_db
     def sine(time_s: Array) -> Array:
         return np.asarray(np.cos(2.0 * np.pi * part_of_rate * RATE * time_s + 0.7))
 
-    signal = BandLimited(sine(np.arange(RATE) / RATE), RATE, edge_of_rate * RATE)
+    signal = BandLimited(Spectrum(sine(np.arange(RATE) / RATE), RATE), edge_of_rate * RATE)
     # A good way from the ends: what lies beyond them is not known.
     time_s = np.random.default_rng(1).uniform(0.4, 0.6, 4000)
     error = signal.at(time_s) - sine(time_s)
@@ -45,7 +46,7 @@ def test_sine_between_samples(edge_of_rate: float, part_of_rate: float, error_db
 
 
 def test_what_cannot_be_read_is_faded_out() -> None:
-    signal = BandLimited(np.cos(2.0 * np.pi * 0.4 * np.arange(RATE)), RATE, 0.38 * RATE)
+    signal = BandLimited(Spectrum(np.cos(2.0 * np.pi * 0.4 * np.arange(RATE)), RATE), 0.38 * RATE)
     time_s = np.random.default_rng(2).uniform(0.4, 0.6, 2000)
     assert np.abs(signal.at(time_s)).max() < 1e-3
 
@@ -93,7 +94,7 @@ def noisy_note(pitch: Callable[[Array], Array], snr_db: float, seed: int) -> Ban
     turns = np.cumsum(pitch(time_s)) / RATE
     note = sum(np.cos(2.0 * np.pi * (k * turns + rng.uniform())) / k for k in range(1, 9))
     noise = np.sqrt(0.5) * 10.0 ** (-snr_db / 20.0)
-    return BandLimited(np.asarray(note + noise * rng.standard_normal(RATE)), RATE, RATE / 2)
+    return BandLimited(Spectrum(np.asarray(note + noise * rng.standard_normal(RATE)), RATE), RATE / 2)
 
 
 def lost_db(clock: Clock, true_turns: Callable[[Array], Array], k: int) -> float:

@@ -20,8 +20,6 @@ HIGHEST_HZ = 4500.0
 _RUMBLE_HZ = 18.0
 
 HOP_S = 0.02
-USABLE_BAND = 0.38
-"""Up to which part of its rate a signal from :func:`reduce_rate` is free of mirror images."""
 _FRAME_S = 0.1
 _BAND_HZ = 5500.0
 _CANDIDATES = 6
@@ -60,33 +58,6 @@ class PitchTrack:
             object.__setattr__(self, name, array)
 
 
-def reduce_rate(samples: NDArray[np.float64], sample_rate_hz: int) -> tuple[NDArray[np.float64], float]:
-    """Reduce the sample rate by a whole factor to 14 to 28 kHz, enough for every fundamental and its first harmonics.
-
-    A constant offset is taken out on the way.
-
-    Parameters
-    ----------
-    samples : array, shape (n,)
-    sample_rate_hz : int
-
-    Returns
-    -------
-    samples : array, shape (ceil(n / q),), aligned with the input: index i is the input's index i q
-    sample_rate_hz : float
-    """
-    factor = max(1, int(sample_rate_hz // 14000))
-    level = samples - samples.mean() if len(samples) else samples
-    if factor == 1:
-        return level, float(sample_rate_hz)
-    half = 11 * factor
-    # Falls from 0.38 to 0.62 of the new rate: nothing comes back mirrored into the part below 0.38 that is used.
-    taps = scipy.signal.firwin(2 * half + 1, 1.0 / factor, window=("kaiser", 8.0))
-    count = -(-len(samples) // factor)
-    filtered = scipy.signal.upfirdn(taps, level, down=factor)
-    return np.asarray(filtered[half // factor : half // factor + count]), sample_rate_hz / factor
-
-
 def without_rumble(samples: NDArray[np.float64], sample_rate_hz: float) -> NDArray[np.float64]:
     """Take out what lies below the lowest note: steps on the floor, wind, traffic.
 
@@ -102,7 +73,7 @@ def track_pitch(samples: NDArray[np.float64], sample_rate_hz: float) -> PitchTra
     Parameters
     ----------
     samples : array, shape (n,)
-        At a rate from :func:`reduce_rate`.
+        At the rate of :meth:`Spectrum.reduced`.
     sample_rate_hz : float
 
     Returns
@@ -138,36 +109,46 @@ def _frames(
 def _autocorrelation(
     power: NDArray[np.float32], size: int, window: NDArray[np.float32], rate: float
 ) -> tuple[NDArray[np.float32], float]:
-    """Generalised autocorrelation at twice the rate, so that peaks between samples keep their height."""
+    """Generalised autocorrelation at twice the rate, so that peaks between samples keep their height.
+
+    Column i is for a lag of i + 1/2 steps: the cosine transform that gives these (DCT-III) is half the work.
+    """
     band = int(_BAND_HZ / rate * size)
     taper = np.ones(band, dtype=np.float32)
     edge = band // 5
     taper[-edge:] = 0.5 + 0.5 * np.cos(np.pi * np.arange(edge) / edge)
     lags = int(2 * rate / LOWEST_HZ) + 3
-    correlation = scipy.fft.irfft(power[:, :band] ** _COMPRESSION * taper, 2 * size, axis=1)[:, :lags]
-    correlation /= np.maximum(correlation[:, :1], 1e-30)
+    compressed = power[:, :band] ** _COMPRESSION * taper
+    correlation = scipy.fft.dct(compressed, 3, size, axis=1)[:, :lags]
+    at_lag_zero = 2.0 * compressed.sum(axis=1, keepdims=True) - compressed[:, :1]
     own_power = np.abs(scipy.fft.rfft(window, size)) ** 2
-    own = scipy.fft.irfft(own_power**_COMPRESSION, 2 * size)[:lags]
-    weight = (np.maximum(own / own[0], 0.1) ** _WINDOW_EXPONENT).astype(np.float32)
-    return correlation / weight, 2 * rate
+    own = scipy.fft.dct(own_power**_COMPRESSION, 3, size)[:lags]
+    weight = np.maximum(own / own[0], 0.1) ** _WINDOW_EXPONENT
+    return correlation / (np.maximum(at_lag_zero, 1e-30) * weight.astype(np.float32)), 2 * rate
 
 
 def _candidates(correlation: NDArray[np.float32], rate: float) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
     """Frequencies in Hz and peak heights, shape (n_frames, _CANDIDATES), of the best peaks; height 0 where none."""
+    frames = len(correlation)
     left, middle, right = correlation[:, :-2], correlation[:, 1:-1], correlation[:, 2:]
-    peak = (middle > left) & (middle >= right) & (middle > _SMALLEST_PEAK)
+    frame, column = np.nonzero((middle > left) & (middle >= right) & (middle > _SMALLEST_PEAK))
     # The slope down from lag 0 is no period: peaks count from the first zero crossing on.
-    peak &= np.maximum.accumulate(correlation < 0, axis=1)[:, 1:-1]
-    peak[:, : max(int(rate / HIGHEST_HZ) - 1, 0)] = False
-    lag = np.arange(1, correlation.shape[1] - 1)
-    score = np.where(peak, middle - _COST_PER_OCTAVE * np.log2(np.maximum(lag * HIGHEST_HZ / rate, 1e-9)), -9.0)
-    best = np.argpartition(-score, _CANDIDATES, axis=1)[:, :_CANDIDATES]
-    real = np.take_along_axis(peak, best, 1)
-    a, b, c = (np.take_along_axis(side, best, 1).astype(np.float64) for side in (left, middle, right))
-    bend = a - 2.0 * b + c
-    shift = np.where(real, 0.5 * (a - c) / np.where(bend == 0.0, 1.0, bend), 0.0).clip(-0.5, 0.5)
-    height = np.where(real, b - 0.25 * (a - c) * shift, 0.0)
-    return rate / (best + 1 + shift), height
+    negative = correlation < 0.0
+    crossing = np.where(negative.any(axis=1), negative.argmax(axis=1), correlation.shape[1])
+    counts = (column + 1 > crossing[frame]) & (column + 1.5 > rate / HIGHEST_HZ - 1.0)
+    frame, column = frame[counts], column[counts]
+    a, b, c = (side[frame, column].astype(np.float64) for side in (left, middle, right))
+    score = b - _COST_PER_OCTAVE * np.log2((column + 1.5) * HIGHEST_HZ / rate)
+    order = np.lexsort((-score, frame))
+    place = np.arange(len(order)) - np.searchsorted(frame, np.arange(frames))[frame]
+    order, place = order[place < _CANDIDATES], place[place < _CANDIDATES]
+    frame, column, a, b, c = frame[order], column[order], a[order], b[order], c[order]
+    shift = (0.5 * (a - c) / (a - 2.0 * b + c)).clip(-0.5, 0.5)
+    f0_hz = np.full((frames, _CANDIDATES), HIGHEST_HZ)
+    height = np.zeros((frames, _CANDIDATES))
+    f0_hz[frame, place] = rate / (column + 1.5 + shift)
+    height[frame, place] = b - 0.25 * (a - c) * shift
+    return f0_hz, height
 
 
 def _cheapest_path(f0_hz: NDArray[np.float64], strength: NDArray[np.float64]) -> NDArray[np.int64]:

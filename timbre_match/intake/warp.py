@@ -5,7 +5,6 @@ phase of the fundamental). The phase comes from the pitch track first and is the
 """
 
 from functools import cached_property
-from typing import Final
 
 import numpy as np
 import scipy.fft
@@ -15,26 +14,8 @@ import scipy.special
 from numpy.typing import NDArray
 from scipy.interpolate import CubicSpline, PchipInterpolator, PPoly
 
-_SPLINE_ORDER: Final = 5
-_SPLINE_PIECES: Final = (
-    np.array(
-        [
-            [1.0, 26.0, 66.0, 26.0, 1.0, 0.0],
-            [-5.0, -50.0, 0.0, 50.0, 5.0, 0.0],
-            [10.0, 20.0, -60.0, 20.0, 10.0, 0.0],
-            [-10.0, 20.0, 0.0, -20.0, 10.0, 0.0],
-            [5.0, -20.0, 30.0, -20.0, 5.0, 0.0],
-            [-1.0, 5.0, -10.0, 10.0, -5.0, 1.0],
-        ],
-        dtype=np.float32,
-    )
-    / 120.0
-)
-"""From the six coefficients around a place (columns) to the polynomial in the fraction of a step that a quintic
-B-spline is there (rows, the constant first)."""
-_CHUNK: Final = 8192
-"""Places that are read at a time: their working memory stays in the processor's cache."""
-_FADED_AT = 1.05
+from timbre_match.intake.spectrum import BandLimited, points_per_cycle
+
 _STEP_S = 0.01
 _SMOOTH_STEPS = 19
 _SMOOTH_S = 0.07
@@ -109,81 +90,6 @@ class Clock:
         """
         f0_hz = self.f0_hz * (1.0 + np.interp(self.time_s, time_s, relative))
         return Clock(self.time_s, np.interp(np.clip(self.time_s, time_s[0], time_s[-1]), self.time_s, f0_hz))
-
-
-def points_per_cycle(f0_hz: float, highest_hz: float) -> int:
-    """Points N per cycle: at least the recording's own density, of a length that the FFT likes."""
-    return int(scipy.fft.next_fast_len(max(8, int(np.ceil((1.0 + _FADED_AT) * highest_hz / f0_hz)) + 1), real=True))
-
-
-class BandLimited:
-    """A recording that can be read between its samples.
-
-    Brought by FFT to twice the rate that its band needs, then a quintic B-spline whose passband is made flat in the
-    frequency domain (Unser 1999, IEEE Signal Process. Mag. 16(6):22): the gain is 1 up to the band's edge, and the
-    images of a component at half the edge (at the edge) stand 101 (57) dB under it.
-
-    Parameters
-    ----------
-    samples : array, shape (n,)
-    sample_rate_hz : float
-    highest_hz : float
-        Edge of the band that is wanted, Hz: at most half the sample rate. What lies above fades out within a twentieth.
-    """
-
-    def __init__(self, samples: NDArray[np.float64], sample_rate_hz: float, highest_hz: float) -> None:
-        margin = 64
-        size = int(scipy.fft.next_fast_len(len(samples) + 2 * margin, real=True))
-        size += size % 2
-        # Single precision throughout: its rounding lies 30 dB under the images, and it halves the time.
-        padded = np.zeros(size, dtype=np.float32)
-        padded[margin : margin + len(samples)] = samples
-        # Point-mirrored margins go on without a step or a kink and fade to nothing, so that neither end rings.
-        reach = min(margin, len(samples) - 1)
-        fade_in = 0.5 - 0.5 * np.cos(np.pi * (np.arange(reach) + 0.5) / max(1, reach))
-        padded[margin - reach : margin] = fade_in * (2.0 * samples[0] - samples[reach:0:-1])
-        padded[margin + len(samples) : margin + len(samples) + reach] = fade_in[::-1] * (
-            2.0 * samples[-1] - samples[-2 : -2 - reach : -1]
-        )
-        wanted = 4.0 * highest_hz / sample_rate_hz
-        dense = int(scipy.fft.next_fast_len(int(np.ceil(size * wanted)), real=True))
-        spectrum = scipy.fft.rfft(padded)
-        kept = min(len(spectrum), dense // 2, int(_FADED_AT * highest_hz / sample_rate_hz * size) + 1)
-        spectrum = spectrum[:kept] * _flattening(kept, highest_hz / sample_rate_hz * size, dense)
-        self._coefficients = scipy.fft.irfft(spectrum, dense) * np.float32(dense / size)
-        self._scale = sample_rate_hz * dense / size
-        # Counted from the first of the six coefficients around a place.
-        self._origin = margin * dense / size - 2.0
-        self.highest_hz = highest_hz
-
-    def at(self, time_s: NDArray[np.float64]) -> NDArray[np.float64]:
-        """The signal at any times in seconds, same shape."""
-        values = np.empty(time_s.size)
-        around, polynomial = np.empty((2, _SPLINE_ORDER + 1, min(_CHUNK, time_s.size)), dtype=np.float32)
-        for start in range(0, time_s.size, _CHUNK):
-            place = time_s.ravel()[start : start + _CHUNK] * self._scale + self._origin
-            count = len(place)
-            whole = place.astype(np.intp)
-            fraction = (place - whole).astype(np.float32)
-            for tap in range(_SPLINE_ORDER + 1):
-                around[tap, :count] = self._coefficients[tap:].take(whole, mode="clip")
-            np.matmul(_SPLINE_PIECES, around[:, :count], out=polynomial[:, :count])
-            value = polynomial[-1, :count]
-            for power in polynomial[-2::-1, :count]:
-                value *= fraction
-                value += power
-            values[start : start + count] = value
-        return values.reshape(time_s.shape)
-
-
-def _flattening(count: int, edge: float, dense: int) -> NDArray[np.float32]:
-    """What makes the spline's passband flat up to bin `edge` and fades it out above, for `count` bins."""
-    # A smooth function: a few thousand values and straight lines between them are right to 1e-7.
-    place = np.linspace(0.0, count - 1.0, 4097)
-    gain = np.sinc(place / dense) ** -(_SPLINE_ORDER + 1)
-    fade = np.clip((place / edge - 1.0) / (_FADED_AT - 1.0), 0.0, 1.0)
-    gain *= 0.5 + 0.5 * np.cos(np.pi * fade)
-    return np.interp(np.arange(count), place, gain).astype(np.float32)
 
 
 def refine_clock(signal: BandLimited, clock: Clock, *, roughly: bool = False) -> Clock:
