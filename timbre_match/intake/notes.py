@@ -96,7 +96,7 @@ def held_notes(
     NoHeldNoteError
         If no note is steady for long enough, or none of `notes` is there.
     """
-    spectrum = Spectrum(recording.samples - recording.samples.mean(), recording.sample_rate_hz)
+    spectrum = Spectrum(recording.samples, recording.sample_rate_hz)
     samples, rate = spectrum.reduced()
     calm = without_rumble(samples, rate)
     track = track_pitch(calm, rate)

@@ -45,6 +45,7 @@ class Spectrum:
     Parameters
     ----------
     samples : array, shape (n,)
+        A constant offset is taken out.
     sample_rate_hz : float
     """
 
@@ -69,6 +70,8 @@ class Spectrum:
         last = first + self.length
         padded = np.zeros(size + 2 * self.margin, dtype=np.float32)
         padded[first:last] = samples
+        padded[first:last] -= samples.mean()
+        samples = padded[first:last]
         # Point-mirrored ends go on without a step or a kink and fade to nothing, so that neither rings.
         reach = min(_MIRRORED, self.length - 1)
         fade_in = 0.5 - 0.5 * np.cos(np.pi * (np.arange(reach) + 0.5) / max(1, reach))

@@ -37,22 +37,18 @@ class Clock:
         self.f0_hz = f0_hz
 
     @cached_property
-    def _f0_of_time(self) -> "CubicSpline | PchipInterpolator":
-        if len(self.time_s) > 3:
-            smooth = CubicSpline(self.time_s, self.f0_hz)
-            if np.all(np.diff(smooth.antiderivative()(self.time_s)) > 0.0):
-                return smooth
-        # The monotone one where a cubic would swing through zero between far values.
-        return PchipInterpolator(self.time_s, self.f0_hz)
-
-    @cached_property
-    def _phase_of_time(self) -> PPoly:
-        # Integrated from the first time on, so that the phase is zero there.
-        return self._f0_of_time.antiderivative()
-
-    @cached_property
-    def _phase(self) -> NDArray[np.float64]:
-        return np.asarray(self._phase_of_time(self.time_s))
+    def _curves(self) -> tuple[PPoly, PPoly, NDArray[np.float64]]:
+        """The fundamental over time, the phase over time, and the phase at `time_s`."""
+        interpolators = (CubicSpline, PchipInterpolator) if len(self.time_s) > 3 else (PchipInterpolator,)
+        for interpolator in interpolators:
+            f0_of_time = interpolator(self.time_s, self.f0_hz)
+            # Integrated from the first time on, so that the phase is zero there.
+            phase_of_time = f0_of_time.antiderivative()
+            phase = np.asarray(phase_of_time(self.time_s))
+            # The monotone interpolation where a cubic would swing through zero between far values.
+            if np.all(np.diff(phase) > 0.0):
+                break
+        return f0_of_time, phase_of_time, phase
 
     @property
     def cycles(self) -> int:
@@ -62,26 +58,28 @@ class Clock:
     @property
     def turns(self) -> float:
         """Cycles, whole and broken, between the first and the last time."""
-        return float(self._phase[-1])
+        return float(self._curves[2][-1])
 
     def instants_s(self, points: int) -> NDArray[np.float64]:
         """Times in seconds of `points` equal steps of every whole cycle, shape (cycles, points)."""
         count = self.cycles
+        f0_of_time, phase_of_time, known = self._curves
         # Straight lines between instants a millisecond apart are right to a tenth of a microsecond.
         each = max(1, int(points * float(self.f0_hz.min()) / 1000.0))
         while points % each:
             each -= 1
         knots = points // each
         phase = np.arange(count * knots + 1) / knots
-        coarse = np.interp(phase, self._phase, self.time_s)
+        coarse = np.interp(phase, known, self.time_s)
         # The track is nearly straight from one of its values to the next: one step of Newton's method makes it exact.
-        coarse -= (self._phase_of_time(coarse) - phase) / self._f0_of_time(coarse)
-        fine = coarse[:-1, None] + np.diff(coarse)[:, None] * (np.arange(each) / each)
-        return np.asarray(fine.reshape(count, points))
+        coarse -= (phase_of_time(coarse) - phase) / f0_of_time(coarse)
+        fine = np.outer(np.diff(coarse), np.arange(each) / each)
+        fine += coarse[:-1, None]
+        return fine.reshape(count, points)
 
     def phase_at(self, time_s: NDArray[np.float64]) -> NDArray[np.float64]:
         """Phase in cycles since the first time, at any times in seconds between the first and the last."""
-        return np.asarray(self._phase_of_time(time_s))
+        return np.asarray(self._curves[1](time_s))
 
     def corrected(self, time_s: NDArray[np.float64], relative: NDArray[np.float64]) -> "Clock":
         """The clock with its fundamental raised by the fraction `relative`, given at `time_s` (shape (m,)).
@@ -133,11 +131,13 @@ def refine_clock(signal: BandLimited, clock: Clock, *, roughly: bool = False) ->
         starts = np.arange(steps) * per_step
         ends = np.minimum(starts + per_step, len(instants) - 1)
         centre_s = 0.5 * (instants[starts, 0] + instants[ends, 0])
-        width = round(_SMOOTH_S * f0_hz / per_step) // 2 * 2 + 1
-        turn, smooth_turn = _common_turn(coefficients, width)
-        rigid = _rigid_clock(clock, centre_s, turn / (2.0 * np.pi))
-        relative = smooth_turn / (2.0 * np.pi * per_step)
-        clock = rigid or clock.corrected(0.5 * (centre_s[1:] + centre_s[:-1]), relative)
+        turn = _common_turn(coefficients) / (2.0 * np.pi)
+        rigid = _rigid_clock(clock, centre_s, turn)
+        if rigid is not None:
+            clock = rigid
+        else:
+            smooth = _smoothed(turn, round(_SMOOTH_S * f0_hz / per_step) // 2 * 2 + 1)
+            clock = clock.corrected(0.5 * (centre_s[1:] + centre_s[:-1]), smooth / per_step)
     return clock
 
 
@@ -181,11 +181,8 @@ def _without_jitter(clock: Clock) -> Clock:
     return Clock(time_s, scipy.ndimage.convolve1d(raw, weight / weight.sum(), mode="nearest"))
 
 
-def _common_turn(coefficients: NDArray[np.complex128], width: int) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
-    """Phase in radians by which the fundamental turns from each row of harmonics to the next, shape (rows - 1,).
-
-    As measured, and smoothed over `width` rows (an odd number; under five nothing is smoothed).
-    """
+def _common_turn(coefficients: NDArray[np.complex128]) -> NDArray[np.float64]:
+    """Phase in radians by which the fundamental turns from each row of harmonics to the next, shape (rows - 1,)."""
     step = coefficients[1:] * coefficients[:-1].conj()
     k = np.arange(1, step.shape[1] + 1)
     turn = np.zeros(len(step))
@@ -199,8 +196,12 @@ def _common_turn(coefficients: NDArray[np.complex128], width: int) -> tuple[NDAr
         turn += rest / (weight[:, :highest] @ k[:highest] + 1e-300)
         if highest >= step.shape[1]:
             break
+    return turn
+
+
+def _smoothed(turn: NDArray[np.float64], width: int) -> NDArray[np.float64]:
+    """A series smoothed over `width` values (an odd number; under five nothing is smoothed)."""
     if not 5 <= width <= len(turn):
-        return turn, turn
-    return turn, scipy.signal.savgol_filter(
-        scipy.ndimage.median_filter(turn, 3, mode="nearest"), width, 3, mode="nearest"
-    )
+        return turn
+    lone_removed = scipy.ndimage.median_filter(turn, 3, mode="nearest")
+    return np.asarray(scipy.signal.savgol_filter(lone_removed, width, 3, mode="nearest"))
