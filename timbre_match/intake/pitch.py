@@ -7,6 +7,7 @@ autocorrelation after Boersma 1993, Proc. Inst. Phonetic Sciences 17:97); the ch
 over the whole held note, in :mod:`timbre_match.intake.octave`.
 """
 
+import functools
 from dataclasses import dataclass
 
 import numpy as np
@@ -65,8 +66,12 @@ def without_rumble(samples: NDArray[np.float64], sample_rate_hz: float) -> NDArr
 
     The filter rings for some cycles at the start of a sound; levels and tracks can bear that, phases cannot.
     """
-    highpass = scipy.signal.butter(4, _RUMBLE_HZ, "highpass", fs=sample_rate_hz, output="sos")
-    return np.asarray(scipy.signal.sosfilt(highpass, samples))
+    return np.asarray(scipy.signal.sosfilt(_highpass(sample_rate_hz), samples))
+
+
+@functools.cache
+def _highpass(sample_rate_hz: float) -> NDArray[np.float64]:
+    return np.asarray(scipy.signal.butter(4, _RUMBLE_HZ, "highpass", fs=sample_rate_hz, output="sos"))
 
 
 def track_pitch(samples: NDArray[np.float64], sample_rate_hz: float) -> PitchTrack:

@@ -52,11 +52,11 @@ class Spectrum:
     def __init__(self, samples: NDArray[np.float64], sample_rate_hz: float) -> None:
         self.sample_rate_hz = sample_rate_hz
         self.length = len(samples)
-        longest = (self.length + 2 * _MIRRORED) / (1.0 - 2.0 * _MARGIN)
+        longest = self.length / (1.0 - 4.0 * _MARGIN)
         self.block = 1 << int(np.ceil(np.log2(max(1024.0, min(_BLOCK_S * sample_rate_hz, longest)))))
         self.margin = int(_MARGIN * self.block)
         hop = self.block - 2 * self.margin
-        count = -(-(self.length + 2 * _MIRRORED) // hop)
+        count = -(-(self.length + 2 * self.margin) // hop)
         blocks = np.lib.stride_tricks.sliding_window_view(self._padded(samples, count * hop), self.block)[::hop].copy()
         # Both ends of a block meet: without a step, or it would ring.
         fade_in = (0.5 - 0.5 * np.cos(np.pi * (np.arange(self.margin) + 0.5) / self.margin)).astype(np.float32)
@@ -65,15 +65,15 @@ class Spectrum:
         self._bins = scipy.fft.rfft(blocks, axis=1)
 
     def _padded(self, samples: NDArray[np.float64], size: int) -> NDArray[np.float32]:
-        """The samples from place `margin` + `_MIRRORED` on, in `size` and two margins."""
-        first = self.margin + _MIRRORED
+        """The samples from two margins on, in `size` and two margins."""
+        first = 2 * self.margin
         last = first + self.length
         padded = np.zeros(size + 2 * self.margin, dtype=np.float32)
         padded[first:last] = samples
         padded[first:last] -= samples.mean()
         samples = padded[first:last]
         # Point-mirrored ends go on without a step or a kink and fade to nothing, so that neither rings.
-        reach = min(_MIRRORED, self.length - 1)
+        reach = min(_MIRRORED, self.margin, self.length - 1)
         fade_in = 0.5 - 0.5 * np.cos(np.pi * (np.arange(reach) + 0.5) / max(1, reach))
         padded[first - reach : first] = fade_in * (2.0 * samples[0] - samples[reach:0:-1])
         padded[last : last + reach] = fade_in[::-1] * (2.0 * samples[-1] - samples[-2 : -2 - reach : -1])
@@ -81,7 +81,7 @@ class Spectrum:
 
     def at_rate(
         self, lowest_rate_hz: float, edge_hz: float, *, spline_order: int = 0
-    ) -> tuple[NDArray[np.float32], float, float]:
+    ) -> tuple[NDArray[np.float32], float, int]:
         """The recording at another rate, band-limited.
 
         Parameters
@@ -97,8 +97,8 @@ class Spectrum:
         -------
         samples : float32 array, shape (m,)
         rate_hz : float
-        origin : float
-            Where among them time 0 is.
+        origin : int
+            Which of them stands for time 0.
         """
         unit = round(1.0 / _MARGIN)
         wanted = lowest_rate_hz / self.sample_rate_hz * self.block
@@ -111,8 +111,7 @@ class Spectrum:
             gain *= np.sinc(place / size) ** -(spline_order + 1)
         blocks = scipy.fft.irfft(self._bins[:, : len(place)] * gain.astype(np.float32), size, axis=1)
         margin = size // unit
-        rate_hz = self.sample_rate_hz * size / self.block
-        return blocks[:, margin:-margin].ravel(), rate_hz, _MIRRORED * size / self.block
+        return blocks[:, margin:-margin].ravel(), self.sample_rate_hz * size / self.block, margin
 
     def reduced(self) -> tuple[NDArray[np.float64], float]:
         """The recording at a lower rate that holds every fundamental and its first harmonics.
@@ -123,9 +122,9 @@ class Spectrum:
         sample_rate_hz : float
             About 12 kHz.
         """
-        samples, rate_hz, origin = self.at_rate(_REDUCED_HZ, _REDUCED_BAND_HZ)
-        first = round(origin)
-        return samples[first : first + round(self.length * rate_hz / self.sample_rate_hz)].astype(np.float64), rate_hz
+        samples, rate_hz, first = self.at_rate(_REDUCED_HZ, _REDUCED_BAND_HZ)
+        count = int(np.ceil(self.length * rate_hz / self.sample_rate_hz))
+        return samples[first : first + count].astype(np.float64), rate_hz
 
 
 class BandLimited:
@@ -146,7 +145,7 @@ class BandLimited:
         order = len(_SPLINE_PIECES) - 1
         self._coefficients, self._rate_hz, origin = spectrum.at_rate(4.0 * highest_hz, highest_hz, spline_order=order)
         # Counted from the first of the six coefficients around a place.
-        self._origin = origin - 2.0
+        self._origin = origin - 2
         self.highest_hz = highest_hz
 
     def at(self, time_s: NDArray[np.float64]) -> NDArray[np.float64]:

@@ -81,7 +81,7 @@ def analyse_blocks(cycles: NDArray[np.float64], count: int, f0_hz: float) -> Blo
 
 def _block_shape(cycles: int, points: int, f0_hz: float) -> tuple[int, NDArray[np.float64]]:
     """Cycles per block and the window over it."""
-    wanted = max(_FEWEST_FOR_HANN, 2 * int(scipy.fft.next_fast_len(max(1, round(_BLOCK_S * f0_hz / 2)), real=True)))
+    wanted = max(_FEWEST_FOR_HANN, 2 * round(_BLOCK_S * f0_hz / 2))
     # Three overlapping blocks at the least, so that scatter within the note can be seen.
     per_block = min(wanted, 2 * (cycles // 4))
     if per_block >= _FEWEST_FOR_HANN:
