@@ -166,7 +166,7 @@ def _cheapest_path(f0_hz: NDArray[np.float64], strength: NDArray[np.float64]) ->
     """Index of the chosen candidate in every frame (Viterbi 1967)."""
     gain = np.where(strength > 0.0, strength - _COST_PER_OCTAVE * np.log2(HIGHEST_HZ / f0_hz), -1.0)
     if len(gain) == 1:
-        return np.argmax(gain, axis=1)
+        return np.asarray(gain.argmax(axis=1))
     octaves = np.log2(f0_hz)
     jump = np.abs(octaves[:-1, :, None] - octaves[1:, None, :]) * _JUMP_COST_PER_OCTAVE
     cost = np.minimum(jump, _LARGEST_JUMP_COST) - gain[1:, None, :]

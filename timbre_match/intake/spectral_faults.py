@@ -182,9 +182,7 @@ def _gain(taps: NDArray[np.float64], turns_per_sample: float) -> float:
     return float(abs(response) ** 2)
 
 
-def _line_bin(
-    least: NDArray[np.floating], line_hz: float, tolerance_hz: float, step_hz: float
-) -> int | None:
+def _line_bin(least: NDArray[np.floating], line_hz: float, tolerance_hz: float, step_hz: float) -> int | None:
     """Bin of a line at `line_hz` that stands 15 dB out of its surroundings, alone, or None."""
 
     def between(low_hz: float, high_hz: float) -> slice:

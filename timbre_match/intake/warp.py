@@ -197,7 +197,7 @@ def _common_turn(coefficients: NDArray[np.complex128]) -> NDArray[np.float64]:
 
 
 def turned_back(harmonics: NDArray[np.complex128], turn: NDArray[np.float64]) -> NDArray[np.complex128]:
-    """Rows of harmonics 1, 2, ... (columns), each row turned back by `turn` radians of the fundamental, shape (rows,)."""
+    """Harmonics 1, 2, ... (columns), each row turned back by the fundamental's `turn` in radians, shape (rows,)."""
     # Powers of one phasor cost a fifth of as many phasors.
     return harmonics * np.cumprod(np.broadcast_to(np.exp(-1j * turn)[:, None], harmonics.shape), axis=1)
 
