@@ -71,7 +71,7 @@ def test_what_cannot_be_read_is_faded_out() -> None:
 def test_reduced_rate_rejects_what_would_come_back_mirrored(rate: int) -> None:
     for freq_hz in np.arange(6000.0, rate / 2, rate / 23):
         low, low_rate = Spectrum(two_seconds(freq_hz, rate), rate).reduced()
-        assert 11_600.0 <= low_rate < 12_900.0
+        assert 13_700.0 <= low_rate < 15_000.0
         assert 20.0 * np.log10(np.abs(low[len(low) // 10 : -len(low) // 10]).max()) < -75.0, freq_hz
 
 

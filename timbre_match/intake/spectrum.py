@@ -9,8 +9,8 @@ from numpy.typing import NDArray
 _BLOCK_S: Final = 0.6
 _MARGIN: Final = 1 / 32
 """Part of a block, on either side, into which its other end wraps around."""
-_MIRRORED: Final = 64
-_REDUCED_HZ: Final = 11_600.0
+_MIRRORED_S: Final = 0.0045
+_REDUCED_HZ: Final = 13_700.0
 _REDUCED_BAND_HZ: Final = 5500.0
 _FADED_AT: Final = 1.05
 """Where a band has faded out, as a multiple of its edge."""
@@ -72,7 +72,7 @@ class Spectrum:
         np.subtract(samples, samples.mean(), out=padded[first:last], casting="same_kind")
         # Point-mirrored ends go on without a step or a kink and fade to nothing, so that neither rings.
         near = padded[first:last]
-        reach = min(_MIRRORED, self.margin, self.length - 1)
+        reach = min(round(_MIRRORED_S * self.sample_rate_hz), self.margin, self.length - 1)
         fade_in = 0.5 - 0.5 * np.cos(np.pi * (np.arange(reach) + 0.5) / max(1, reach))
         padded[first - reach : first] = fade_in * (2.0 * near[0] - near[reach:0:-1])
         padded[last : last + reach] = fade_in[::-1] * (2.0 * near[-1] - near[-2 : -2 - reach : -1])
@@ -119,7 +119,7 @@ class Spectrum:
         -------
         samples : array, shape (m,)
         sample_rate_hz : float
-            About 12 kHz.
+            About 14 kHz.
         """
         samples, rate_hz, first = self.at_rate(_REDUCED_HZ, _REDUCED_BAND_HZ)
         count = int(np.ceil(self.length * rate_hz / self.sample_rate_hz))
