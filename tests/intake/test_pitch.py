@@ -1,10 +1,11 @@
-"""The pitch track, and the lower rate that it runs at."""
+"""The pitch track."""
 
 import numpy as np
 import pytest
 from numpy.typing import NDArray
 
-from timbre_match.intake.pitch import HOP_S, USABLE_BAND, reduce_rate, track_pitch
+from timbre_match.intake.pitch import HOP_S, track_pitch
+from timbre_match.intake.spectrum import Spectrum
 
 Array = NDArray[np.float64]
 
@@ -13,40 +14,11 @@ def sine(freq_hz: float, rate: int, length_s: float = 0.5) -> Array:
     return np.asarray(np.cos(2.0 * np.pi * freq_hz * np.arange(round(length_s * rate)) / rate))
 
 
-@pytest.mark.parametrize("rate", [44_100, 48_000, 88_200, 96_000, 192_000])
-def test_reduced_rate_rejects_what_would_come_back_mirrored(rate: int) -> None:
-    _, low_rate = reduce_rate(np.zeros(1000), rate)
-    assert 14_000 <= low_rate < 28_000
-    usable_hz = USABLE_BAND * low_rate
-    window = np.hanning(round(0.3 * low_rate))
-    for freq_hz in np.arange(low_rate - usable_hz, rate / 2, rate / 97):
-        image_hz = abs(freq_hz - low_rate * round(freq_hz / low_rate))
-        if image_hz > usable_hz:
-            continue
-        low, _ = reduce_rate(sine(freq_hz, rate), rate)
-        middle = low[len(low) // 5 :][: len(window)] * window
-        # Amplitude of whatever is left, from a Hann window's coherent gain of one half.
-        amplitude = 2.0 * np.abs(np.fft.rfft(middle)).max() / window.sum()
-        assert 20.0 * np.log10(amplitude) < -75.0, freq_hz
-
-
-@pytest.mark.parametrize("rate", [22_050, 44_100, 96_000, 192_000])
-@pytest.mark.parametrize("freq_hz", [30.0, 440.0, 4500.0])
-def test_reduced_rate_keeps_level_and_time(rate: int, freq_hz: float) -> None:
-    sound = sine(freq_hz, rate)
-    low, low_rate = reduce_rate(sound, rate)
-    factor = round(rate / low_rate)
-    assert len(low) == -(-len(sound) // factor)
-    inside = slice(len(low) // 4, 3 * len(low) // 4)
-    # Index i is the input's index i q; the pass band is flat to 0.01 dB.
-    assert low[inside] == pytest.approx(sound[::factor][inside], abs=1.2e-3)
-
-
 @pytest.mark.parametrize("rate", [22_050, 44_100, 96_000])
 @pytest.mark.parametrize("f0_hz", [27.5, 98.0, 440.0, 1760.0, 4186.0])
 def test_track_of_a_steady_note(f0_hz: float, rate: int) -> None:
     sound = sum(sine(k * f0_hz, rate, 1.0) / k for k in range(1, 9) if k * f0_hz < 0.45 * rate)
-    track = track_pitch(*reduce_rate(np.asarray(0.1 * sound), rate))
+    track = track_pitch(*Spectrum(np.asarray(0.1 * sound), rate).reduced())
     assert np.diff(track.time_s) == pytest.approx(HOP_S, rel=0.01)
     inside = (track.time_s > 0.1) & (track.time_s < 0.9)
     # Whole frames of a clean note: the octave may be left to later evidence, the pitch class not.
@@ -58,7 +30,7 @@ def test_track_of_a_steady_note(f0_hz: float, rate: int) -> None:
 
 def test_level_of_the_track_is_that_of_the_sound() -> None:
     # A sine of amplitude 0.1 has -23.01 dB of power re full scale squared.
-    track = track_pitch(*reduce_rate(0.1 * sine(440.0, 44_100, 1.0), 44_100))
+    track = track_pitch(*Spectrum(0.1 * sine(440.0, 44_100, 1.0), 44_100).reduced())
     inside = (track.time_s > 0.1) & (track.time_s < 0.9)
     assert track.level_db[inside] == pytest.approx(-23.01, abs=0.05)
 

@@ -1,4 +1,4 @@
-"""A note on its own clock: reading between samples, the laws of clocks, and how well a clock is refined."""
+"""A note on its own clock: the laws of clocks, and how well a clock is refined."""
 
 from collections.abc import Callable
 
@@ -8,7 +8,8 @@ from hypothesis import given
 from hypothesis import strategies as st
 from numpy.typing import NDArray
 
-from timbre_match.intake.warp import BandLimited, Clock, points_per_cycle, refine_clock
+from timbre_match.intake.spectrum import BandLimited, Spectrum
+from timbre_match.intake.warp import Clock, refine_clock
 
 Array = NDArray[np.float64]
 RATE = 44_100
@@ -17,37 +18,6 @@ RATE = 44_100
 def steady_clock(f0_hz: float, start_s: float = 0.0, length_s: float = 1.0) -> Clock:
     time_s = np.linspace(start_s, start_s + length_s, 51)
     return Clock(time_s, np.full(51, f0_hz))
-
-
-@pytest.mark.parametrize(
-    ("edge_of_rate", "part_of_rate", "error_db"),
-    # The images of a component f stand 120 lg((4 edge - f) / f) dB under it (a quintic spline: sinc^6),
-    # and 6 dB for a pair of them: 101 dB at half the edge, 72 dB at 0.8 of it.
-    [
-        (0.5, 0.02, -110.0),
-        (0.5, 0.1, -110.0),
-        (0.5, 0.25, -95.0),
-        (0.5, 0.4, -65.0),
-        (0.25, 0.02, -110.0),
-        (0.25, 0.125, -95.0),
-        (0.25, 0.2, -65.0),
-    ],
-)
-def test_sine_between_samples(edge_of_rate: float, part_of_rate: float, error_db: float) -> None:
-    def sine(time_s: Array) -> Array:
-        return np.asarray(np.cos(2.0 * np.pi * part_of_rate * RATE * time_s + 0.7))
-
-    signal = BandLimited(sine(np.arange(RATE) / RATE), RATE, edge_of_rate * RATE)
-    # A good way from the ends: what lies beyond them is not known.
-    time_s = np.random.default_rng(1).uniform(0.4, 0.6, 4000)
-    error = signal.at(time_s) - sine(time_s)
-    assert 20.0 * np.log10(np.abs(error).max()) < error_db
-
-
-def test_what_cannot_be_read_is_faded_out() -> None:
-    signal = BandLimited(np.cos(2.0 * np.pi * 0.4 * np.arange(RATE)), RATE, 0.38 * RATE)
-    time_s = np.random.default_rng(2).uniform(0.4, 0.6, 2000)
-    assert np.abs(signal.at(time_s)).max() < 1e-3
 
 
 @given(st.floats(27.0, 4200.0), st.floats(0.0, 100.0), st.floats(0.1, 3.0))
@@ -80,20 +50,13 @@ def test_correction_scales_the_fundamental(f0_hz: float, relative: float) -> Non
     assert clock.turns == pytest.approx(f0_hz * (1.0 + relative), rel=1e-12)
 
 
-@given(st.floats(27.0, 4200.0), st.floats(5_000.0, 96_000.0))
-def test_points_per_cycle_lose_no_harmonic(f0_hz: float, highest_hz: float) -> None:
-    points = points_per_cycle(f0_hz, highest_hz)
-    assert points * f0_hz >= 2.0 * highest_hz
-    assert points <= 2.8 * highest_hz / f0_hz + 9
-
-
 def noisy_note(pitch: Callable[[Array], Array], snr_db: float, seed: int) -> BandLimited:
     rng = np.random.default_rng(seed)
     time_s = np.arange(RATE) / RATE
     turns = np.cumsum(pitch(time_s)) / RATE
     note = sum(np.cos(2.0 * np.pi * (k * turns + rng.uniform())) / k for k in range(1, 9))
     noise = np.sqrt(0.5) * 10.0 ** (-snr_db / 20.0)
-    return BandLimited(np.asarray(note + noise * rng.standard_normal(RATE)), RATE, RATE / 2)
+    return BandLimited(Spectrum(np.asarray(note + noise * rng.standard_normal(RATE)), RATE), RATE / 2)
 
 
 def lost_db(clock: Clock, true_turns: Callable[[Array], Array], k: int) -> float:

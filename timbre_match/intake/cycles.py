@@ -7,7 +7,8 @@ from numpy.typing import NDArray
 
 from timbre_match.intake.notes import HeldNote
 from timbre_match.intake.recording import Recording
-from timbre_match.intake.warp import BandLimited, Clock, points_per_cycle
+from timbre_match.intake.spectrum import BandLimited, Spectrum, points_per_cycle
+from timbre_match.intake.warp import Clock
 
 _MARGIN_S = 0.05
 
@@ -55,8 +56,7 @@ def cut_cycles(recording: Recording, note: HeldNote) -> Cycles:
     first = max(0, int((note.start_s - _MARGIN_S) * rate))
     last = min(len(recording.samples), int((note.end_s + _MARGIN_S) * rate) + 1)
     edge_hz = rate / 2 if recording.low_pass_hz is None else min(rate / 2, recording.low_pass_hz)
-    stretch = recording.samples[first:last]
-    signal = BandLimited(stretch - stretch.mean(), rate, edge_hz)
+    signal = BandLimited(Spectrum(recording.samples[first:last], rate), edge_hz)
     clock = Clock(note.track_s, note.track_hz)
     instants = clock.instants_s(points_per_cycle(float(note.track_hz.min()), edge_hz))
     # The Nyquist frequency needs room for vibrato; at the edge of a codec's band the level falls before it is gone.

@@ -59,14 +59,15 @@ def find_faults(samples: NDArray[np.float64], sample_rate_hz: int) -> Faults:
     loud_db = float(np.percentile(levels_db, 95))
     spectrum = long_term_spectrum(samples, sample_rate_hz)
     low_pass_hz = find_low_pass(spectrum)
+    lowest, highest = float(samples.min()), float(samples.max())
     found = (
-        _clipping(samples),
-        _low_level(samples),
+        _clipping(samples, lowest, highest),
+        _low_level(lowest, highest),
         _noise(samples, sample_rate_hz, levels_db, loud_db),
         _hum(samples, sample_rate_hz, levels_db, loud_db, spectrum.strongest_hz()),
         _reverberation(levels_db, loud_db),
         _low_pass(low_pass_hz),
-        _dc(samples),
+        _dc(float(samples.mean()), lowest, highest),
     )
     return Faults(warnings=tuple(sentence for sentence in found if sentence), low_pass_hz=low_pass_hz)
 
@@ -91,7 +92,7 @@ def sounding_seconds(samples: NDArray[np.float64], sample_rate_hz: int) -> float
     return float(_HOP_S * np.count_nonzero(levels_db > levels_db.max() - 30.0))
 
 
-def _clipping(samples: NDArray[np.float64]) -> str:
+def _clipping(samples: NDArray[np.float64], lowest: float, highest: float) -> str:
     """Look for runs of three or more equal samples at an extreme, entered and left by a step.
 
     A normalised file touches its extreme once, and a slow sine in 16 bits rests there for a few samples but is then
@@ -99,7 +100,7 @@ def _clipping(samples: NDArray[np.float64]) -> str:
     """
     runs = 0
     clipped = 0
-    for extreme in (samples.max(), samples.min()):
+    for extreme in (highest, lowest):
         at = np.flatnonzero(samples == extreme)
         first = np.flatnonzero(np.diff(at, prepend=-2) > 1)
         lengths = np.diff(first, append=len(at))
@@ -119,8 +120,8 @@ def _clipping(samples: NDArray[np.float64]) -> str:
     )
 
 
-def _low_level(samples: NDArray[np.float64]) -> str:
-    peak_db = 20.0 * np.log10(max(float(samples.max()), -float(samples.min())))
+def _low_level(lowest: float, highest: float) -> str:
+    peak_db = 20.0 * np.log10(max(highest, -lowest))
     if peak_db >= LOW_LEVEL_DB:
         return ""
     return (
@@ -270,9 +271,8 @@ def _low_pass(low_pass_hz: float | None) -> str:
     )
 
 
-def _dc(samples: NDArray[np.float64]) -> str:
-    offset = float(samples.mean())
-    peak = max(float(samples.max()) - offset, offset - float(samples.min()))
+def _dc(offset: float, lowest: float, highest: float) -> str:
+    peak = max(highest - offset, offset - lowest)
     if abs(offset) < LARGEST_DC_SHARE * peak:
         return ""
     return (

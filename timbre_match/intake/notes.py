@@ -12,9 +12,10 @@ from timbre_match import units
 from timbre_match.errors import NoHeldNoteError
 from timbre_match.intake.envelope import Envelope, is_ringing, level_envelope, steady_stretch
 from timbre_match.intake.octave import settle_octave
-from timbre_match.intake.pitch import HOP_S, USABLE_BAND, PitchTrack, reduce_rate, track_pitch, without_rumble
+from timbre_match.intake.pitch import HOP_S, PitchTrack, track_pitch, without_rumble
 from timbre_match.intake.recording import Recording
-from timbre_match.intake.warp import BandLimited, Clock, refine_clock
+from timbre_match.intake.spectrum import BandLimited, Spectrum
+from timbre_match.intake.warp import Clock, refine_clock
 
 NoteKind = Literal["held", "ringing"]
 
@@ -31,6 +32,10 @@ _STEP_FRAMES = 8
 _SETTLE_S = 1.0
 _BLUR_FRAMES = 3
 _NAMED_WITHIN_CENTS = 70.0
+_CLOCK_BAND_HZ = 5600.0
+"""Up to where harmonics tell the clock."""
+_CLOCK_DENSITY = 3.0
+"""At twice the rate, images would hang together from step to step and hide that a clear tone is perfectly steady."""
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
@@ -93,11 +98,12 @@ def held_notes(
     NoHeldNoteError
         If no note is steady for long enough, or none of `notes` is there.
     """
-    samples, rate = reduce_rate(recording.samples, recording.sample_rate_hz)
+    spectrum = Spectrum(recording.samples, recording.sample_rate_hz)
+    samples, rate = spectrum.reduced()
     calm = without_rumble(samples, rate)
     track = track_pitch(calm, rate)
     envelope = level_envelope(calm, rate)
-    signal = BandLimited(samples, rate, USABLE_BAND * rate)
+    signal = BandLimited(spectrum, _CLOCK_BAND_HZ, density=_CLOCK_DENSITY)
     wanted_hz = None if notes is None else [units.note_to_hz(name, a4_hz) for name in notes]
     settled = []
     for first, last in _segments(track, envelope):

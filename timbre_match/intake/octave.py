@@ -15,7 +15,8 @@ import scipy.signal
 from numpy.typing import NDArray
 
 from timbre_match.intake.pitch import HIGHEST_HZ, LOWEST_HZ
-from timbre_match.intake.warp import BandLimited, Clock, points_per_cycle, refine_clock
+from timbre_match.intake.spectrum import BandLimited, points_per_cycle
+from timbre_match.intake.warp import Clock, refine_clock
 
 _BLOCK = 12
 """Cycles per block: halves, thirds and quarters of the fundamental fall on whole bins."""

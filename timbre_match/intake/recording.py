@@ -95,7 +95,7 @@ def read_recording(path: str | Path, *, channel: int | None = None) -> Recording
     data = _read_bytes(path)
     decoded = _decode(data, where)
     index = _choose_channel(decoded.channels, decoded.sample_rate_hz, channel, where)
-    samples = decoded.channels[:, index]
+    samples = np.ascontiguousarray(decoded.channels[:, index])
     _refuse_unusable(samples, decoded.sample_rate_hz, where)
     faults = find_faults(samples, decoded.sample_rate_hz)
     return Recording(
@@ -259,8 +259,9 @@ def _choose_channel(channels: NDArray[np.float64], rate: int, channel: int | Non
 
 
 def _refuse_unusable(samples: NDArray[np.float64], rate: int, where: str) -> None:
+    lowest, highest = samples.min(), samples.max()
     # NaN fails every comparison, so this finds it too.
-    if not (samples.min() > -_LARGEST_SAMPLE and samples.max() < _LARGEST_SAMPLE):
+    if not (lowest > -_LARGEST_SAMPLE and highest < _LARGEST_SAMPLE):
         bad = np.flatnonzero(~(np.abs(samples) < _LARGEST_SAMPLE))
         raise RecordingError(
             f"{len(bad)} of {len(samples)} samples are not usable numbers, the first at {bad[0] / rate:.3f} s",
@@ -275,7 +276,7 @@ def _refuse_unusable(samples: NDArray[np.float64], rate: int, where: str) -> Non
             cause="a click, or a recording cut off near its start",
             remedy="record the note held for a second or more",
         )
-    if samples.min() == samples.max():
+    if lowest == highest:
         raise RecordingError(
             f"the recording is silent: all {len(samples)} samples are {samples[0]:g}",
             where=where,

@@ -60,10 +60,10 @@ def long_term_spectrum(samples: NDArray[np.float64], sample_rate_hz: int) -> Lon
     size = min(1 << round(np.log2(_FRAME_S * sample_rate_hz)), len(samples))
     starts = np.linspace(0, len(samples) - size, min(_FRAMES, max(1, 2 * len(samples) // size - 1))).astype(np.int64)
     window = get_window("nuttall", size).astype(np.float32)
-    power = np.zeros(size // 2 + 1)
-    for start in starts:
-        spectrum = scipy.fft.rfft(samples[start : start + size].astype(np.float32) * window)
-        power += spectrum.real**2 + spectrum.imag**2
+    frames = np.lib.stride_tricks.sliding_window_view(samples, size)[starts].astype(np.float32)
+    frames *= window
+    spectra = scipy.fft.rfft(frames, axis=1)
+    power = (spectra.real**2 + spectra.imag**2).sum(axis=0, dtype=np.float64)
     power *= 2.0 / (len(starts) * float(window.sum()) ** 2)
     return LongTermSpectrum(power=power, step_hz=sample_rate_hz / size)
 
@@ -148,15 +148,24 @@ def find_mains_hum(
     quiet = np.array([levels_db[first:last].max() < quiet_db for first, last in edges.T])
     # Between notes hum keeps its level; under notes they may cover it for most of the time.
     searched, share = (power[quiet], 60) if quiet.any() else (power, 30)
-    least, usual = searched.min(axis=0), np.percentile(searched, share, axis=0)
+    least = searched.min(axis=0)
+
+    def usual(line: int) -> float:
+        return float(np.percentile(searched[:, line], share))
+
     for mains_hz in MAINS_HZ:
         if abs(note_hz - mains_hz * round(note_hz / mains_hz)) < _SAME_LINE_HZ:
             continue
-        peaks = [_line_bin(least, usual, m * mains_hz, 0.1 + 0.1 * m, step_hz) for m in _HUM_MULTIPLES]
-        found = [(m * mains_hz, peak) for m, peak in zip(_HUM_MULTIPLES, peaks, strict=True) if peak is not None]
+        peaks = [_line_bin(least, m * mains_hz, 0.1 + 0.1 * m, step_hz) for m in _HUM_MULTIPLES]
+        found = [
+            (m * mains_hz, peak)
+            for m, peak in zip(_HUM_MULTIPLES, peaks, strict=True)
+            # A line of hum keeps its level.
+            if peak is not None and usual(peak) < _STEADY_LINE * least[peak]
+        ]
         # One line may be anything; two at exact multiples are a series.
         if len(found) >= 2:
-            total = sum(float(usual[peak]) / _gain(taps, line_hz / sample_rate_hz) for line_hz, peak in found)
+            total = sum(usual(peak) / _gain(taps, line_hz / sample_rate_hz) for line_hz, peak in found)
             return MainsHum(lines_hz=tuple(line_hz for line_hz, _ in found), level_db=10.0 * float(np.log10(total)))
     return None
 
@@ -173,10 +182,8 @@ def _gain(taps: NDArray[np.float64], turns_per_sample: float) -> float:
     return float(abs(response) ** 2)
 
 
-def _line_bin(
-    least: NDArray[np.floating], usual: NDArray[np.floating], line_hz: float, tolerance_hz: float, step_hz: float
-) -> int | None:
-    """Bin of a line at `line_hz` that stands 15 dB out of its surroundings alone and keeps its level, or None."""
+def _line_bin(least: NDArray[np.floating], line_hz: float, tolerance_hz: float, step_hz: float) -> int | None:
+    """Bin of a line at `line_hz` that stands 15 dB out of its surroundings, alone, or None."""
 
     def between(low_hz: float, high_hz: float) -> slice:
         return slice(max(0, round((line_hz + low_hz) / step_hz)), round((line_hz + high_hz) / step_hz) + 1)
@@ -184,8 +191,7 @@ def _line_bin(
     near = between(-3.5, 3.5)
     peak = near.start + int(np.argmax(least[near]))
     around = np.concatenate([least[between(-14.0, -4.0)], least[between(4.0, 14.0)]])
-    # A sideband of vibrato stands beside something stronger; a line of hum stands alone.
-    stands_out = least[peak] > _LINE_ABOVE_FLOOR * np.median(around) and least[peak] > _LINE_ABOVE_NEXT * around.max()
     in_place = abs(peak * step_hz - line_hz) <= tolerance_hz + 0.5 * step_hz
-    steady = usual[peak] < _STEADY_LINE * least[peak]
-    return peak if stands_out and in_place and steady else None
+    # A sideband of vibrato stands beside something stronger; a line of hum stands alone.
+    alone = least[peak] > _LINE_ABOVE_NEXT * around.max()
+    return peak if in_place and alone and least[peak] > _LINE_ABOVE_FLOOR * np.median(around) else None

@@ -5,7 +5,6 @@ phase of the fundamental). The phase comes from the pitch track first and is the
 """
 
 from functools import cached_property
-from typing import Final
 
 import numpy as np
 import scipy.fft
@@ -15,8 +14,8 @@ import scipy.special
 from numpy.typing import NDArray
 from scipy.interpolate import CubicSpline, PchipInterpolator, PPoly
 
-_SPLINE_ORDER: Final = 5
-_FADED_AT = 1.05
+from timbre_match.intake.spectrum import BandLimited, points_per_cycle
+
 _STEP_S = 0.01
 _SMOOTH_STEPS = 19
 _SMOOTH_S = 0.07
@@ -38,27 +37,18 @@ class Clock:
         self.f0_hz = f0_hz
 
     @cached_property
-    def _f0_of_time(self) -> "CubicSpline | PchipInterpolator":
-        if len(self.time_s) > 3:
-            smooth = CubicSpline(self.time_s, self.f0_hz)
-            if np.all(np.diff(smooth.antiderivative()(self.time_s)) > 0.0):
-                return smooth
-        # The monotone one where a cubic would swing through zero between far values.
-        return PchipInterpolator(self.time_s, self.f0_hz)
-
-    @cached_property
-    def _phase_of_time(self) -> PPoly:
-        # Integrated from the first time on, so that the phase is zero there.
-        return self._f0_of_time.antiderivative()
-
-    @cached_property
-    def _phase(self) -> NDArray[np.float64]:
-        return np.asarray(self._phase_of_time(self.time_s))
-
-    @cached_property
-    def _time_of_phase(self) -> "CubicSpline | PchipInterpolator":
-        invert = CubicSpline if len(self.time_s) > 3 else PchipInterpolator
-        return invert(self._phase, self.time_s)
+    def _curves(self) -> tuple[PPoly, PPoly, NDArray[np.float64]]:
+        """The fundamental over time, the phase over time, and the phase at `time_s`."""
+        interpolators = (CubicSpline, PchipInterpolator) if len(self.time_s) > 3 else (PchipInterpolator,)
+        for interpolator in interpolators:
+            f0_of_time = interpolator(self.time_s, self.f0_hz)
+            # Integrated from the first time on, so that the phase is zero there.
+            phase_of_time = f0_of_time.antiderivative()
+            phase = np.asarray(phase_of_time(self.time_s))
+            # The monotone interpolation where a cubic would swing through zero between far values.
+            if np.all(np.diff(phase) > 0.0):
+                break
+        return f0_of_time, phase_of_time, phase
 
     @property
     def cycles(self) -> int:
@@ -68,23 +58,28 @@ class Clock:
     @property
     def turns(self) -> float:
         """Cycles, whole and broken, between the first and the last time."""
-        return float(self._phase[-1])
+        return float(self._curves[2][-1])
 
     def instants_s(self, points: int) -> NDArray[np.float64]:
         """Times in seconds of `points` equal steps of every whole cycle, shape (cycles, points)."""
         count = self.cycles
+        f0_of_time, phase_of_time, known = self._curves
         # Straight lines between instants a millisecond apart are right to a tenth of a microsecond.
-        knots = min(points, max(1, int(np.ceil(1000.0 / float(self.f0_hz.min())))))
+        each = max(1, int(points * float(self.f0_hz.min()) / 1000.0))
+        while points % each:
+            each -= 1
+        knots = points // each
         phase = np.arange(count * knots + 1) / knots
-        coarse = np.minimum(self._time_of_phase(phase), self.time_s[-1])
-        # The inverse of a spline is no spline: one step of Newton's method makes it exact.
-        coarse -= (self._phase_of_time(coarse) - phase) / self._f0_of_time(coarse)
-        fine = np.interp(np.arange(count * points) * (knots / points), np.arange(count * knots + 1), coarse)
-        return np.asarray(fine.reshape(count, points))
+        coarse = np.interp(phase, known, self.time_s)
+        # The track is nearly straight from one of its values to the next: one step of Newton's method makes it exact.
+        coarse -= (phase_of_time(coarse) - phase) / f0_of_time(coarse)
+        fine = np.outer(np.diff(coarse), np.arange(each) / each)
+        fine += coarse[:-1, None]
+        return fine.reshape(count, points)
 
     def phase_at(self, time_s: NDArray[np.float64]) -> NDArray[np.float64]:
         """Phase in cycles since the first time, at any times in seconds between the first and the last."""
-        return np.asarray(self._phase_of_time(time_s))
+        return np.asarray(self._curves[1](time_s))
 
     def corrected(self, time_s: NDArray[np.float64], relative: NDArray[np.float64]) -> "Clock":
         """The clock with its fundamental raised by the fraction `relative`, given at `time_s` (shape (m,)).
@@ -93,69 +88,6 @@ class Clock:
         """
         f0_hz = self.f0_hz * (1.0 + np.interp(self.time_s, time_s, relative))
         return Clock(self.time_s, np.interp(np.clip(self.time_s, time_s[0], time_s[-1]), self.time_s, f0_hz))
-
-
-def points_per_cycle(f0_hz: float, highest_hz: float) -> int:
-    """Points N per cycle: at least the recording's own density, of a length that the FFT likes."""
-    return int(scipy.fft.next_fast_len(max(8, int(np.ceil((1.0 + _FADED_AT) * highest_hz / f0_hz)) + 1), real=True))
-
-
-class BandLimited:
-    """A recording that can be read between its samples.
-
-    Brought by FFT to twice the rate that its band needs, then a quintic B-spline whose passband is made flat in the
-    frequency domain (Unser 1999, IEEE Signal Process. Mag. 16(6):22): the gain is 1 up to the band's edge, and the
-    images of a component at half the edge (at the edge) stand 101 (57) dB under it.
-
-    Parameters
-    ----------
-    samples : array, shape (n,)
-    sample_rate_hz : float
-    highest_hz : float
-        Edge of the band that is wanted, Hz: at most half the sample rate. What lies above fades out within a twentieth.
-    """
-
-    def __init__(self, samples: NDArray[np.float64], sample_rate_hz: float, highest_hz: float) -> None:
-        margin = 64
-        size = int(scipy.fft.next_fast_len(len(samples) + 2 * margin, real=True))
-        size += size % 2
-        # Single precision throughout: its rounding lies 30 dB under the images, and it halves the time.
-        padded = np.zeros(size, dtype=np.float32)
-        padded[margin : margin + len(samples)] = samples
-        # Point-mirrored margins go on without a step or a kink and fade to nothing, so that neither end rings.
-        reach = min(margin, len(samples) - 1)
-        fade_in = 0.5 - 0.5 * np.cos(np.pi * (np.arange(reach) + 0.5) / max(1, reach))
-        padded[margin - reach : margin] = fade_in * (2.0 * samples[0] - samples[reach:0:-1])
-        padded[margin + len(samples) : margin + len(samples) + reach] = fade_in[::-1] * (
-            2.0 * samples[-1] - samples[-2 : -2 - reach : -1]
-        )
-        wanted = 4.0 * highest_hz / sample_rate_hz
-        dense = int(scipy.fft.next_fast_len(int(np.ceil(size * wanted)), real=True))
-        spectrum = scipy.fft.rfft(padded)
-        kept = min(len(spectrum), dense // 2, int(_FADED_AT * highest_hz / sample_rate_hz * size) + 1)
-        spectrum = spectrum[:kept] * _flattening(kept, highest_hz / sample_rate_hz * size, dense)
-        self._coefficients = scipy.fft.irfft(spectrum, dense) * np.float32(dense / size)
-        self._scale = sample_rate_hz * dense / size
-        self._origin = margin * dense / size
-        self.highest_hz = highest_hz
-
-    def at(self, time_s: NDArray[np.float64]) -> NDArray[np.float64]:
-        """The signal at any times in seconds, same shape."""
-        position = time_s.ravel() * self._scale + self._origin
-        values = scipy.ndimage.map_coordinates(
-            self._coefficients, position[None], output=np.float64, order=_SPLINE_ORDER, prefilter=False, mode="nearest"
-        )
-        return np.asarray(values.reshape(time_s.shape))
-
-
-def _flattening(count: int, edge: float, dense: int) -> NDArray[np.float32]:
-    """What makes the spline's passband flat up to bin `edge` and fades it out above, for `count` bins."""
-    # A smooth function: a few thousand values and straight lines between them are right to 1e-7.
-    place = np.linspace(0.0, count - 1.0, 4097)
-    gain = np.sinc(place / dense) ** -(_SPLINE_ORDER + 1)
-    fade = np.clip((place / edge - 1.0) / (_FADED_AT - 1.0), 0.0, 1.0)
-    gain *= 0.5 + 0.5 * np.cos(np.pi * fade)
-    return np.interp(np.arange(count), place, gain).astype(np.float32)
 
 
 def refine_clock(signal: BandLimited, clock: Clock, *, roughly: bool = False) -> Clock:
@@ -199,11 +131,13 @@ def refine_clock(signal: BandLimited, clock: Clock, *, roughly: bool = False) ->
         starts = np.arange(steps) * per_step
         ends = np.minimum(starts + per_step, len(instants) - 1)
         centre_s = 0.5 * (instants[starts, 0] + instants[ends, 0])
-        width = round(_SMOOTH_S * f0_hz / per_step) // 2 * 2 + 1
-        turn, smooth_turn = _common_turn(coefficients, width)
-        rigid = _rigid_clock(clock, centre_s, turn / (2.0 * np.pi))
-        relative = smooth_turn / (2.0 * np.pi * per_step)
-        clock = rigid or clock.corrected(0.5 * (centre_s[1:] + centre_s[:-1]), relative)
+        turn = _common_turn(coefficients) / (2.0 * np.pi)
+        rigid = _rigid_clock(clock, centre_s, turn)
+        if rigid is not None:
+            clock = rigid
+        else:
+            smooth = _smoothed(turn, round(_SMOOTH_S * f0_hz / per_step) // 2 * 2 + 1)
+            clock = clock.corrected(0.5 * (centre_s[1:] + centre_s[:-1]), smooth / per_step)
     return clock
 
 
@@ -247,24 +181,30 @@ def _without_jitter(clock: Clock) -> Clock:
     return Clock(time_s, scipy.ndimage.convolve1d(raw, weight / weight.sum(), mode="nearest"))
 
 
-def _common_turn(coefficients: NDArray[np.complex128], width: int) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
-    """Phase in radians by which the fundamental turns from each row of harmonics to the next, shape (rows - 1,).
-
-    As measured, and smoothed over `width` rows (an odd number; under five nothing is smoothed).
-    """
+def _common_turn(coefficients: NDArray[np.complex128]) -> NDArray[np.float64]:
+    """Phase in radians by which the fundamental turns from each row of harmonics to the next, shape (rows - 1,)."""
     step = coefficients[1:] * coefficients[:-1].conj()
     k = np.arange(1, step.shape[1] + 1)
     turn = np.zeros(len(step))
+    weight = k * np.abs(step)
     # Low harmonics first: theirs cannot wrap while the clock is still far off.
     for highest in (4, 16, _MOST_HARMONICS):
-        order = k[:highest]
-        rest = step[:, :highest] * np.exp(-1j * np.outer(turn, order))
-        weight = np.abs(rest)
-        turn += (weight * order * np.angle(rest)).sum(axis=1) / ((weight * order**2).sum(axis=1) + 1e-300)
+        rest = np.einsum("ij,ij->i", weight[:, :highest], np.angle(turned_back(step[:, :highest], turn)))
+        turn += rest / (weight[:, :highest] @ k[:highest] + 1e-300)
         if highest >= step.shape[1]:
             break
+    return turn
+
+
+def turned_back(harmonics: NDArray[np.complex128], turn: NDArray[np.float64]) -> NDArray[np.complex128]:
+    """Harmonics 1, 2, ... (columns), each row turned back by the fundamental's `turn` in radians, shape (rows,)."""
+    # Powers of one phasor cost a fifth of as many phasors.
+    return harmonics * np.cumprod(np.broadcast_to(np.exp(-1j * turn)[:, None], harmonics.shape), axis=1)
+
+
+def _smoothed(turn: NDArray[np.float64], width: int) -> NDArray[np.float64]:
+    """A series smoothed over `width` values (an odd number; under five nothing is smoothed)."""
     if not 5 <= width <= len(turn):
-        return turn, turn
-    return turn, scipy.signal.savgol_filter(
-        scipy.ndimage.median_filter(turn, 3, mode="nearest"), width, 3, mode="nearest"
-    )
+        return turn
+    lone_removed = scipy.ndimage.median_filter(turn, 3, mode="nearest")
+    return np.asarray(scipy.signal.savgol_filter(lone_removed, width, 3, mode="nearest"))

@@ -60,16 +60,18 @@ def analyse_blocks(cycles: NDArray[np.float64], count: int, f0_hz: float) -> Blo
     hop = (max(1, per_block // 2) if per_block >= _FEWEST_FOR_HANN else per_block) * cycles.shape[1]
     frames = np.lib.stride_tricks.sliding_window_view(cycles.ravel(), length)[::hop]
     spectra = scipy.fft.rfft(frames * (window / window.sum()), axis=1)[:, : (count + 1) * per_block]
-    power = spectra.real**2 + spectra.imag**2
-    total = power[:, per_block::per_block].sum(axis=1)
+    harmonics = spectra[:, per_block : count * per_block + 1 : per_block]
+    total = (harmonics.real**2 + harmonics.imag**2).sum(axis=1)
     usual = total > np.median(total) * 10.0 ** (-_DIP_DB / 10.0)
-    if usual.mean() >= 0.75:
-        spectra, power = spectra[usual], power[usual]
-    blocks = len(spectra)
+    if usual.mean() < 0.75:
+        usual[:] = True
+    blocks = int(usual.sum())
     linear_gain, square_gain = _overlap_gains(window, hop, blocks)
-    floor_power, freedom = _floor(power.mean(axis=0), per_block, count, 1.0 / square_gain)
+    parts = spectra.view(np.float64)
+    power = np.einsum("b,bk,bk->k", usual / blocks, parts, parts).reshape(-1, 2).sum(axis=1)
+    floor_power, freedom = _floor(power, per_block, count, 1.0 / square_gain)
     return Blocks(
-        harmonics=spectra[:, per_block : count * per_block + 1 : per_block],
+        harmonics=harmonics[usual],
         floor_power=floor_power,
         floor_freedom=freedom,
         linear_gain=linear_gain,

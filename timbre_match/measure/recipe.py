@@ -12,13 +12,14 @@ from timbre_match.errors import NoHeldNoteError
 from timbre_match.intake.cycles import Cycles, cut_cycles
 from timbre_match.intake.notes import HeldNote, NoteKind
 from timbre_match.intake.recording import Recording
+from timbre_match.intake.warp import turned_back
 from timbre_match.measure.blocks import Blocks, analyse_blocks
 
 _FALSE_ALARM = 1e-4
 _LEAST_EXCESS = 2.0
 _ACCURACY = 1e-11
 """What resampling itself leaves behind, as power re the strongest harmonic: -110 dB."""
-_STEP_S = 0.01
+_STEP_S = 0.02
 _DECIDING = 32
 
 
@@ -237,6 +238,6 @@ def _phases(harmonics: NDArray[np.complex128]) -> NDArray[np.float64]:
     """Phase of each c_k, shape (harmonics,), with time counted from where the fundamental's phase is zero."""
     k = np.arange(1, harmonics.shape[1] + 1)
     # Blocks may still turn a little against each other.
-    mean = (harmonics * np.exp(-1j * np.outer(_agreed_turn(harmonics, k), k))).sum(axis=0)
+    mean = turned_back(harmonics, _agreed_turn(harmonics, k)).sum(axis=0)
     turned = np.angle(mean) - k * np.angle(mean[0])
     return np.asarray((turned + np.pi) % (2.0 * np.pi) - np.pi)
