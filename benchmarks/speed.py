@@ -65,17 +65,23 @@ class Audio:
         return len(self.samples) / self.sample_rate_hz
 
 
-def time_of(run: Callable[[Audio], object], recordings: Sequence[Audio], repeats: int) -> float:
-    """Total seconds over the recordings; of each, the fastest of some repeats, after one run that does not count."""
-    run(min(recordings, key=lambda audio: audio.seconds))
-    total = 0.0
+def times_of(runs: Sequence[tuple[Callable[[Audio], object], int]], recordings: Sequence[Audio]) -> list[float]:
+    """Total seconds over the recordings of each run; of each recording, the fastest of the run's number of tries.
+
+    The runs take turns at every recording, since a shared machine is fast one minute and slow the next, and all of them
+    have gone once before anything counts.
+    """
+    for run, _ in runs:
+        run(min(recordings, key=lambda audio: audio.seconds))
+    total = [0.0] * len(runs)
     for audio in recordings:
-        tries = []
-        for _ in range(repeats):
-            start = time.process_time()
-            run(audio)
-            tries.append(time.process_time() - start)
-        total += min(tries)
+        for place, (run, tries) in enumerate(runs):
+            taken = []
+            for _ in range(tries):
+                start = time.process_time()
+                run(audio)
+                taken.append(time.process_time() - start)
+            total[place] += min(taken)
     return total
 
 
@@ -125,13 +131,18 @@ def print_speed(recordings: Sequence[Audio]) -> None:
     """Time everything and print the table."""
     seconds = sum(audio.seconds for audio in recordings)
     print(f"{len(recordings)} recordings, {seconds:.1f} s of sound, one core\n")
-    measured_s = time_of(measure, recordings, REPEATS)
-    rows = [("timbre_match, file to recipes", measured_s)]
-    rows.append((f"librosa.stft ({FFT_SIZE}, hop {HOP})", time_of(spectrogram, recordings, REPEATS)))
-    for name, low_hz, high_hz, frame in RANGES_HZ:
-        rows.append((f"librosa.pyin, {name}", time_of(pitch_by_pyin(low_hz, high_hz, frame), recordings, 1)))
+    runs: list[tuple[str, Callable[[Audio], object], int]] = [
+        ("timbre_match, file to recipes", measure, REPEATS),
+        (f"librosa.stft ({FFT_SIZE}, hop {HOP})", spectrogram, REPEATS),
+    ]
+    runs += [
+        (f"librosa.pyin, {name}", pitch_by_pyin(low_hz, high_hz, frame), 1)
+        for name, low_hz, high_hz, frame in RANGES_HZ
+    ]
+    times_s = times_of([(run, tries) for _, run, tries in runs], recordings)
+    measured_s = times_s[0]
     print(f"{'':40}{'time':>10}{'per second of sound':>22}{'against measuring':>20}")
-    for name, taken_s in rows:
+    for (name, _, _), taken_s in zip(runs, times_s, strict=True):
         print(f"{name:40}{taken_s:>8.2f} s{1000 * taken_s / seconds:>19.1f} ms{taken_s / measured_s:>19.2f}x")
 
 
