@@ -10,16 +10,24 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from timbre_match.compare.records import Verdict
 from timbre_match.compare.repeatability import ScatterPrior
 from timbre_match.errors import ComparisonError
 from timbre_match.measure.profile import Profile, Take
-from timbre_match.units import note_number
+from timbre_match.units import cents_between, note_number
 
 Array = NDArray[np.float64]
 IntArray = NDArray[np.int64]
 
 SET_ASIDE_WEIGHT = 0.3
 """A level whose robust weight is below this counts as set aside; at a typical tail it lies 4 scales off its fellows."""
+
+_UNHEARD_BELOW_DB = 10.0
+"""A harmonic that is not heard lies at most this far above its floor: what hearing takes in a low note of 0.3 s, as
+:mod:`timbre_match.measure.recipe` finds it; long notes take 3 dB."""
+_CLEARLY_DB = 6.0
+_LEAST_PAIRED = 4
+_NAMED = 3
 
 _ROUNDS = 8
 _PRIOR_SCALE_DF = 10.0
@@ -52,6 +60,25 @@ class Pairing:
     instrument: tuple[tuple[Array, Array], ...]
     target: tuple[tuple[Array, Array], ...]
     remarks: tuple[str, ...]
+
+
+@dataclass(frozen=True, kw_only=True, slots=True, eq=False)
+class _Levels:
+    """What one profile's takes, or one take's note, say of each harmonic; `ceiling_db` is what its level cannot exceed.
+
+    Shapes (n_takes, n_harmonics) for takes; (n_harmonics,), and (1,) for the frequency, for a note. The ceiling is the
+    level itself where heard, and NaN where nothing was measured.
+    """
+
+    level_db: Array
+    se_db: Array
+    ceiling_db: Array
+    f0_hz: Array
+
+    def heard_often(self) -> NDArray[np.bool_]:
+        """Which harmonics are heard in at least half of the takes that hold their note."""
+        heard = np.sum(np.isfinite(self.level_db), axis=0)
+        return np.asarray((heard > 0) & (2 * heard >= np.sum(np.isfinite(self.f0_hz), axis=0)))
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
@@ -104,20 +131,15 @@ def pair(instrument: Profile, members: tuple[Profile, ...]) -> Pairing:
         )
     remarks = _one_sided_remarks(our_names, their_names) + _tuning_remarks(instrument, members)
     size = {
-        name: max(notes[name][0].size for side in [ours, *theirs] for notes in side if name in notes) for name in common
+        name: max(notes[name].level_db.size for side in [ours, *theirs] for notes in side if name in notes)
+        for name in common
     }
     note_index = np.repeat(np.arange(len(common)), [size[name] for name in common])
     k = np.concatenate([np.arange(1, size[name] + 1) for name in common])
-
-    def stacked(takes: list[dict[str, tuple[Array, Array, float]]]) -> tuple[Array, Array, Array]:
-        rows = [[_padded(take.get(name), size[name]) for name in common] for take in takes]
-        level, se, f0 = (np.array([np.concatenate([part[i] for part in row]) for row in rows]) for i in range(3))
-        return level, se, f0
-
-    own = stacked(ours)
-    other = [stacked(member) for member in theirs]
-    keep = _heard_often(own[0], own[2]) & np.any([_heard_often(member[0], member[2]) for member in other], axis=0)
-    lone = int(np.sum(np.any(np.isfinite(own[0]), axis=0) & ~keep))
+    own = _stacked(ours, size)
+    other = [_stacked(member, size) for member in theirs]
+    own_heard, other_heard = own.heard_often(), np.any([member.heard_often() for member in other], axis=0)
+    keep = own_heard & other_heard
     if not np.any(keep):
         raise ComparisonError(
             f"no harmonic of {_listed(set(common))} is heard on both sides",
@@ -130,19 +152,29 @@ def pair(instrument: Profile, members: tuple[Profile, ...]) -> Pairing:
             cause="one of the recordings is very weak or very noisy",
             remedy="record closer or louder, and measure again",
         )
-    if lone:
-        remarks += (f"{lone} harmonics of the instrument have no counterpart that the target's takes let one hear",)
+    gap_db = np.array([_middle_gap_db(own, other, keep & (note_index == place)) for place in range(len(common))])
+    labels = [f"{common[place]} harmonic {number}" for place, number in zip(note_index, k, strict=True)]
+    stronger = _least_db([own], other, gap_db[note_index])
+    weaker = _least_db(other, [own], -gap_db[note_index])
+    remarks += _lone_remarks("instrument", "target", own_heard & ~keep, labels, stronger, "stronger")
+    remarks += _lone_remarks("target", "instrument", other_heard & ~keep, labels, weaker, "weaker")
     f0_hz = np.sqrt(
-        np.exp(_mean_log(own[2][:, keep])) * np.exp(_mean_log(np.concatenate([member[2] for member in other])[:, keep]))
+        np.exp(_mean_log(own.f0_hz[:, keep]))
+        * np.exp(_mean_log(np.concatenate([member.f0_hz for member in other])[:, keep]))
     )
     used = np.unique(note_index[keep])
+    if used.size == 1:
+        remarks += (
+            f"one note in common ({common[used[0]]}): one note cannot tell what the body does to all notes "
+            "from what is this note's own; more notes would",
+        )
     return Pairing(
         notes=tuple(common[i] for i in used),
         note_index=np.searchsorted(used, note_index[keep]),
         k=k[keep],
         freq_hz=k[keep] * f0_hz,
-        instrument=((own[0][:, keep], own[1][:, keep]),),
-        target=tuple((member[0][:, keep], member[1][:, keep]) for member in other),
+        instrument=((own.level_db[:, keep], own.se_db[:, keep]),),
+        target=tuple((member.level_db[:, keep], member.se_db[:, keep]) for member in other),
         remarks=remarks,
     )
 
@@ -249,38 +281,80 @@ def _fit_note(
     return gain, tilt, np.where(count > 0, base, np.nan), weight
 
 
-def _notes_of_take(take: Take) -> dict[str, tuple[Array, Array, float]]:
-    """Levels, standard errors and mean fundamental by note name; repeated notes are averaged."""
-    found: dict[str, tuple[Array, Array, float]] = {}
+def _notes_of_take(take: Take) -> dict[str, _Levels]:
+    """Levels, standard errors, ceilings and mean fundamental by note name; repeated notes are averaged."""
+    found: dict[str, _Levels] = {}
     for name in {recipe.note for recipe in take.notes}:
         recipes = [recipe for recipe in take.notes if recipe.note == name]
         size = max(int(recipe.k[-1]) if recipe.k.size else 0 for recipe in recipes)
-        level = np.full((len(recipes), size), np.nan)
-        se = np.full((len(recipes), size), np.nan)
+        level, se, ceiling = (np.full((len(recipes), size), np.nan) for _ in range(3))
         for row, recipe in enumerate(recipes):
             level[row, recipe.k - 1] = np.where(recipe.heard, recipe.level_db, np.nan)
             se[row, recipe.k - 1] = np.where(recipe.heard, recipe.se_db, np.nan)
+            ceiling[row, recipe.k - 1] = np.where(recipe.heard, recipe.level_db, recipe.floor_db + _UNHEARD_BELOW_DB)
         count = np.sum(np.isfinite(level), axis=0)
-        mean = np.where(count > 0, np.nansum(level, axis=0) / np.maximum(count, 1), np.nan)
-        error = np.sqrt(np.nansum(se**2, axis=0)) / np.maximum(count, 1)
-        f0 = math.exp(float(np.mean([math.log(recipe.f0_hz) for recipe in recipes])))
-        found[name] = (mean, error, f0)
+        found[name] = _Levels(
+            level_db=np.where(count > 0, np.nansum(level, axis=0) / np.maximum(count, 1), np.nan),
+            se_db=np.sqrt(np.nansum(se**2, axis=0)) / np.maximum(count, 1),
+            ceiling_db=np.max(ceiling, axis=0),
+            f0_hz=np.full(1, math.exp(float(np.mean([math.log(recipe.f0_hz) for recipe in recipes])))),
+        )
     return found
 
 
-def _padded(entry: tuple[Array, Array, float] | None, size: int) -> tuple[Array, Array, Array]:
-    level, se, f0 = np.full(size, np.nan), np.zeros(size), np.full(size, np.nan)
-    if entry is not None:
-        level[: entry[0].size] = entry[0]
-        se[: entry[1].size] = entry[1]
-        f0[:] = entry[2]
-    return level, se, f0
+def _stacked(takes: list[dict[str, _Levels]], size: dict[str, int]) -> _Levels:
+    """The notes of `size` side by side, each with that many harmonics; NaN where a take has no such note."""
+    shape = len(takes), sum(size.values())
+    level, se, ceiling, f0 = np.full(shape, np.nan), np.zeros(shape), np.full(shape, np.nan), np.full(shape, np.nan)
+    starts = np.cumsum([0, *size.values()])
+    for row, take in enumerate(takes):
+        for (name, width), start in zip(size.items(), starts[:-1], strict=True):
+            if name in take:
+                note = take[name]
+                here = slice(start, start + note.level_db.size)
+                level[row, here], se[row, here], ceiling[row, here] = note.level_db, note.se_db, note.ceiling_db
+                f0[row, start : start + width] = note.f0_hz
+    return _Levels(level_db=level, se_db=se, ceiling_db=ceiling, f0_hz=f0)
 
 
-def _heard_often(level_db: Array, f0_hz: Array) -> NDArray[np.bool_]:
-    """Which harmonics are heard in at least half of the takes that hold their note."""
-    heard = np.sum(np.isfinite(level_db), axis=0)
-    return np.asarray((heard > 0) & (2 * heard >= np.sum(np.isfinite(f0_hz), axis=0)))
+def _middle_gap_db(own: _Levels, other: list[_Levels], here: NDArray[np.bool_]) -> float:
+    """Own level less the members', dB, in the middle of the harmonics `here`; NaN where they are too few to tell."""
+    if np.count_nonzero(here) < _LEAST_PAIRED:
+        return math.nan
+    members = np.concatenate([member.level_db[:, here] for member in other])
+    return float(np.median(np.nanmean(own.level_db[:, here], axis=0) - np.nanmean(members, axis=0)))
+
+
+def _least_db(heard: list[_Levels], unheard: list[_Levels], gap_db: Array) -> Array:
+    """How much stronger each harmonic, shape (n,), is at least on the side that hears it, `gap_db` taken off.
+
+    The weakest take of the one side against the highest ceiling of the other's; NaN where a take of the other that
+    holds the note says nothing of the harmonic.
+    """
+    weakest = np.min([_lowest(side.level_db) for side in heard], axis=0)
+    ceilings = [np.where(np.isfinite(side.f0_hz), side.ceiling_db, -np.inf) for side in unheard]
+    return np.asarray(weakest - np.max(np.concatenate(ceilings), axis=0) - gap_db)
+
+
+def _lowest(level_db: Array) -> Array:
+    return np.asarray(np.min(np.where(np.isfinite(level_db), level_db, np.inf), axis=0))
+
+
+def _lone_remarks(
+    side: str, other: str, lone: NDArray[np.bool_], labels: list[str], least_db: Array, word: Verdict
+) -> tuple[str, ...]:
+    """Count the harmonics that one side alone lets one hear, and name those that are clearly stronger there."""
+    count = int(np.count_nonzero(lone))
+    if not count:
+        return ()
+    harmonics = "1 harmonic" if count == 1 else f"{count} harmonics"
+    plain = f"{harmonics} of the {side} without a counterpart that the {other}'s takes let one hear: left out"
+    places = np.flatnonzero(lone & (least_db >= _CLEARLY_DB))
+    if not places.size:
+        return (plain,)
+    farthest = places[np.argsort(-least_db[places], kind="stable")][:_NAMED]
+    named = "; ".join(f"at least {math.floor(least_db[place])} dB {word}: {labels[place]}" for place in farthest)
+    return (f"{plain}; going by the {other}'s noise, and against the middle of each note, {named}",)
 
 
 def _mean_log(values: Array) -> Array:
@@ -305,7 +379,9 @@ def _tuning_remarks(instrument: Profile, members: tuple[Profile, ...]) -> tuple[
     if not others:
         return ()
     listed = ", ".join(f"{a4:g}" for a4 in others)
+    cents = max(abs(cents_between(instrument.a4_hz, a4)) for a4 in others)
     return (
-        f"tuned apart (A4 at {instrument.a4_hz:g} Hz against {listed} Hz): notes are paired by name, "
-        "so the same harmonic lies at slightly different frequencies on the two sides",
+        f"tuned apart (A4 at {instrument.a4_hz:g} Hz against {listed} Hz): notes are paired by name, so the same "
+        f"harmonic lies up to {cents:.0f} cents apart on the two sides; a body's peaks stay where they are, and on "
+        "their flanks the tuning alone makes a difference",
     )
