@@ -9,11 +9,14 @@ import pytest
 from numpy.typing import NDArray
 
 from tests.compare.simulated import NOTES, base_levels, dip, profile
+from tests.intake.sounds import recording_of
 from timbre_match.compare import compare
+from timbre_match.compare.alignment import UNHEARD_BELOW_DB
 from timbre_match.compare.records import Comparison
 from timbre_match.compare.target import blend
+from timbre_match.intake.notes import held_notes
 from timbre_match.measure.profile import Profile, Take
-from timbre_match.measure.recipe import Recipe
+from timbre_match.measure.recipe import Recipe, measure_recipe
 from timbre_match.units import note_to_hz
 
 Array = NDArray[np.float64]
@@ -44,7 +47,7 @@ def noisy(whole: Profile, floor_db: float) -> Profile:
 
 def named(found: Comparison, word: str) -> dict[tuple[str, int], int]:
     """What the remarks call at least so many dB stronger or weaker."""
-    pattern = rf"at least (\d+) dB {word}: (\S+) harmonic (\d+)"
+    pattern = rf"at least (-?\d+) dB {word}: (\S+) harmonic (\d+)"
     return {(note, int(k)): int(least) for remark in found.remarks for least, note, k in re.findall(pattern, remark)}
 
 
@@ -124,11 +127,11 @@ def test_harmonics_of_either_side_alone_are_counted() -> None:
 
 
 def test_a_harmonic_that_the_other_side_must_have_weaker_is_named() -> None:
-    strong = profile(1, own={("G3", 30): 32.0})
+    strong = profile(1, own={("G3", 30): 36.0})
     weak = noisy(profile(2), -36.0)
     there, back = compare(strong, weak), compare(weak, strong)
     assert set(named(there, "stronger")) == {("G3", 30)}
-    assert 6 <= named(there, "stronger")["G3", 30] <= 32
+    assert 6 <= named(there, "stronger")["G3", 30] <= 36
     assert named(there, "weaker") == {}
     assert named(back, "weaker") == named(there, "stronger")
     assert named(back, "stronger") == {}
@@ -171,3 +174,26 @@ def test_one_member_of_a_blend_that_hears_a_harmonic_is_enough() -> None:
     quiet, loud = noisy(profile(2), -36.0), profile(3)
     found = compare(profile(1), blend("pair", (quiet, loud)))
     assert not any("without a counterpart" in remark for remark in found.remarks)
+
+
+@pytest.mark.parametrize("duration_s", [0.3, 1.0])
+@pytest.mark.parametrize("f0_hz", [110.0, 440.0])
+def test_what_a_measurement_does_not_hear_lies_under_its_ceiling(f0_hz: float, duration_s: float) -> None:
+    # Harmonics of known level that sink into white noise, through the measurement itself.
+    rate_hz = 44_100
+    unheard = 0
+    for seed in range(4):
+        rng = np.random.default_rng(seed)
+        time_s = np.arange(round(duration_s * rate_hz)) / rate_hz
+        k = np.arange(1, 37)
+        power = 10.0 ** (-0.2 * (k - 1))
+        partials = np.sqrt(power) * np.cos(2.0 * np.pi * f0_hz * np.outer(time_s, k) + rng.uniform(0.0, 6.0, k.size))
+        tone = np.pad(np.sum(partials, axis=1), rate_hz // 4)
+        recording = recording_of(0.1 * tone + 3e-3 * rng.standard_normal(tone.size), rate_hz)
+        recipe = measure_recipe(recording, held_notes(recording)[0])
+        assert recipe.f0_hz == pytest.approx(f0_hz, rel=0.01)
+        lost = np.flatnonzero(~recipe.heard[: k.size])
+        truth_db = 10.0 * np.log10(power / np.sum(power))
+        assert np.all(truth_db[lost] < recipe.floor_db[lost] + UNHEARD_BELOW_DB)
+        unheard += lost.size
+    assert unheard > 0

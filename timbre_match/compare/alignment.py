@@ -22,9 +22,10 @@ IntArray = NDArray[np.int64]
 SET_ASIDE_WEIGHT = 0.3
 """A level whose robust weight is below this counts as set aside; at a typical tail it lies 4 scales off its fellows."""
 
-_UNHEARD_BELOW_DB = 10.0
-"""A harmonic that is not heard lies at most this far above its floor: what hearing takes in a low note of 0.3 s, as
-:mod:`timbre_match.measure.recipe` finds it; long notes take 3 dB."""
+UNHEARD_BELOW_DB = 12.0
+"""A harmonic that is not heard lies at most this far above its floor: so far does one in a note of 0.3 s have to stand
+out of a floor that is then uncertain itself, as :mod:`timbre_match.measure.recipe` goes. Long notes take 3 dB."""
+
 _CLEARLY_DB = 6.0
 _LEAST_PAIRED = 4
 _NAMED = 3
@@ -291,7 +292,7 @@ def _notes_of_take(take: Take) -> dict[str, _Levels]:
         for row, recipe in enumerate(recipes):
             level[row, recipe.k - 1] = np.where(recipe.heard, recipe.level_db, np.nan)
             se[row, recipe.k - 1] = np.where(recipe.heard, recipe.se_db, np.nan)
-            ceiling[row, recipe.k - 1] = np.where(recipe.heard, recipe.level_db, recipe.floor_db + _UNHEARD_BELOW_DB)
+            ceiling[row, recipe.k - 1] = np.where(recipe.heard, recipe.level_db, recipe.floor_db + UNHEARD_BELOW_DB)
         count = np.sum(np.isfinite(level), axis=0)
         found[name] = _Levels(
             level_db=np.where(count > 0, np.nansum(level, axis=0) / np.maximum(count, 1), np.nan),
