@@ -31,9 +31,9 @@ def harmonics_hz(f0_hz: float) -> Array:
     return f0_hz * np.arange(1.0, np.floor(10000.0 / f0_hz) + 1.0)
 
 
-def played(level_db: Array, sound_pressure_db: float = PLAYED_DB) -> Array:
-    """Levels raised together to a sound pressure level of the whole tone, dB re 20 uPa."""
-    return np.asarray(level_db - 10.0 * np.log10(np.sum(db_to_power(level_db))) + sound_pressure_db)
+def played(level_db: Array) -> Array:
+    """Levels raised together so that the whole tone has the level at which one plays, dB re 20 uPa."""
+    return np.asarray(level_db - 10.0 * np.log10(np.sum(db_to_power(level_db))) + PLAYED_DB)
 
 
 def ramps(time_s: Array) -> Array:
