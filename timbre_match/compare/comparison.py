@@ -19,6 +19,7 @@ from timbre_match.compare.records import (
     Repeatability,
     Verdict,
 )
+from timbre_match.compare.sessions import session_remarks
 from timbre_match.compare.target import Target, as_target
 from timbre_match.measure.profile import Profile
 
@@ -113,7 +114,10 @@ def compare(
         harmonics=harmonics,
         body_curve=curve,
         regions=_regions(evidence, estimates, curve),
-        remarks=evidence.remarks + _family_remarks(whole, distance) + _remarks(harmonics),
+        remarks=session_remarks(profile, whole, control)
+        + evidence.remarks
+        + _family_remarks(whole, distance)
+        + _remarks(harmonics),
     )
 
 

@@ -11,7 +11,7 @@ from timbre_match.errors import NoHeldNoteError, RecordingError, TimbreMatchErro
 from timbre_match.intake.notes import HeldNote, held_notes
 from timbre_match.intake.recording import Recording, read_recording
 from timbre_match.measure.interrupts import deaf_children, interrupts_held_back
-from timbre_match.measure.profile import Profile, Source, Take
+from timbre_match.measure.profile import Profile, Session, Source, Take
 from timbre_match.measure.recipe import Recipe, measure_recipe
 
 Progress = Callable[[Iterable["Heard"], int], Iterable["Heard"]]
@@ -166,6 +166,7 @@ def measure_takes(
     instrument: str = "",
     stage: str = "",
     family: str = "",
+    session: Session | None = None,
     jobs: int = 1,
     progress: Progress | None = None,
 ) -> Measured:
@@ -207,7 +208,14 @@ def measure_takes(
         if len(failures) == 1:
             raise failures[0]
         raise RecordingError("none of the recordings can be used:\n" + "\n".join(str(error) for error in failures))
-    profile = Profile(instrument=instrument, stage=stage, family=family, a4_hz=listening.a4_hz, takes=tuple(measured))
+    profile = Profile(
+        instrument=instrument,
+        stage=stage,
+        family=family,
+        a4_hz=listening.a4_hz,
+        takes=tuple(measured),
+        session=session or Session(),
+    )
     warnings = _gathered_warnings(results) + _warnings_about_takes(results, profile, listening)
     return Measured(profile=profile, warnings=warnings, failures=tuple(failures))
 
