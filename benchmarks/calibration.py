@@ -4,7 +4,7 @@ Each comparison draws one instrument of the package's tables of repeats, two sid
 curve plus deviations of single harmonics), and takes that scatter as the tables say: Student t scatter of each level,
 tilts of takes and notes, a smooth wobble. The estimator never sees these figures except through its own pooled prior.
 
-    python benchmarks/calibration.py --comparisons 200
+    python -m benchmarks.calibration --comparisons 200
 """
 
 import argparse
@@ -22,8 +22,8 @@ from scipy import optimize, stats
 
 from timbre_match.compare import colour, compare
 from timbre_match.compare.body_curve import reference_level
-from timbre_match.compare.comparison import Comparison, loudness_on
-from timbre_match.compare.playing import gather
+from timbre_match.compare.comparison import Comparison
+from timbre_match.compare.playing import Evidence, gather
 from timbre_match.compare.target import as_target
 from timbre_match.measure.profile import Profile, Source, Take
 from timbre_match.measure.recipe import Recipe
@@ -180,7 +180,7 @@ def outcome(rng: np.random.Generator, truth: Truth, takes: int, notes: int) -> O
     hz = np.array([point.freq_hz for point in comparison.body_curve])
     evidence = gather(instrument, as_target(target))
     curve = truth.curve(hz)
-    constant = float(reference_level(curve[None], loudness_on(hz, evidence))[0])
+    constant = float(reference_level(curve[None], evidence.loudness(hz))[0])
     curve = curve - constant
     low, high, band_low, band_high = np.array(
         [
@@ -195,7 +195,7 @@ def outcome(rng: np.random.Generator, truth: Truth, takes: int, notes: int) -> O
     called = np.isin(verdicts, ["stronger", "weaker"])
     wrong = called & (np.sign(value) * d <= 0)
     alike = verdicts == "alike"
-    lone_value, lone_half = unpooled(instrument, target)
+    lone_value, lone_half = unpooled(evidence)
     found, centre, size = _found(comparison, truth)
     true_bands = colour.all_bands(evidence.note_index, evidence.freq_hz, evidence.target_db, d[None, :])
     true_distance = float(colour.colour_distance(true_bands)[0])
@@ -220,9 +220,8 @@ def outcome(rng: np.random.Generator, truth: Truth, takes: int, notes: int) -> O
     )
 
 
-def unpooled(instrument: Profile, target: Profile) -> tuple[Array, Array]:
+def unpooled(evidence: Evidence) -> tuple[Array, Array]:
     """Each harmonic on its own: mean difference, gains aligned by the median, and a moderated t interval."""
-    evidence = gather(instrument, as_target(target))
     row = evidence.differences
     value = row.value_db.copy()
     for note in np.unique(row.note):

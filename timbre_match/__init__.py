@@ -30,7 +30,7 @@ if TYPE_CHECKING:
         save_target,
     )
     from timbre_match.measure import dtfs
-    from timbre_match.measure.profile import Profile, Take
+    from timbre_match.measure.profile import Profile, Session, Take
     from timbre_match.measure.recipe import Recipe, measure_recipe
     from timbre_match.pipeline import compare_and_advise, measure_profile
 
@@ -41,6 +41,7 @@ _HOME = {
     "Profile": "measure.profile",
     "Recipe": "measure.recipe",
     "Recording": "intake.recording",
+    "Session": "measure.profile",
     "Take": "measure.profile",
     "Target": "compare.target",
     "TimbreMatchError": "errors",
@@ -67,6 +68,7 @@ __all__ = [
     "Profile",
     "Recipe",
     "Recording",
+    "Session",
     "Take",
     "Target",
     "TimbreMatchError",

@@ -22,6 +22,7 @@ from timbre_match.errors import TimbreMatchError, UnknownNameError
 if TYPE_CHECKING:
     from rich.console import RenderableType
 
+    from timbre_match.measure.profile import Session
     from timbre_match.measure.takes import Heard, Listening
 
 EXIT_ERROR = 1
@@ -133,6 +134,13 @@ def measure(
     instrument: Annotated[str, typer.Option("--instrument", help="The instrument's name.")] = "",
     stage: Annotated[str, typer.Option("--stage", help='The state of the build, such as "in the white".')] = "",
     family: Annotated[str, typer.Option("--family", help="Violin, viola, cello, clarinet, flute ...")] = "",
+    date: Annotated[
+        str, typer.Option("--date", metavar="YYYY-MM-DD", help="The day of the recording, such as 2026-03-01.")
+    ] = "",
+    room: Annotated[str, typer.Option("--room", help='Where it was recorded, such as "workshop, by the window".')] = "",
+    microphone: Annotated[
+        str, typer.Option("--microphone", help="Which microphone, and where it stood. Same words for the same place.")
+    ] = "",
     notes: Notes = None,
     a4: A4 = 440.0,
     channel: Channel = None,
@@ -143,6 +151,7 @@ def measure(
     from timbre_match.measure.takes import measure_takes
     from timbre_match.show.tables import profile_summary
 
+    session = _session(date, room, microphone)
     check_output(out, takes, kind="profile")
     measured = measure_takes(
         takes,
@@ -150,6 +159,7 @@ def measure(
         instrument=instrument,
         stage=stage,
         family=family,
+        session=session,
         jobs=jobs,
         progress=_progress,
     )
@@ -287,6 +297,15 @@ def _family_warning(family: str) -> tuple[str, ...]:
     except UnknownNameError:
         return (f"No table of what to try for {family!r}; there is one for {', '.join(families())}.",)
     return ()
+
+
+def _session(date: str, room: str, microphone: str) -> "Session":
+    from timbre_match.measure.profile import Session
+
+    try:
+        return Session(date=date, room=room, microphone=microphone)
+    except UnknownNameError as error:
+        raise typer.BadParameter(str(error), param_hint="--date") from error
 
 
 def _listening(notes: str | None, a4_hz: float, channel: int | None) -> "Listening":

@@ -10,7 +10,7 @@ from timbre_match.advise.suggestions import Suggestion, suggest
 from timbre_match.compare.comparison import DEFAULT_MARGIN_DB, compare
 from timbre_match.compare.records import Comparison
 from timbre_match.compare.target import Target, as_target
-from timbre_match.measure.profile import Profile
+from timbre_match.measure.profile import Profile, Session
 from timbre_match.measure.takes import Listening, Progress, measure_takes
 
 if TYPE_CHECKING:
@@ -23,6 +23,7 @@ def measure_profile(
     instrument: str = "",
     stage: str = "",
     family: str = "",
+    session: Session | None = None,
     notes: Sequence[str] | None = None,
     a4_hz: float = units.STANDARD_A4_HZ,
     channel: int | None = None,
@@ -36,6 +37,8 @@ def measure_profile(
         Each a recording, or a folder whose recordings together are one take.
     instrument, stage, family : str
         As the maker names them; may be empty.
+    session : Session, optional
+        When, where and with what the takes were recorded.
     notes : sequence of str, optional
         The notes that were played, which settles doubt about octaves.
     a4_hz : float
@@ -56,7 +59,13 @@ def measure_profile(
     """
     listening = Listening(notes=tuple(notes) if notes else None, a4_hz=a4_hz, channel=channel)
     measured = measure_takes(
-        [Path(take) for take in takes], listening, instrument=instrument, stage=stage, family=family, jobs=jobs
+        [Path(take) for take in takes],
+        listening,
+        instrument=instrument,
+        stage=stage,
+        family=family,
+        session=session,
+        jobs=jobs,
     )
     if measured.failures:
         raise measured.failures[0]

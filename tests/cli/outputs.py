@@ -13,7 +13,8 @@ PLAYED = ("G3", "D4", "A4")
 
 # The contract: keys that programs outside this repository read.
 NOTE_KEYS = {"note", "f0_hz", "cents", "start_s", "end_s", "cycles", "kind"}
-PROFILE_KEYS = {"format", "version", "instrument", "stage", "family", "a4_hz", "takes"}
+PROFILE_CONTRACT = {"format", "version", "instrument", "stage", "family", "a4_hz", "takes"}
+PROFILE_ADDED = {"session"}
 HARMONIC_KEYS = {"k", "freq_hz", "level_db", "se_db", "floor_db", "heard", "phase_rad"}
 COMPARISON_CONTRACT = {
     "format",

@@ -1,5 +1,6 @@
 """The command `compare`."""
 
+import json
 from pathlib import Path
 
 from tests.cli.outputs import assert_comparison_keys, assert_figures, assert_same, content, parsed, short_note
@@ -51,6 +52,30 @@ def test_compare_for_human_eyes(run: CommandLine, profile: Path, tmp_path: Path)
     assert "Closeness" in ended.out
     assert str(tmp_path / "figures") in ended.out
     assert_figures(tmp_path / "figures")
+
+
+def in_session(profile: Path, out: Path, **noted: str) -> Path:
+    out.write_text(json.dumps(content(profile) | {"session": noted}), encoding="utf-8")
+    return out
+
+
+def test_another_session_is_pointed_out_unless_there_is_a_control(
+    run: CommandLine, profile: Path, tmp_path: Path
+) -> None:
+    now = in_session(profile, tmp_path / "now.json", date="2026-03-01", room="workshop")
+    then = in_session(profile, tmp_path / "then.json", date="2026-01-10", room="Workshop")
+    said = "recorded in another session than the target (date 2026-03-01 against 2026-01-10)"
+    assert said in run("compare", now, "--target", then).out
+
+    def remarks(*control: str | Path) -> list[str]:
+        whole = parsed(run("compare", now, "--target", then, "--json", *control).out)
+        return [remark for remark in whole["remarks"] if "recorded in" in remark]
+
+    (remark,) = remarks()
+    assert remark.startswith(said)
+    assert remarks("--control-now", now, "--control-then", then) == []
+    exchanged = remarks("--control-now", then, "--control-then", now)
+    assert [remark.partition(":")[0] for remark in exchanged] == ["control now", "control then"]
 
 
 def test_places_that_cannot_be_written_are_named_before_the_work(

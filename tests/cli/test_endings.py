@@ -28,6 +28,7 @@ from tests.intake.sounds import write
         ["notes", "a.wav", "--notes", "H7"],
         ["notes", "a.wav", "--notes", ""],
         ["measure", "a.wav", "--out", "p.json", "--jobs", "0"],
+        ["measure", "a.wav", "--out", "p.json", "--date", "2026-02-30"],
         ["measure", "a.wav", "--out", "p.json", "--louder"],
     ],
     ids=" ".join,
@@ -48,6 +49,12 @@ def test_a_wrong_note_name_is_explained(run: CommandLine) -> None:
     ended = run("notes", "a.wav", "--notes", "G3 H7")
     assert "H7" in ended.err
     assert "--notes" in ended.err
+
+
+def test_a_wrong_date_is_explained(run: CommandLine, tmp_path: Path) -> None:
+    ended = run("measure", "a.wav", "--out", tmp_path / "p.json", "--date", "1.3.2026")
+    assert ended.code == 2
+    assert all(part in ended.err for part in ("1.3.2026", "--date", "2026-03-01"))
 
 
 @pytest.mark.parametrize("command", ["notes", "measure", "target", "compare", "export", "demo"])

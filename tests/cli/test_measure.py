@@ -7,15 +7,17 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from tests.cli.outputs import HARMONIC_KEYS, NOTE_KEYS, PLAYED, PROFILE_KEYS, assert_same, content
+import timbre_match as tm
+from tests.cli.outputs import HARMONIC_KEYS, NOTE_KEYS, PLAYED, PROFILE_ADDED, PROFILE_CONTRACT, assert_same, content
 from tests.command_line import CommandLine
 
 
 def test_profile_has_exactly_the_contract_s_keys(profile: Path, sounds: Path) -> None:
     whole = content(profile)
-    assert whole.keys() == PROFILE_KEYS
+    assert whole.keys() == PROFILE_CONTRACT | PROFILE_ADDED
     assert (whole["format"], whole["version"]) == ("timbre-match/profile", 1)
     assert (whole["instrument"], whole["stage"], whole["family"], whole["a4_hz"]) == ("Wren", "", "violin", 440.0)
+    assert whole["session"] == {"date": "", "room": "", "microphone": ""}
     assert len(whole["takes"]) == 2
     for number, take in enumerate(whole["takes"], start=1):
         assert take.keys() == {"recordings", "notes"}
@@ -49,6 +51,23 @@ def test_measure_says_what_it_did(run: CommandLine, sounds: Path, tmp_path: Path
     assert "in the white" in ended.out
     assert str(out) in ended.out
     assert [path.name for path in tmp_path.iterdir()] == [out.name]
+
+
+def test_the_session_is_noted(run: CommandLine, sounds: Path, tmp_path: Path) -> None:
+    out = tmp_path / "wren.json"
+    noted = ("--date", "2026-03-01", "--room", "workshop", "--microphone", "small condenser, 0.7 m")
+    ended = run("measure", sounds / "single" / "2_A4.flac", "--out", out, *noted)
+    assert (ended.code, ended.err) == (0, "")
+    assert content(out)["session"] == {
+        "date": "2026-03-01",
+        "room": "workshop",
+        "microphone": "small condenser, 0.7 m",
+    }
+
+
+def test_the_session_is_noted_from_python(sounds: Path) -> None:
+    session = tm.Session(date="2026-03-01", room="workshop")
+    assert tm.measure_profile([sounds / "single" / "2_A4.flac"], session=session).session == session
 
 
 def test_a_folder_is_one_take(run: CommandLine, sounds: Path, tmp_path: Path) -> None:

@@ -31,7 +31,12 @@ def test_one_take_a_side_leaves_the_prior_alone() -> None:
     prior = scatter_prior("violin")
     assert evidence.repeats == ()
     assert evidence.differences.scatter_variance == pytest.approx(2 * prior.scale_at(evidence.freq_hz) ** 2)
-    assert np.exp(evidence.prior.centre[model.TAKE_TILT]) == pytest.approx(prior.take_tilt_db)
+    # Mean of the square of a log-normal variable: exp(2 mu + 2 sigma^2).
+    spread = 1.0 / np.diag(evidence.prior.precision)
+    expected = np.exp(2 * evidence.prior.centre + 2 * spread)
+    assert expected[model.TAKE_TILT] == pytest.approx(prior.take_tilt_db**2)
+    assert expected[model.NOTE_TILT] == pytest.approx(prior.note_tilt_db**2)
+    assert expected[model.SCATTER] == pytest.approx(1.0)
 
 
 def test_family_of_the_target_speaks_where_the_instrument_names_none() -> None:

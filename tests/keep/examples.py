@@ -1,5 +1,6 @@
 """Profiles, targets and comparisons to write and read, by hand and by Hypothesis."""
 
+import datetime
 import math
 
 import numpy as np
@@ -15,7 +16,7 @@ from timbre_match.compare.records import (
     Region,
     Repeatability,
 )
-from timbre_match.measure.profile import Profile, Source, Take
+from timbre_match.measure.profile import Profile, Session, Source, Take
 from timbre_match.measure.recipe import Recipe
 
 SHA = "0123456789abcdef" * 4
@@ -58,6 +59,7 @@ def profile(*, instrument: str = "No. 41", stage: str = "in the white", takes: i
             )
             for number in range(1, takes + 1)
         ),
+        session=Session(date="2026-03-01", room="workshop", microphone="small condenser, 0.7 m"),
     )
 
 
@@ -170,4 +172,9 @@ def profiles(draw: st.DrawFn) -> Profile:
         family=draw(_text),
         a4_hz=draw(st.floats(380.0, 480.0)),
         takes=tuple(draw(st.lists(takes, min_size=1, max_size=3))),
+        session=Session(
+            date=draw(st.one_of(st.just(""), st.dates().map(datetime.date.isoformat))),
+            room=draw(_text),
+            microphone=draw(_text),
+        ),
     )

@@ -28,7 +28,7 @@ from timbre_match.keep.files import (
     save_profile,
     save_target,
 )
-from timbre_match.measure.profile import Profile
+from timbre_match.measure.profile import Profile, Session
 
 Content = dict[str, Any]
 
@@ -47,6 +47,7 @@ def as_content(one: Profile) -> Content:
 def assert_same(one: Profile, other: Profile) -> None:
     """Equal to within the rounding that the module states."""
     assert (one.instrument, one.stage, one.family) == (other.instrument, other.stage, other.family)
+    assert one.session == other.session
     assert one.a4_hz == pytest.approx(other.a4_hz, abs=1e-6)
     assert [take.recordings for take in one.takes] == [take.recordings for take in other.takes]
     for take, other_take in zip(one.takes, other.takes, strict=True):
@@ -74,7 +75,8 @@ def test_profile_loaded_and_saved_again_is_the_same(tmp_path_factory: pytest.Tem
 
 def test_profile_has_exactly_the_keys_of_the_contract() -> None:
     content = as_content(profile())
-    assert list(content) == ["format", "version", "instrument", "stage", "family", "a4_hz", "takes"]
+    assert list(content) == ["format", "version", "instrument", "stage", "family", "a4_hz", "session", "takes"]
+    assert content["session"] == {"date": "2026-03-01", "room": "workshop", "microphone": "small condenser, 0.7 m"}
     assert (content["format"], content["version"]) == ("timbre-match/profile", 1)
     take = content["takes"][0]
     assert list(take) == ["recordings", "notes"]
@@ -149,6 +151,21 @@ def test_unknown_keys_are_ignored(tmp_path: Path) -> None:
     assert_same(profile(), load_profile(saved(tmp_path, content)))
 
 
+def test_older_files_without_a_session_have_none_noted(tmp_path: Path) -> None:
+    content = as_content(profile())
+    del content["session"]
+    silent = replace(profile(), session=Session())
+    assert_same(silent, load_profile(saved(tmp_path, content)))
+    target = {"format": "timbre-match/target", "version": 1, "name": "the five", "members": [content]}
+    assert_same(silent, load_target(saved(tmp_path, target)).members[0])
+
+
+def test_a_session_may_be_noted_in_part(tmp_path: Path) -> None:
+    content = as_content(profile())
+    content["session"] = {"room": "workshop"}
+    assert load_profile(saved(tmp_path, content)).session == Session(room="workshop")
+
+
 def set_at(*steps: str | int, to: object) -> Callable[[Content], None]:
     def change(content: Content) -> None:
         inner: Any = content
@@ -202,6 +219,11 @@ WRONG = {
         r"recordings\[0\]\.sha256: should be 64 hexadecimal digits, but is a text",
     ),
     "no takes": (set_at("takes", to=[]), "takes: should hold at least one entry, but is empty"),
+    "no date": (set_at("session", "date", to="2026-02-30"), "session.date: '2026-02-30' is not a date; write it like"),
+    "long date": (set_at("session", "date", to="2" * 10_000), r"session\.date: '2{27}\.\.\.' is not a date"),
+    "room as number": (set_at("session", "room", to=3), r"session\.room: should be a text, but is a number \(3\)"),
+    "half a microphone": (set_at("session", "microphone", to="\ud800"), "session.microphone: the text holds half"),
+    "session is null": (set_at("session", to=None), "session: should be a group of keys, but is null"),
     "take is null": (set_at("takes", 1, to=None), r"takes\[1\]: should be a group of keys, but is null"),
     "half a character": (set_at("instrument", to="\ud800"), "instrument: the text holds half a character"),
     "long text": (set_at("a4_hz", to="x" * 10_000), r"a4_hz: should be a number, .*x\.\.\.\)"),

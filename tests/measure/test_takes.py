@@ -54,6 +54,18 @@ def test_a_note_that_was_played_but_not_found_is_named(tmp_path: Path) -> None:
     assert "Not found: D4." in measured.warnings
 
 
+def test_a_note_named_too_low_is_doubted(tmp_path: Path) -> None:
+    sounds = written(tmp_path / "g.wav", tone(392.0))
+    low = measure_takes([sounds], Listening(notes=("G3",))).warnings
+    assert any(
+        warning.startswith("G3 was read as it was named, but only every second") and "G4" in warning for warning in low
+    )
+    assert not measure_takes([sounds], Listening(notes=("G4",))).warnings
+    twelfth = written(tmp_path / "d.wav", tone(3 * 196.0))
+    low = measure_takes([twelfth], Listening(notes=("G3",))).warnings
+    assert any("every third" in warning and "D5" in warning for warning in low)
+
+
 def test_a_folder_without_recordings(tmp_path: Path) -> None:
     with pytest.raises(RecordingError, match="no recording in this folder"):
         measure_takes([tmp_path], Listening())

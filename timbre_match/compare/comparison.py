@@ -19,6 +19,7 @@ from timbre_match.compare.records import (
     Repeatability,
     Verdict,
 )
+from timbre_match.compare.sessions import session_remarks
 from timbre_match.compare.target import Target, as_target
 from timbre_match.measure.profile import Profile
 
@@ -113,7 +114,10 @@ def compare(
         harmonics=harmonics,
         body_curve=curve,
         regions=_regions(evidence, estimates, curve),
-        remarks=evidence.remarks + _family_remarks(whole, distance) + _remarks(harmonics),
+        remarks=session_remarks(profile, whole, control)
+        + evidence.remarks
+        + _family_remarks(whole, distance)
+        + _remarks(harmonics),
     )
 
 
@@ -133,12 +137,6 @@ def tolerance_db(target: Target) -> float | None:
     return float(np.sqrt(np.mean(np.square(found))))
 
 
-def loudness_on(grid_hz: Array, evidence: Evidence) -> Array:
-    """What each point of a grid counts for in the reference level: the loudness of the sides' mean, shape (g,)."""
-    level = 0.5 * (evidence.instrument_db + evidence.target_db)
-    return colour.loudness_over_frequency(evidence.note_index, evidence.freq_hz, level, grid_hz)
-
-
 def _estimated(evidence: Evidence, rng: np.random.Generator) -> tuple[Array, Estimates]:
     """Grid in Hz, and the fitted model's estimates on it.
 
@@ -151,8 +149,7 @@ def _estimated(evidence: Evidence, rng: np.random.Generator) -> tuple[Array, Est
     solutions = sampling.sample(row, prior, rng)
     grid_hz = body_curve.frequency_grid(evidence.freq_hz)
     octave, smooth = evidence.curve_columns(grid_hz)
-    loudness = loudness_on(grid_hz, evidence)
-    found = estimate(solutions, row, octave, smooth, loudness, rng, harmonics=evidence.freq_hz.size)
+    found = estimate(solutions, row, octave, smooth, evidence.loudness(grid_hz), rng, harmonics=evidence.freq_hz.size)
     return grid_hz, replace(
         found,
         harmonic_db=sign * found.harmonic_db,

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from timbre_match.compare import body_curve, model
+from timbre_match.compare import body_curve, colour, model
 from timbre_match.compare.alignment import SET_ASIDE_WEIGHT, AlignedTakes, Pairing, align_takes, pair
 from timbre_match.compare.repeatability import ScatterPrior, fit_variance_prior, moderated_variance, scatter_prior
 from timbre_match.compare.target import Target
@@ -72,6 +72,11 @@ class Evidence:
         """Octaves from the origin, shape (g,), and the curve's smooth columns, shape (g, n_smooth), at `freq_hz`."""
         octave = np.log2(freq_hz / self.origin_hz)
         return octave, body_curve.smooth_columns(octave, *self.span)
+
+    def loudness(self, freq_hz: Array) -> Array:
+        """What each point of a grid (g,) counts for in the reference level: its loudness in the mean of both sides."""
+        level_db = 0.5 * (self.instrument_db + self.target_db)
+        return colour.loudness_over_frequency(self.note_index, self.freq_hz, level_db, freq_hz)
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
@@ -284,7 +289,8 @@ def _model_prior(prior: ScatterPrior) -> model.Prior:
         (model.NOTE_TILT, prior.note_tilt_db, _NOTE_TILT_LOG_SD),
         (model.WOBBLE, prior.wobble_db, _WOBBLE_LOG_SD),
     ):
-        centre[place], sd[place] = math.log(value), log_sd
+        # A log-normal standard deviation about this centre has the value's square as its mean variance.
+        centre[place], sd[place] = math.log(value) - log_sd**2, log_sd
     return model.Prior(centre=centre, precision=np.diag(1.0 / sd**2))
 
 

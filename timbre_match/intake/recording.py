@@ -246,7 +246,8 @@ def _choose_channel(channels: NDArray[np.float64], rate: int, channel: int | Non
             raise RecordingError(
                 f"there is no channel {channel}: the recording has {count}",
                 where=where,
-                remedy=f"choose a channel from 1 to {count}, or none to take the strongest",
+                remedy=(f"choose a channel from 1 to {count}, or none" if count > 1 else "name no channel")
+                + " to take the strongest",
             )
         return channel - 1
     if count == 1:

@@ -29,7 +29,7 @@ from timbre_match.errors import OutputError
 from timbre_match.keep import layout
 from timbre_match.keep.checking import check, first_fault, read_saved, refuse_format
 from timbre_match.keep.writing import check_file_place, write_whole
-from timbre_match.measure.profile import Profile, Source, Take
+from timbre_match.measure.profile import Profile, Session, Source, Take
 from timbre_match.measure.recipe import Recipe
 
 Json = dict[str, object]
@@ -295,6 +295,11 @@ def _profile_body(profile: Profile) -> Json:
         "stage": profile.stage,
         "family": profile.family,
         "a4_hz": _round(profile.a4_hz, 6),
+        "session": {
+            "date": profile.session.date,
+            "room": profile.session.room,
+            "microphone": profile.session.microphone,
+        },
         "takes": [
             {
                 "recordings": [{"file": source.file, "sha256": source.sha256} for source in take.recordings],
@@ -352,6 +357,7 @@ def _profile(body: layout.ProfileBody) -> Profile:
             )
             for take in body.takes
         ),
+        session=Session(**body.session.model_dump()),
     )
 
 

@@ -10,6 +10,7 @@ from pydantic import AfterValidator, BaseModel, ConfigDict, Field, FiniteFloat, 
 
 from timbre_match import units
 from timbre_match.errors import UnknownNameError
+from timbre_match.measure.profile import Session
 
 PROFILE_FORMAT = "timbre-match/profile"
 TARGET_FORMAT = "timbre-match/target"
@@ -119,6 +120,23 @@ class TakeLayout(Layout):
     notes: list[Note]
 
 
+class SessionLayout(Layout):
+    """When, where and with what takes were recorded; what is empty or missing was not noted."""
+
+    date: str = ""
+    room: Text = ""
+    microphone: Text = ""
+
+    @field_validator("date")
+    @classmethod
+    def _is_date(cls, date: str) -> str:
+        try:
+            Session(date=date)
+        except UnknownNameError as error:
+            raise ValueError(f"{error.what}; {error.remedy}") from error
+        return date
+
+
 class ProfileBody(Layout):
     """A profile without the head."""
 
@@ -126,6 +144,7 @@ class ProfileBody(Layout):
     stage: Text
     family: Text
     a4_hz: Frequency
+    session: SessionLayout = SessionLayout()  # missing in files that were written before sessions were noted
     takes: Annotated[list[TakeLayout], Field(min_length=1)]
 
 

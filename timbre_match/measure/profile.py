@@ -1,7 +1,9 @@
 """The recipes of an instrument at one build stage, over all takes, and where they came from."""
 
+import datetime
 from dataclasses import dataclass
 
+from timbre_match.errors import UnknownNameError
 from timbre_match.measure.recipe import Recipe
 
 
@@ -11,6 +13,40 @@ class Source:
 
     file: str
     sha256: str
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class Session:
+    """When, where and with what takes were recorded, as the maker notes it; what is not noted is empty.
+
+    `date` is written YYYY-MM-DD (ISO 8601); `room` and `microphone` are in the maker's own words.
+
+    Raises
+    ------
+    UnknownNameError
+        If `date` is neither empty nor a day of the calendar written so.
+    """
+
+    date: str = ""
+    room: str = ""
+    microphone: str = ""
+
+    def __post_init__(self) -> None:
+        if self.date and not _is_date(self.date):
+            shown = self.date if len(self.date) <= 30 else self.date[:27] + "..."
+            raise UnknownNameError(
+                f"{shown!r} is not a date",
+                cause="a date is a day of the calendar: year, month and day, in that order and with all their digits",
+                remedy="write it like 2026-03-01",
+            )
+
+
+def _is_date(text: str) -> bool:
+    try:
+        # Other spellings, such as 20260301, are read too, but come back in the one that is wanted here.
+        return datetime.date.fromisoformat(text).isoformat() == text
+    except ValueError:
+        return False
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
@@ -26,7 +62,7 @@ class Profile:
     """All takes of one instrument at one stage.
 
     `instrument`, `stage` and `family` may be empty where the maker named none. `a4_hz` is the tuning reference that
-    the note names go by.
+    the note names go by. `session` says when, where and with what the takes were recorded, as far as it was noted.
     """
 
     instrument: str
@@ -34,3 +70,4 @@ class Profile:
     family: str
     a4_hz: float
     takes: tuple[Take, ...]
+    session: Session = Session()

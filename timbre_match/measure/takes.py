@@ -6,12 +6,14 @@ from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
+import numpy as np
+
 from timbre_match import units
 from timbre_match.errors import NoHeldNoteError, RecordingError, TimbreMatchError
 from timbre_match.intake.notes import HeldNote, held_notes
 from timbre_match.intake.recording import Recording, read_recording
 from timbre_match.measure.interrupts import deaf_children, interrupts_held_back
-from timbre_match.measure.profile import Profile, Source, Take
+from timbre_match.measure.profile import Profile, Session, Source, Take
 from timbre_match.measure.recipe import Recipe, measure_recipe
 
 Progress = Callable[[Iterable["Heard"], int], Iterable["Heard"]]
@@ -36,6 +38,9 @@ RECORDING_SUFFIXES = frozenset(
     }
 )
 """What counts as a recording inside a folder; a file that is named by itself is judged by its content."""
+
+_NOTHING_BETWEEN = 1e-3
+"""Share of a note's power (-30 dB, as in :mod:`timbre_match.intake.octave`) under which overtones count as missing."""
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -154,7 +159,7 @@ def recordings_of_take(place: Path) -> list[Path]:
             "no recording in this folder",
             where=str(place),
             cause="another folder was meant, or the recordings lie one folder deeper",
-            remedy="name the folder whose recordings together are one take (WAV, FLAC, AIFF, OGG, MP3)",
+            remedy="name the folder that holds the recordings themselves (WAV, FLAC, AIFF, OGG, MP3)",
         )
     return found
 
@@ -166,6 +171,7 @@ def measure_takes(
     instrument: str = "",
     stage: str = "",
     family: str = "",
+    session: Session | None = None,
     jobs: int = 1,
     progress: Progress | None = None,
 ) -> Measured:
@@ -207,7 +213,14 @@ def measure_takes(
         if len(failures) == 1:
             raise failures[0]
         raise RecordingError("none of the recordings can be used:\n" + "\n".join(str(error) for error in failures))
-    profile = Profile(instrument=instrument, stage=stage, family=family, a4_hz=listening.a4_hz, takes=tuple(measured))
+    profile = Profile(
+        instrument=instrument,
+        stage=stage,
+        family=family,
+        a4_hz=listening.a4_hz,
+        takes=tuple(measured),
+        session=session or Session(),
+    )
     warnings = _gathered_warnings(results) + _warnings_about_takes(results, profile, listening)
     return Measured(profile=profile, warnings=warnings, failures=tuple(failures))
 
@@ -251,12 +264,29 @@ def _warnings_about_takes(results: list[Heard], profile: Profile, listening: Lis
         missing = [note for note in listening.notes if not any(note in take for take in names)]
         if missing:
             found.append(f"Not found: {', '.join(missing)}.")
+        found += _doubts_about_names(profile)
     if any(recipe.kind == "ringing" for take in profile.takes for recipe in take.notes):
         found.append(
             "Ringing notes are measured as if their overtones were exactly harmonic; those of a stiff string are not, "
             "so do not trust the upper ones."
         )
     return tuple(found)
+
+
+def _doubts_about_names(profile: Profile) -> list[str]:
+    """Notes that were read as the maker named them though only every second or third overtone of them sounds."""
+    found: dict[str, None] = {}
+    for recipe in (recipe for take in profile.takes for recipe in take.notes):
+        power = np.where(recipe.heard, 10.0 ** (np.nan_to_num(recipe.level_db) / 10.0), 0.0)
+        for step, which in ((2, "second"), (3, "third")):
+            if np.sum(power[recipe.k % step != 0]) < _NOTHING_BETWEEN * np.sum(power):
+                sounding = units.nearest_note(step * recipe.f0_hz, profile.a4_hz)[0]
+                found[
+                    f"{recipe.note} was read as it was named, but only every {which} overtone of it sounds, which is "
+                    f"{sounding}: look whether the list of notes is right."
+                ] = None
+                break
+    return list(found)
 
 
 def _gathered_warnings(results: Iterable[Heard]) -> tuple[str, ...]:
