@@ -45,6 +45,13 @@ def test_a_known_lone_harmonic_is_found(dipped: Comparison) -> None:
     assert odd.difference_db.value > 6.0
 
 
+@pytest.mark.parametrize("seed", range(20, 26))
+def test_a_lone_harmonic_makes_no_region(seed: int) -> None:
+    weak = compare(profile(seed, own={("G3", 1): -40.0}, takes=1), profile(seed + 50, takes=1))
+    assert all(one.harmonics > 1 for one in weak.regions)
+    assert weak.harmonics[0].difference_db.low < -35.0
+
+
 def test_an_instrument_like_its_target_shows_no_region(same: Comparison) -> None:
     assert same.regions == ()
     assert not any(one.verdict in ("stronger", "weaker") for one in same.harmonics)

@@ -235,7 +235,9 @@ def _curve(grid_hz: Array, estimates: Estimates) -> tuple[CurvePoint, ...]:
 
 
 def _regions(evidence: Evidence, estimates: Estimates, curve: tuple[CurvePoint, ...]) -> tuple[Region, ...]:
-    """Stretches where the simultaneous band leaves zero and at least one harmonic was measured.
+    """Stretches where the simultaneous band leaves zero and at least two harmonics were measured.
+
+    What a single harmonic shows is said of that harmonic, and is no matter of the body.
 
     A region's size is the curve's value where it is farthest from zero: a mean over a stretch would call every peak
     smaller than it is.
@@ -249,7 +251,7 @@ def _regions(evidence: Evidence, estimates: Estimates, curve: tuple[CurvePoint, 
         inside = slice(stretch.first, stretch.last + 1)
         bounds = hz[stretch.first] / half_step, hz[stretch.last] * half_step
         members = (evidence.freq_hz >= bounds[0]) & (evidence.freq_hz <= bounds[1])
-        if not np.any(members):
+        if np.count_nonzero(members) < 2:
             continue
         values = estimates.curve_db[inside]
         peak = int(np.argmax(np.abs(values)))
