@@ -36,8 +36,8 @@ Array = NDArray[np.float64]
 
 NOTES = ("G3", "A3", "B3", "C#4", "D4", "E4", "F#4", "A4", "B4", "C#5", "D5", "E5")
 HIGH_NOTES = ("C6", "C#6", "D6", "D#6", "E6")
-LOWEST_OCTAVE, HIGHEST_OCTAVE = math.log2(0.196), 3.0
-"""Range of the simulated harmonics over 1 kHz: G3 to 8 kHz."""
+LOWEST_OCTAVE, HIGHEST_OCTAVE = -1.5, 3.0
+"""Where the takes' notes share enough to show a wobble, over 1 kHz: below 354 Hz no half octave holds five of them."""
 
 
 @dataclasses.dataclass(frozen=True, kw_only=True)
@@ -118,9 +118,8 @@ def test_tilts_come_back(truth: Truth) -> None:
 
 
 def test_wobble_comes_back() -> None:
-    # Scatter so small that the wobble of each pair is seen as it is. What is left is that harmonics are not spread
-    # evenly over frequency and that half-octave means flatten a curve: by 1 - sinc(1/4), 10 %, at a period of two
-    # octaves, which is the shortest that heights an octave apart can have.
+    # Scatter so small that the wobble of each pair is seen as it is; the bound is for what half-octave means flatten:
+    # 1 - sin(pi/4) / (pi/4) = 10 % at a period of two octaves, the shortest that heights an octave apart can have.
     profiles, wobble = two_takes_each(2, Truth(take_tilt=0.4, note_tilt=0.4, wobble=1.0, scale=0.1), 100)
     row = structure_rows(profiles)[0]
     assert row.wobble_common_to_take_sd_db_median == pytest.approx(float(np.median(wobble)), rel=0.1)
