@@ -27,6 +27,7 @@ _SCATTER_LOG_SD = 0.35
 _TAKE_TILT_LOG_SD = 0.5
 _NOTE_TILT_LOG_SD = 0.35
 _WOBBLE_LOG_SD = 0.6
+_LEAST_DB = 0.05  # a table may say that there is none at all
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
@@ -290,7 +291,7 @@ def _model_prior(prior: ScatterPrior) -> model.Prior:
         (model.WOBBLE, prior.wobble_db, _WOBBLE_LOG_SD),
     ):
         # A log-normal standard deviation about this centre has the value's square as its mean variance.
-        centre[place], sd[place] = math.log(value) - log_sd**2, log_sd
+        centre[place], sd[place] = math.log(max(value, _LEAST_DB)) - log_sd**2, log_sd
     return model.Prior(centre=centre, precision=np.diag(1.0 / sd**2))
 
 
