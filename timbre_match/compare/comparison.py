@@ -239,8 +239,9 @@ def _regions(evidence: Evidence, estimates: Estimates, curve: tuple[CurvePoint, 
 
     What a single harmonic shows is said of that harmonic, and is no matter of the body.
 
-    A region's size is the curve's value where it is farthest from zero: a mean over a stretch would call every peak
-    smaller than it is.
+    A region's size is the curve's mean over a knot's distance about the place where it is farthest from zero. A mean
+    over the whole stretch would call every peak smaller than it is, the farthest point alone greater: of all points it
+    is the one that chance has helped most.
     """
     low = np.array([point.simultaneous_low_db for point in curve])
     high = np.array([point.simultaneous_high_db for point in curve])
@@ -253,9 +254,10 @@ def _regions(evidence: Evidence, estimates: Estimates, curve: tuple[CurvePoint, 
         members = (evidence.freq_hz >= bounds[0]) & (evidence.freq_hz <= bounds[1])
         if np.count_nonzero(members) < 2:
             continue
-        values = estimates.curve_db[inside]
-        peak = int(np.argmax(np.abs(values)))
-        value, sd = float(values[peak]), float(estimates.curve_sd_db[inside][peak])
+        peak_hz = hz[inside][np.argmax(np.abs(estimates.curve_db[inside]))]
+        near = np.abs(np.log2(hz[inside] / peak_hz)) <= 0.5 / body_curve.KNOTS_PER_OCTAVE
+        draws = np.mean(estimates.curve_draws_db[:, inside][:, near], axis=1)
+        value, sd = float(np.mean(draws)), float(np.std(draws))
         found.append(
             Region(
                 low_hz=float(max(bounds[0], hz[0])),
