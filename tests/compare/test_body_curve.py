@@ -70,6 +70,12 @@ def test_neither_does_a_broad_one_nor_what_is_scarcely_heard() -> None:
     assert reference_level(most[None], faint) == pytest.approx([0.0], abs=0.1)
 
 
+@pytest.mark.parametrize("depth_db", np.linspace(0.5, 4.0, 15))
+def test_a_broad_change_moves_it_by_no_more_than_the_readme_says(depth_db: float) -> None:
+    broad = np.where(np.arange(GRID.size) >= 0.6 * GRID.size, -depth_db, 0.0)
+    assert -0.7 < reference_level(broad[None], EVEN)[0] <= 0.0
+
+
 def test_one_point_is_its_own_reference() -> None:
     assert reference_level(np.array([[2.0]]), np.ones(1)) == pytest.approx([2.0])
 
