@@ -76,6 +76,23 @@ def test_a_control_stands_after_the_instrument_and_outside_the_body_curve() -> N
     assert len(whole.repeats) == len(plain.repeats) + 6
 
 
+def test_levels_far_from_the_other_takes_are_listed() -> None:
+    whole = profile(1, takes=3, scatter_db=0.5)
+    odd = replace(
+        whole.takes[1], notes=profile(1, takes=1, own={("G3", k): 25.0 for k in range(5, 30, 2)}).takes[0].notes
+    )
+    takes = (whole.takes[0], odd, whole.takes[2])
+    (said,) = (
+        remark
+        for remark in gather(replace(whole, takes=takes), as_target(profile(2))).remarks
+        if remark.startswith("set aside")
+    )
+    assert "instrument take 2: G3 harmonic 5; " in said
+    listed, count = said.count(" harmonic "), int(said.partition("(")[2].split()[0])
+    assert count > listed == 8
+    assert said.endswith(f"; and {count - listed} more")
+
+
 def test_a_control_of_two_instruments_is_refused() -> None:
     with pytest.raises(ComparisonError, match="two instruments"):
         gather(profile(1), as_target(profile(2)), (profile(3), profile(4)))

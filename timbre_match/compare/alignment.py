@@ -97,7 +97,8 @@ class AlignedTakes:
     weight : array, shape (n_takes, n_harmonics)
         Robust weights, 1 on average for a Student t distribution; 0 where not heard.
     variance_ratio, df : arrays, shape (n_harmonics,)
-        Robust variance within the takes (gain and tilt removed) over the prior's, and its degrees of freedom.
+        Robust variance within the takes (gain and tilt removed) over the squared scale that the alignment ended with:
+        the prior's, times one factor for all harmonics. And its degrees of freedom.
     """
 
     mean_db: Array
@@ -112,12 +113,12 @@ def pair(instrument: Profile, members: tuple[Profile, ...]) -> Pairing:
     """Pair the notes and harmonics of an instrument with those of a target's members.
 
     Held notes of the same name within one take count once: their levels are averaged. A harmonic is paired where each
-    side has heard it in at least half of the takes that hold the note.
+    side (of several members, one is enough) has heard it in at least half of the takes that hold the note.
 
     Raises
     ------
     ComparisonError
-        If a side holds no notes, or no harmonic is heard on both sides.
+        If the two have no note in common, no harmonic is heard on both sides, or no note has two that are.
     """
     ours = [_notes_of_take(take) for take in instrument.takes]
     theirs = [[_notes_of_take(take) for take in member.takes] for member in members]
@@ -329,8 +330,8 @@ def _middle_gap_db(own: _Levels, other: list[_Levels], here: NDArray[np.bool_]) 
 def _least_db(heard: list[_Levels], unheard: list[_Levels], gap_db: Array) -> Array:
     """How much stronger each harmonic, shape (n,), is at least on the side that hears it, `gap_db` taken off.
 
-    The weakest take of the one side against the highest ceiling of the other's; NaN where a take of the other that
-    holds the note says nothing of the harmonic.
+    The weakest of the one side's takes that hear it against the highest ceiling of the other's; NaN where a take of the
+    other that holds the note says nothing of the harmonic.
     """
     weakest = np.min([_lowest(side.level_db) for side in heard], axis=0)
     ceilings = [np.where(np.isfinite(side.f0_hz), side.ceiling_db, -np.inf) for side in unheard]
@@ -349,7 +350,7 @@ def _lone_remarks(
     if not count:
         return ()
     harmonics = "1 harmonic" if count == 1 else f"{count} harmonics"
-    plain = f"{harmonics} of the {side} without a counterpart that the {other}'s takes let one hear: left out"
+    plain = f"{harmonics} heard in the {side}'s takes but not, or too seldom, in the {other}'s: left out"
     places = np.flatnonzero(lone & (least_db >= _CLEARLY_DB))
     if not places.size:
         return (plain,)

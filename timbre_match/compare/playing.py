@@ -27,7 +27,7 @@ _SCATTER_LOG_SD = 0.35
 _TAKE_TILT_LOG_SD = 0.5
 _NOTE_TILT_LOG_SD = 0.35
 _WOBBLE_LOG_SD = 0.6
-_LEAST_DB = 0.05  # a table may say that there is none at all
+_LEAST_DB = 0.05  # a table may say that there is none at all, which has no logarithm
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
@@ -111,7 +111,7 @@ def gather(profile: Profile, target: Target, control: tuple[Profile, Profile] | 
     Raises
     ------
     ComparisonError
-        If the two have nothing in common, or the controls have not.
+        If the two have nothing in common, or the controls have not, or these are two instruments.
     """
     paired = pair(profile, target.members)
     origin = math.exp(float(np.mean(np.log(paired.freq_hz))))
@@ -230,7 +230,7 @@ def _blended(means: list[Array], note_index: IntArray) -> Array:
 
 
 def _both_sides(values: list[Array]) -> Array:
-    """Variance of instrument minus mean of the members, from the variance of each; NaN where a member lacks it."""
+    """Variance of instrument minus mean of the members, from the variance of each (NaN where a member lacks it)."""
     members = np.array(values[1:])
     count = np.sum(np.isfinite(members), axis=0)
     return np.asarray(values[0] + np.nansum(members, axis=0) / count**2)
@@ -322,7 +322,7 @@ def _set_aside(paired: Pairing, aligned: tuple[AlignedTakes, ...]) -> tuple[str,
     ]
     if not found:
         return ()
-    more = f" and {len(found) - _LISTED} more" if len(found) > _LISTED else ""
+    more = f"; and {len(found) - _LISTED} more" if len(found) > _LISTED else ""
     return (
         f"set aside in part, since they lie far from the other takes ({len(found)} levels): "
         + "; ".join(found[:_LISTED]) + more,
