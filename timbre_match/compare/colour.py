@@ -110,15 +110,13 @@ def loudness_over_frequency(note_index: IntArray, freq_hz: Array, level_db: Arra
     ----------
     note_index, freq_hz, level_db : arrays, shape (n,)
     grid_hz : array, shape (g,)
-        Ascending.
+        Ascending, two points or more.
 
     Returns
     -------
     array, shape (g,)
         Sums to one. The loudness of a band one ERB wide is spread evenly over the band.
     """
-    if grid_hz.size == 1:
-        return np.ones(1)
     band = np.floor(erb_number(freq_hz)).astype(np.int64)
     total = np.zeros(int(np.max(band)) + 1)
     for note in np.unique(note_index):

@@ -79,7 +79,8 @@ def compare(
     Raises
     ------
     ComparisonError
-        If the two have no note, or no heard harmonic, in common.
+        If the two have no note in common or no note with two harmonics that both let one hear, or the same holds of
+        the controls, or the controls are two instruments.
     ValueError
         If `margin_db` is not positive, or one of the controls is missing.
     """
@@ -246,7 +247,7 @@ def _regions(evidence: Evidence, estimates: Estimates, curve: tuple[CurvePoint, 
     low = np.array([point.simultaneous_low_db for point in curve])
     high = np.array([point.simultaneous_high_db for point in curve])
     hz = np.array([point.freq_hz for point in curve])
-    half_step = np.sqrt(hz[1] / hz[0]) if hz.size > 1 else 1.0
+    half_step = np.sqrt(hz[1] / hz[0])
     found = []
     for stretch in body_curve.stretches(low, high):
         inside = slice(stretch.first, stretch.last + 1)

@@ -34,7 +34,7 @@ FIXED = -1
 """Group of a column whose variance is no parameter."""
 
 _GAIN_SD_DB = 100.0
-_SLOPE_DB = 0.7
+_SLOPE_DB = 0.7  # per octave; a scale and not a standard deviation, since the slope has heavy tails too
 _STEP = 1e-3
 
 
