@@ -11,8 +11,8 @@ in peaks a third of an octave to an octave wide. The bumps that make the curve h
 that zero is where most of what is heard lies: the densest of the curve's values, each counting for the loudness around
 its frequency, is the mean of those within some 1.5 dB of it. A change of 4 dB or more hardly moves that level, be it as
 broad as two fifths of the loudness; one of 1 to 3 dB moves it by up to 0.7 dB. What is scarcely heard does not move it.
-A mean, or the middle of the sorted
-values, would be drawn towards each broad change, and noise in the curve would draw it further.
+A mean, or the middle of the sorted values, would be drawn towards each broad change, and noise in the curve would draw
+it further.
 """
 
 from dataclasses import dataclass

@@ -115,7 +115,7 @@ def repeatability_rows(profiles: Sequence[Profile]) -> tuple[BandScatter, ...]:
     """
     rows = []
     for family, members in _by_family(profiles).items():
-        pairs = [pair for profile in members for pair in _all_note_pairs(profile)]
+        pairs = [pair for takes in _take_pairs(members) for pair in _note_pairs(*takes)]
         octave = np.concatenate([pair.octave for pair in pairs]) if pairs else np.zeros(0)
         aligned = np.concatenate([_aligned(pair.difference_db) for pair in pairs]) if pairs else np.zeros(0)
         per_take = np.abs(aligned) / math.sqrt(2.0)
@@ -180,7 +180,7 @@ def structure_rows(profiles: Sequence[Profile]) -> tuple[TakeStructure, ...]:
     rows = []
     for family, members in _by_family(profiles).items():
         found = []
-        for first, second in (pair for profile in members for pair in itertools.combinations(profile.takes, 2)):
+        for first, second in _take_pairs(members):
             variances = _pair_variances(_note_pairs(first, second))
             if variances is not None:
                 found.append(variances)
@@ -243,8 +243,8 @@ def _by_family(profiles: Sequence[Profile]) -> dict[str, list[Profile]]:
     return dict(sorted(found.items()))
 
 
-def _all_note_pairs(profile: Profile) -> list[_NotePair]:
-    return [pair for takes in itertools.combinations(profile.takes, 2) for pair in _note_pairs(*takes)]
+def _take_pairs(profiles: Sequence[Profile]) -> list[tuple[Take, Take]]:
+    return [pair for profile in profiles for pair in itertools.combinations(profile.takes, 2)]
 
 
 def _note_pairs(first: Take, second: Take) -> list[_NotePair]:

@@ -38,9 +38,9 @@ _CHUNK: Final = 8192
 class Spectrum:
     """The spectrum of a recording in overlapping blocks, for changing its rate.
 
-    Blocks that are transformed together take a third of the time of one transform of the whole. Of each block, brought
-    to another rate, the ends are left out (overlap-save; Stockham 1966, AFIPS Conf. Proc. 28:229). Single precision
-    throughout, which halves the time: its rounding lies 120 dB under the sound.
+    Blocks that are transformed together take less time than one transform of the whole. Of each block, brought to
+    another rate, the ends are left out (overlap-save; Stockham 1966, AFIPS Conf. Proc. 28:229). Single precision
+    throughout, for speed: its rounding (24 bits) lies under the noise of any recording.
 
     Parameters
     ----------
@@ -86,7 +86,7 @@ class Spectrum:
         Parameters
         ----------
         lowest_rate_hz : float
-            The rate is this or up to a few per cent above it.
+            The rate is this, or the next above it that the FFT likes.
         edge_hz : float
             What lies above fades out within a twentieth.
         spline_order : int
