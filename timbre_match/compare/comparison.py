@@ -22,6 +22,7 @@ from timbre_match.compare.records import (
 from timbre_match.compare.sessions import session_remarks
 from timbre_match.compare.target import Target, as_target
 from timbre_match.measure.profile import Profile
+from timbre_match.threads import single_threaded
 
 __all__ = [
     "ColourDistance",
@@ -44,6 +45,7 @@ _SEED = 20261
 _Z95 = 1.959963984540054
 
 
+@single_threaded
 def compare(
     profile: Profile,
     target: Profile | Target,

@@ -16,6 +16,7 @@ from timbre_match.intake.pitch import HOP_S, PitchTrack, track_pitch, without_ru
 from timbre_match.intake.recording import Recording
 from timbre_match.intake.spectrum import BandLimited
 from timbre_match.intake.warp import Clock, refine_clock
+from timbre_match.threads import single_threaded
 
 NoteKind = Literal["held", "ringing"]
 
@@ -74,6 +75,7 @@ class HeldNote:
             object.__setattr__(self, name, array)
 
 
+@single_threaded
 def held_notes(
     recording: Recording, *, notes: Sequence[str] | None = None, a4_hz: float = units.STANDARD_A4_HZ
 ) -> tuple[HeldNote, ...]:

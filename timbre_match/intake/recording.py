@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 from timbre_match.errors import RecordingError
 from timbre_match.intake.faults import find_faults, sounding_seconds
 from timbre_match.intake.spectrum import Spectrum
+from timbre_match.threads import single_threaded
 
 LOWEST_RATE_HZ = 22_050
 HIGHEST_RATE_HZ = 192_000
@@ -73,6 +74,7 @@ class Recording:
         return Spectrum(self.samples, self.sample_rate_hz)
 
 
+@single_threaded
 def read_recording(path: str | Path, *, channel: int | None = None) -> Recording:
     """Read one channel of a recording and say what is wrong with it.
 

@@ -14,6 +14,7 @@ from timbre_match.intake.notes import HeldNote, NoteKind
 from timbre_match.intake.recording import Recording
 from timbre_match.intake.warp import turned_back
 from timbre_match.measure.blocks import Blocks, analyse_blocks
+from timbre_match.threads import single_threaded
 
 _FALSE_ALARM = 1e-4
 _LEAST_EXCESS = 2.0
@@ -92,6 +93,7 @@ _ARRAYS: dict[str, type] = {
 }
 
 
+@single_threaded
 def measure_recipe(recording: Recording, note: HeldNote, *, a4_hz: float = units.STANDARD_A4_HZ) -> Recipe:
     """Measure the harmonics of a held note.
 
