@@ -19,6 +19,7 @@ from timbre_match.compare.records import (
     Repeatability,
     Verdict,
 )
+from timbre_match.compare.same_recordings import same_recording_remarks
 from timbre_match.compare.sessions import session_remarks
 from timbre_match.compare.target import Target, as_target
 from timbre_match.measure.profile import Profile
@@ -80,7 +81,9 @@ def compare(
     ------
     ComparisonError
         If the two have no note in common or no note with two harmonics that both let one hear, or the same holds of
-        the controls, or the controls are two instruments.
+        the controls.
+    ControlError
+        If the controls are two instruments, or have recordings in common with each other, the instrument or the target.
     ValueError
         If `margin_db` is not positive, or one of the controls is missing.
     """
@@ -115,7 +118,8 @@ def compare(
         harmonics=harmonics,
         body_curve=curve,
         regions=_regions(evidence, estimates, curve),
-        remarks=session_remarks(profile, whole, control)
+        remarks=(session_remarks(profile, whole) if control is None else ())
+        + same_recording_remarks(profile, whole)
         + evidence.remarks
         + _family_remarks(whole, distance)
         + _remarks(harmonics),
