@@ -8,6 +8,7 @@ from numpy.typing import NDArray
 
 from timbre_match.compare import body_curve, colour, model
 from timbre_match.compare.alignment import SET_ASIDE_WEIGHT, AlignedTakes, Pairing, align_takes, pair
+from timbre_match.compare.few_takes import claim_factor
 from timbre_match.compare.repeatability import ScatterPrior, fit_variance_prior, moderated_variance, scatter_prior
 from timbre_match.compare.same_recordings import refuse_shared_control
 from timbre_match.compare.sessions import control_remark
@@ -50,6 +51,8 @@ class Evidence:
     prior : model.Prior
     takes : float
         Takes a side, harmonic mean of the two sides.
+    claim_factor : float
+        What the differences' scatter is over what `differences` says of it (:mod:`timbre_match.compare.few_takes`).
     span : (low, high)
         Ends of the curve's spline in octaves from `origin_hz`.
     origin_hz : float
@@ -67,6 +70,7 @@ class Evidence:
     repeats: tuple[model.Row, ...]
     prior: model.Prior
     takes: float
+    claim_factor: float
     span: tuple[float, float]
     origin_hz: float
     remarks: tuple[str, ...]
@@ -142,6 +146,7 @@ def gather(profile: Profile, target: Target, control: tuple[Profile, Profile] | 
         repeats=tuple(row for part in parts for one in part.aligned for row in _repeat_rows(one, part, span)),
         prior=_model_prior(main.prior),
         takes=2.0 / main.playing,
+        claim_factor=claim_factor(main.prior, main.take_counts, float(np.median(main.scatter_df))),
         span=span,
         origin_hz=origin,
         remarks=remarks + _scatter_remarks(main.prior, main.take_counts) + _set_aside(paired, main.aligned),
