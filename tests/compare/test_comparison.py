@@ -213,30 +213,27 @@ def heavy(seed: int, *, takes: int, own_db: float) -> tuple[Profile, Profile, fl
 
 
 def test_colour_distance_is_neither_shrunk_nor_swollen_by_the_scatter() -> None:
-    # Truth and scatter are the test's own. Twelve comparisons: the mean is known to some 4 %, and at least nine of the
-    # 95 % intervals hold (fewer in one of five thousand such tests, by the binomial law).
+    # Truth and scatter are the test's own. The distance of the shrunk differences is too small by 9 % here, and its
+    # intervals hold in five of the eight; chance makes six or fewer of eight 95 % intervals hold in one of 17 such tests.
     found, truth, held = [], [], 0
-    for seed in range(12):
-        instrument, target, true_db = heavy(seed, takes=3, own_db=2.5)
+    for seed in range(8):
+        instrument, target, true_db = heavy(seed, takes=5, own_db=2.5)
         value = compare(instrument, target).colour_distance.distance_db
         found.append(value.value)
         truth.append(true_db)
         held += value.low <= true_db <= value.high
-    assert np.mean(found) == pytest.approx(np.mean(truth), rel=0.1)
-    assert held >= 9
+    assert np.mean(found) == pytest.approx(np.mean(truth), rel=0.06)
+    assert held >= 7
 
 
-@pytest.mark.parametrize("takes", [3, 5])
-def test_colour_distance_of_an_instrument_to_itself_reaches_down_to_nothing(takes: int) -> None:
-    lows, values, own = [], [], []
-    for seed in range(4):
-        found = compare(*heavy(seed, takes=takes, own_db=0.0)[:2])
-        lows.append(found.colour_distance.distance_db.low)
-        values.append(found.colour_distance.distance_db.value)
-        own.append(found.colour_distance.own_db)
-        assert found.closeness_percent.high == pytest.approx(100.0, abs=0.1)
-    assert np.median(lows) < 0.05
-    assert np.mean(values) < 0.3 * np.mean(np.array(own, dtype=np.float64))
+def test_colour_distance_of_an_instrument_to_itself_reaches_down_to_nothing() -> None:
+    # The draws as they are lie half a decibel and more above zero.
+    found = [compare(*heavy(seed, takes=3, own_db=0.0)[:2]) for seed in range(4)]
+    distances = [one.colour_distance.distance_db for one in found]
+    assert np.median([one.low for one in distances]) < 0.05
+    own = np.array([one.colour_distance.own_db for one in found], dtype=np.float64)
+    assert np.mean([one.value for one in distances]) < 0.3 * np.mean(own)
+    assert all(one.closeness_percent.high == pytest.approx(100.0, abs=0.1) for one in found)
 
 
 def test_a_margin_below_zero_is_refused() -> None:
