@@ -214,7 +214,7 @@ def heavy(seed: int, *, takes: int, own_db: float) -> tuple[Profile, Profile, fl
 
 def test_colour_distance_is_neither_shrunk_nor_swollen_by_the_scatter() -> None:
     # Truth and scatter are the test's own. The distance of the shrunk differences is too small by 9 % here, and its
-    # intervals hold in five of the eight; chance makes six or fewer of eight 95 % intervals hold in one of 17 such tests.
+    # intervals hold in five of the eight; by chance six or fewer of eight 95 % intervals hold in one of 17 such tests.
     found, truth, held = [], [], 0
     for seed in range(8):
         instrument, target, true_db = heavy(seed, takes=5, own_db=2.5)
