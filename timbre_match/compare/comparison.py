@@ -19,6 +19,7 @@ from timbre_match.compare.records import (
     Repeatability,
     Verdict,
 )
+from timbre_match.compare.same_recordings import same_recording_remarks
 from timbre_match.compare.sessions import session_remarks
 from timbre_match.compare.target import Target, as_target
 from timbre_match.measure.profile import Profile
@@ -82,7 +83,9 @@ def compare(
     ------
     ComparisonError
         If the two have no note in common or no note with two harmonics that both let one hear, or the same holds of
-        the controls, or the controls are two instruments.
+        the controls.
+    ControlError
+        If the controls are two instruments, or have recordings in common with each other, the instrument or the target.
     ValueError
         If `margin_db` is not positive, or one of the controls is missing.
     """
@@ -117,7 +120,8 @@ def compare(
         harmonics=harmonics,
         body_curve=curve,
         regions=_regions(evidence, estimates, curve),
-        remarks=session_remarks(profile, whole, control)
+        remarks=(session_remarks(profile, whole) if control is None else ())
+        + same_recording_remarks(profile, whole)
         + evidence.remarks
         + _family_remarks(whole, distance)
         + _remarks(harmonics),
@@ -159,22 +163,40 @@ def _estimated(evidence: Evidence, rng: np.random.Generator) -> tuple[Array, Est
         curve_db=sign * found.curve_db,
         harmonic_draws_db=sign * found.harmonic_draws_db,
         curve_draws_db=sign * found.curve_draws_db,
+        curve_at_harmonics_db=sign * found.curve_at_harmonics_db,
     )
 
 
 def _distance_and_closeness(evidence: Evidence, estimates: Estimates, margin_db: float) -> tuple[Interval, Interval]:
-    """Colour distance in dB and closeness in per cent, those of the mean differences, with intervals from the draws.
+    """Colour distance in dB and closeness in per cent from the draws, less what the takes' scatter puts into them.
 
-    A draw differs from the mean by noise, and noise adds to a distance and takes from closeness. What it does so on
-    average is taken off (bias correction as in the bootstrap: Efron & Tibshirani 1993, *An Introduction to the
-    Bootstrap*, chapter 10), for the distance from its square, which is where noise adds up.
+    The distance of the mean differences would be too small, since those are shrunk; the draws have the size that the
+    model finds, but that holds what takes scatter more than the model is told (:mod:`timbre_match.compare.few_takes`):
+    a constant added to the squared distance, which is taken off (as the error's share is in an unbiased estimate of a
+    squared distance: Walther et al. 2016, Reliability of dissimilarity measures for multi-voxel pattern analysis,
+    *NeuroImage* 137). The squares scatter as much more about their mean.
+
+    Closeness is that of the same draws, brought to the same distance: harmonics' own deviations, which is where the
+    scatter went, are made smaller, and the body curve is not until nothing else is left.
     """
-    differences = np.vstack([estimates.harmonic_db, estimates.harmonic_draws_db])
-    bands = colour.all_bands(evidence.note_index, evidence.freq_hz, evidence.target_db, differences)
-    square, share = colour.colour_distance(bands) ** 2, colour.closeness(bands, margin_db)
-    square, share = (np.append(one[0], one[1:] + one[0] - np.mean(one[1:])) for one in (square, share))
-    distance, share = np.sqrt(np.maximum(square, 0.0)), np.clip(share, 0.0, 100.0)
-    return _interval(distance[1:], distance[0]), _interval(share[1:], share[0])
+    where = evidence.note_index, evidence.freq_hz, evidence.target_db
+    draws = estimates.harmonic_draws_db
+    drawn = colour.colour_distance(colour.all_bands(*where, draws)) ** 2
+    excess = (evidence.claim_factor - 1.0) * estimates.scatter_scale
+    added = colour.mean_band_variance(*where, estimates.harmonic_db, excess)
+    middle = float(np.mean(drawn))
+    square = np.maximum(middle + np.sqrt(evidence.claim_factor) * (drawn - middle) - added, 0.0)
+    curve = estimates.curve_at_harmonics_db
+    smooth = colour.colour_distance(colour.all_bands(*where, curve)) ** 2
+    left = np.sqrt(_ratio(np.maximum(square - smooth, 0.0), np.maximum(drawn - smooth, 0.0)))
+    bands = colour.all_bands(*where, curve + left[:, None] * (draws - curve))
+    factor = np.sqrt(_ratio(square, colour.colour_distance(bands) ** 2))
+    share = colour.closeness([band.scaled(factor) for band in bands], margin_db)
+    return _interval(np.sqrt(square), math.sqrt(max(middle - added, 0.0))), _interval(share)
+
+
+def _ratio(part: Array, whole: Array) -> Array:
+    return np.divide(part, whole, out=np.zeros(part.shape), where=whole > 0)
 
 
 def _interval(draws: Array, value: float | None = None) -> Interval:

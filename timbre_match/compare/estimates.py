@@ -25,9 +25,11 @@ class Estimates:
     curve_db, curve_sd_db : arrays, shape (g,)
     harmonic_draws_db, curve_draws_db : arrays, shape (n_draws, n) and (n_draws, g)
         Joint draws of both.
-    scatter_variance, own_variance, shared_variance : arrays, shape (n,)
-        Variance of the harmonic's scatter, of its own deviation before the data, and what curve, gains and tilts
-        add to the uncertainty of its estimate; dB^2.
+    curve_at_harmonics_db : array, shape (n_draws, n)
+        The same draws of the curve, at the harmonics' frequencies.
+    scatter_variance, scatter_scale, own_variance, shared_variance : arrays, shape (n,)
+        Variance of the harmonic's scatter, the squared scale of its distribution, variance of its own deviation before
+        the data, and what curve, gains and tilts add to the uncertainty of its estimate; dB^2.
     """
 
     harmonic_db: Array
@@ -36,7 +38,9 @@ class Estimates:
     curve_sd_db: Array
     harmonic_draws_db: Array
     curve_draws_db: Array
+    curve_at_harmonics_db: Array
     scatter_variance: Array
+    scatter_scale: Array
     own_variance: Array
     shared_variance: Array
 
@@ -73,12 +77,14 @@ def estimate(
     """
     curve_part = slice(row.shared.curve_first, row.shared.curve_last)
     grid = np.column_stack([grid_octave, grid_smooth])
-    draws, curve_draws = [], []
+    reached = row.shared.matrix[:harmonics, curve_part]
+    draws, curve_draws, reached_draws = [], [], []
     for solution in solutions:
         shared = _shared_draws(solution, rng, draws_per_solution)
         curve = shared[:, curve_part] @ grid.T
         level = reference_level(curve, grid_loudness)[:, None]
         curve_draws.append(curve - level)
+        reached_draws.append(shared[:, curve_part] @ reached.T - level)
         draws.append(_harmonic_draws(solution, row, shared, rng)[:, :harmonics] - level)
     harmonic, curve = np.concatenate(draws), np.concatenate(curve_draws)
     mine = slice(harmonics)
@@ -90,7 +96,10 @@ def estimate(
         curve_sd_db=np.std(curve, axis=0),
         harmonic_draws_db=harmonic,
         curve_draws_db=curve,
+        curve_at_harmonics_db=np.concatenate(reached_draws),
         scatter_variance=np.mean([solution.noise_variance[mine] for solution in solutions], axis=0),
+        # Precisions are gamma distributed about that of the scale.
+        scatter_scale=1.0 / np.mean([1.0 / solution.noise_variance[mine] for solution in solutions], axis=0),
         own_variance=np.mean([solution.own_variance[mine] for solution in solutions], axis=0),
         shared_variance=np.maximum(np.var(harmonic, axis=0) - own_part, 0.0),
     )
