@@ -39,6 +39,12 @@ def test_a_known_dip_is_found_with_its_place_and_size(dipped: Comparison) -> Non
     assert region.notes == len({one.note for one in inside})
 
 
+def test_the_simultaneous_band_keeps_to_one_side_of_zero_in_regions_and_nowhere_else(dipped: Comparison) -> None:
+    for point in dipped.body_curve:
+        inside = any(one.low_hz <= point.freq_hz <= one.high_hz for one in dipped.regions)
+        assert inside == (point.simultaneous_low_db >= 0 or point.simultaneous_high_db <= 0)
+
+
 def test_a_known_lone_harmonic_is_found(dipped: Comparison) -> None:
     (odd,) = [one for one in dipped.harmonics if (one.note, one.k) == ("A4", 9)]
     assert odd.verdict == "stronger"

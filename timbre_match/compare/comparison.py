@@ -98,7 +98,6 @@ def compare(
     control = None if control_now is None or control_then is None else (control_now, control_then)
     evidence = gather(profile, whole, control)
     grid_hz, estimates = _estimated(evidence, generator)
-    curve = _curve(grid_hz, estimates)
     distance, close = _distance_and_closeness(evidence, estimates, margin_db)
     own = colour.distance_between_takes(
         evidence.note_index, evidence.freq_hz, evidence.instrument_db, evidence.instrument_takes_db
@@ -118,8 +117,8 @@ def compare(
             target_takes=sum(len(member.takes) for member in whole.members),
         ),
         harmonics=harmonics,
-        body_curve=curve,
-        regions=_regions(evidence, estimates, curve),
+        body_curve=_curve(grid_hz, estimates),
+        regions=_regions(evidence, estimates, grid_hz),
         remarks=(session_remarks(profile, whole) if control is None else ())
         + same_recording_remarks(profile, whole)
         + evidence.remarks
@@ -246,21 +245,37 @@ def _harmonics(evidence: Evidence, estimates: Estimates, margin_db: float) -> tu
 
 
 def _curve(grid_hz: Array, estimates: Estimates) -> tuple[CurvePoint, ...]:
+    """The curve with its bands; where it is certain on which side of zero it lies, the bands end there.
+
+    Whether a curve that is there is wholly inside its band, and whether there is one, are two questions, and the second
+    asks for less: where the curve is further off zero than playing alone would bring it anywhere, in all but one of
+    twenty comparisons, its sign is known, and the simultaneous band, which need not cover both signs, ends at zero
+    (Benjamini, Hochberg & Stark 1998, Confidence intervals with more power to determine the sign, *JASA* 93).
+    """
     centre, sd = estimates.curve_db, estimates.curve_sd_db
     factor = max(body_curve.simultaneous_factor(estimates.curve_draws_db, centre, sd), _Z95)
+    side = _known_side(estimates)
+    low = np.where(side > 0, np.maximum(centre - factor * sd, 0.0), centre - factor * sd)
+    high = np.where(side < 0, np.minimum(centre + factor * sd, 0.0), centre + factor * sd)
     return tuple(
         CurvePoint(
             freq_hz=float(hz),
             difference_db=_normal_interval(float(value), float(one)),
-            simultaneous_low_db=float(value - factor * one),
-            simultaneous_high_db=float(value + factor * one),
+            simultaneous_low_db=float(below),
+            simultaneous_high_db=float(above),
         )
-        for hz, value, one in zip(grid_hz, centre, sd, strict=True)
+        for hz, value, one, below, above in zip(grid_hz, centre, sd, low, high, strict=True)
     )
 
 
-def _regions(evidence: Evidence, estimates: Estimates, curve: tuple[CurvePoint, ...]) -> tuple[Region, ...]:
-    """Stretches where the simultaneous band leaves zero and at least two harmonics were measured.
+def _known_side(estimates: Estimates) -> NDArray[np.int64]:
+    """1 where the curve is certain to lie above zero, -1 below, else 0; shape (g,)."""
+    certain = np.abs(estimates.curve_db) > max(estimates.curve_significance, _Z95) * estimates.curve_sd_db
+    return np.where(certain, np.sign(estimates.curve_db), 0.0).astype(np.int64)
+
+
+def _regions(evidence: Evidence, estimates: Estimates, hz: Array) -> tuple[Region, ...]:
+    """Stretches where the simultaneous band keeps to one side of zero and at least two harmonics were measured.
 
     What a single harmonic shows is said of that harmonic, and is no matter of the body.
 
@@ -268,12 +283,9 @@ def _regions(evidence: Evidence, estimates: Estimates, curve: tuple[CurvePoint, 
     over the whole stretch would call every peak smaller than it is, the farthest point alone greater: of all points it
     is the one that chance has helped most.
     """
-    low = np.array([point.simultaneous_low_db for point in curve])
-    high = np.array([point.simultaneous_high_db for point in curve])
-    hz = np.array([point.freq_hz for point in curve])
     half_step = np.sqrt(hz[1] / hz[0])
     found = []
-    for stretch in body_curve.stretches(low, high):
+    for stretch in body_curve.stretches(_known_side(estimates)):
         inside = slice(stretch.first, stretch.last + 1)
         bounds = hz[stretch.first] / half_step, hz[stretch.last] * half_step
         members = (evidence.freq_hz >= bounds[0]) & (evidence.freq_hz <= bounds[1])
