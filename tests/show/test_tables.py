@@ -14,6 +14,7 @@ from timbre_match.advise.suggestions import suggest
 from timbre_match.compare.records import ColourDistance, Interval
 from timbre_match.intake.notes import HeldNote
 from timbre_match.intake.recording import Recording
+from timbre_match.measure.profile import Session
 from timbre_match.show.marks import plain, signed, signed_interval
 from timbre_match.show.tables import (
     comparison_summary,
@@ -129,6 +130,12 @@ def test_profile_summary_counts_what_is_in_the_profile() -> None:
             assert f"{recipe.note} {recipe.f0_hz:.2f} +1.5 {recipe.cycles} {heard} 0.12" in text
     assert "2 takes" in text
     assert "Mains hum at 50 Hz." in text
+    assert "Recorded:" not in text
+
+
+def test_profile_summary_says_when_and_where_if_that_was_noted() -> None:
+    noted = replace(invented.profile(), session=Session(date="2026-03-01", microphone="a [red] one"))
+    assert "Recorded: 2026-03-01, a [red] one." in flowing(profile_summary(noted))
 
 
 def test_the_comparison_begins_with_the_verdict_in_words() -> None:

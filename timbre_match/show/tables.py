@@ -85,6 +85,10 @@ def profile_summary(profile: Profile, warnings: Sequence[str] = ()) -> Renderabl
     name = plain(profile.instrument) or "Unnamed instrument"
     details = [plain(profile.stage), plain(profile.family), counted(len(profile.takes), "take")]
     parts: list[RenderableType] = [_heading(name, ", ".join(word for word in details if word))]
+    session = profile.session
+    noted = [plain(word) for word in (session.date, session.room, session.microphone) if word]
+    if noted:
+        parts.append(Text(f"Recorded: {', '.join(noted)}."))
     for number, take in enumerate(profile.takes, start=1):
         files = ", ".join(plain(source.file, 40) for source in take.recordings[:3])
         more = f" and {len(take.recordings) - 3} more" if len(take.recordings) > 3 else ""
