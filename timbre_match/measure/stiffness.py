@@ -1,0 +1,216 @@
+r"""The partials of a stiff string: where they are, and the flexible fundamental and inharmonicity that they follow.
+
+.. math:: f_k = k f_0 \sqrt{1 + B k^2}
+
+(Fletcher 1964, J. Acoust. Soc. Am. 36:203; Järveläinen et al. 2001, J. Acoust. Soc. Am. 110:3149). f_0 is the
+fundamental that the string would have without stiffness: its first partial sounds at f_0 sqrt(1 + B).
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+import scipy.fft
+import scipy.ndimage
+import scipy.signal
+from numpy.typing import NDArray
+
+from timbre_match.units import cents_between
+
+Real = NDArray[np.float64]
+
+LARGEST_B = 3e-3
+_LONGEST_S = 1.0
+_SHORTEST_CYCLES = 14.0
+_OFF_CENTS = 60
+_NEAR_CENTS = 4
+"""How far off a partial still counts in the search."""
+_NOISE_DB, _ENOUGH_DB = 10.0, 30.0
+"""A bin of noise stands this far above its surroundings now and then; more than so far above them is sure enough."""
+_MOST = 96
+_TUKEY = 4.685
+"""The biweight at this many standard deviations is 95 % efficient for normal errors (Beaton & Tukey 1974)."""
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class StiffString:
+    """The law that the partials follow.
+
+    Attributes
+    ----------
+    f0_hz, f0_se_hz : float
+        Flexible fundamental and its standard error.
+    b, b_se : float
+        Inharmonicity B (0 or more) and its standard error.
+    scatter : float
+        How far partials lie off the law beyond their own errors, relative standard deviation.
+    """
+
+    f0_hz: float
+    f0_se_hz: float
+    b: float
+    b_se: float
+    scatter: float
+
+
+def stretched_hz(k: NDArray[np.int64], f0_hz: float, b: float) -> Real:
+    """Frequencies of partials k of a stiff string, Hz."""
+    return np.asarray(k * f0_hz * np.sqrt(1.0 + b * np.square(k, dtype=np.float64)))
+
+
+def search_law(samples: Real, sample_rate_hz: float, f0_hz: float, highest_hz: float) -> tuple[float, float]:
+    """The f0 and B whose partials stand out most from the spectrum of a note.
+
+    The first eight partials are tried over a wide grid of f0 and B, then twice as many over a finer one around the
+    best, and so on: a few partials that the body pulls off the law, or that are missing, do not lead the search astray.
+
+    Parameters
+    ----------
+    samples : array, shape (n,)
+        The note from its onset on.
+    sample_rate_hz : float
+    f0_hz : float
+        Right to within 60 cents.
+    highest_hz : float
+        Where the band ends.
+
+    Returns
+    -------
+    f0_hz, b : float
+    """
+    salience = _salience(samples, sample_rate_hz, f0_hz, highest_hz)
+    off_cents = np.arange(-_OFF_CENTS, _OFF_CENTS + 1, 3, dtype=np.float64)
+    count = min(8, max(1, int(highest_hz / f0_hz)))
+    step = _stretch_step(count)
+    b = np.arange(0.0, LARGEST_B, step)
+    while True:
+        k = np.arange(1, count + 1)
+        cents = off_cents[:, None, None] + 1200.0 * np.log2(k) + 600.0 * np.log2(1.0 + b[:, None] * k**2)
+        place = np.round(cents).astype(np.int64) + _OFF_CENTS
+        score = np.where(place < len(salience), salience[np.minimum(place, len(salience) - 1)], 0.0).sum(axis=2)
+        # Of equals the least stretched.
+        score -= 1e-3 * np.arange(len(b))
+        best = np.unravel_index(score.argmax(), score.shape)
+        centre, middle = float(off_cents[best[0]]), float(b[best[1]])
+        if (
+            2 * count > _MOST
+            or f0_hz * 2.0 ** (centre / 1200.0) * count * np.sqrt(1.0 + middle * count**2) > highest_hz
+        ):
+            return f0_hz * 2.0 ** (centre / 1200.0), middle
+        count *= 2
+        off_cents = centre + np.arange(-4.0, 5.0)
+        reach, step = 2.0 * step, _stretch_step(count)
+        b = np.arange(max(0.0, middle - reach), middle + reach, step)
+
+
+def _stretch_step(count: int) -> float:
+    """The step in B that moves the highest of `count` partials by as far as a partial may lie off."""
+    return _NEAR_CENTS / (600.0 / np.log(2.0) * count**2)
+
+
+def _salience(samples: Real, rate: float, f0_hz: float, highest_hz: float) -> Real:
+    """How far the spectrum stands out of its surroundings, cent by cent from 60 cents under `f0_hz`, dB (0 to 20)."""
+    length = min(len(samples), round(max(_LONGEST_S, _SHORTEST_CYCLES / f0_hz) * rate))
+    # Fast in, slowly out: a decaying note is best told from noise by its beginning.
+    window = np.minimum(1.0, np.linspace(0.0, 6.0, length)) * np.hanning(2 * length)[length:]
+    size = int(scipy.fft.next_fast_len(2 * length, real=True))
+    bin_hz = rate / size
+    power = np.abs(scipy.fft.rfft(samples[:length] * window, size)) ** 2
+    level_db = 10.0 * np.log10(power[: int(highest_hz / bin_hz) + 4] + 1e-300)
+    per = max(4, round(1.5 * f0_hz / bin_hz))
+    blocks = -(-len(level_db) // per)
+    padded = np.pad(level_db, (0, blocks * per - len(level_db)), mode="edge").reshape(blocks, per)
+    floor_db = np.interp(np.arange(len(level_db)), (np.arange(blocks) + 0.5) * per, np.percentile(padded, 40, axis=1))
+    above = np.clip(level_db - floor_db - _NOISE_DB, 0.0, _ENOUGH_DB - _NOISE_DB)
+    steps = int(cents_between(highest_hz, f0_hz)) + _OFF_CENTS
+    edge = f0_hz * 2.0 ** ((np.arange(steps + 1) - _OFF_CENTS - 0.5) / 1200.0) / bin_hz
+    between = np.interp(0.5 * (edge[1:] + edge[:-1]), np.arange(len(above)), above)
+    first = np.minimum(np.ceil(edge).astype(np.int64), len(above) - 1)
+    # Where a cent holds several bins, the highest of them.
+    highest = np.maximum.reduceat(above, first[:-1])
+    return scipy.ndimage.maximum_filter1d(np.where(np.diff(first) > 0, highest, between), 2 * _NEAR_CENTS - 1)
+
+
+def fit_law(k: NDArray[np.int64], freq_hz: Real, se_hz: Real) -> StiffString:
+    """Fit f0 and B to partials, robustly.
+
+    With u = (f_k / k)^2 the law is a straight line, u = f0^2 + f0^2 B k^2. A partial's variance is that of its own
+    frequency plus a relative scatter common to all (the body's resonances push partials off the law), estimated from
+    the residuals (Paule & Mandel 1982, J. Res. Natl. Bur. Stand. 87:377); partials far off it lose their weight
+    (biweight: Beaton & Tukey 1974, Technometrics 16:147).
+
+    Parameters
+    ----------
+    k : int array, shape (n,), n >= 1
+    freq_hz, se_hz : arrays, shape (n,)
+        Frequencies and their standard errors, Hz.
+
+    Returns
+    -------
+    StiffString
+        With B and its error unknown (0 and infinite) for a single partial.
+    """
+    if len(k) == 1:
+        return StiffString(
+            f0_hz=float(freq_hz[0] / k[0]), f0_se_hz=float(se_hz[0] / k[0]), b=0.0, b_se=float("inf"), scatter=0.0
+        )
+    u = (freq_hz / k) ** 2
+    y = u / np.median(u)
+    own = 2.0 * se_hz / freq_hz
+    design = np.stack([np.ones(len(k)), np.square(k, dtype=np.float64)], axis=1)
+    theta, covariance, scatter = _robust_line(design, y, own)
+    if theta[1] < 0.0:
+        flat, flat_covariance, scatter = _robust_line(design[:, :1], y, own)
+        theta = np.array([flat[0], 0.0])
+        # B's error stays that of the free fit: 0 is where the law ends, not what is known.
+        covariance = np.diag([flat_covariance[0, 0], covariance[1, 1]])
+    f0_hz = float(np.sqrt(theta[0] * np.median(u)))
+    slope = np.array([-theta[1] / theta[0] ** 2, 1.0 / theta[0]])
+    return StiffString(
+        f0_hz=f0_hz,
+        f0_se_hz=float(0.5 * f0_hz * np.sqrt(covariance[0, 0]) / theta[0]),
+        b=float(theta[1] / theta[0]),
+        b_se=float(np.sqrt(slope @ covariance @ slope)),
+        scatter=0.5 * scatter,
+    )
+
+
+def _robust_line(design: Real, y: Real, own: Real) -> tuple[Real, Real, float]:
+    """Coefficients, their covariance and the common scatter."""
+    robust = np.ones(len(y))
+    # From far off, so that the many that agree begin by outvoting the few that claim to be exact.
+    scatter = float(np.median(np.abs(y - np.median(y)))) + float(np.median(own))
+    theta, covariance = _line(design, y, robust / (own**2 + scatter**2))
+    for _ in range(20):
+        rest = y - design @ theta
+        spread = np.sqrt(own**2 + scatter**2)
+        if len(y) > 4:
+            middle = 1.4826 * float(np.median(np.abs(rest / spread)))
+            robust = np.clip(1.0 - (rest / (_TUKEY * max(1.0, middle) * spread)) ** 2, 1e-6, 1.0) ** 2
+        before = scatter
+        scatter = _scatter(rest, own, robust, max(1.0, float(robust.sum()) - design.shape[1]))
+        theta, covariance = _line(design, y, robust / (own**2 + scatter**2))
+        if abs(scatter - before) <= 1e-3 * scatter + 1e-12:
+            break
+    return theta, covariance, scatter
+
+
+def _line(design: Real, y: Real, weight: Real) -> tuple[Real, Real]:
+    """Weighted least squares: coefficients and covariance."""
+    # Scaled columns, or k^2 of a hundred partials would spoil the inversion.
+    size = np.abs(design).max(axis=0)
+    scaled = design / size
+    covariance = np.linalg.pinv(scaled.T @ (weight[:, None] * scaled), hermitian=True)
+    theta = covariance @ (scaled.T @ (weight * y))
+    return theta / size, covariance / np.outer(size, size)
+
+
+def _scatter(rest: Real, own: Real, robust: Real, free: float) -> float:
+    """The common scatter that makes the weighted residuals as large as they should be."""
+    square, own_square = robust * rest**2, own**2
+    if float(np.sum(square / own_square)) <= free:
+        return 0.0
+    low, high = 0.0, float(np.sum(square)) / free + 1e-30
+    for _ in range(30):
+        middle = 0.5 * (low + high)
+        low, high = (middle, high) if float(np.sum(square / (own_square + middle))) > free else (low, middle)
+    return float(np.sqrt(high))
