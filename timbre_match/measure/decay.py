@@ -21,11 +21,10 @@ Real = NDArray[np.float64]
 Complex = NDArray[np.complex128]
 
 SLOWEST_T60_S = 60.0
-FASTEST_T60_S = 0.04
 T60_LOG = float(np.log(1000.0))
 """T60 times the decay rate alpha: an amplitude falls by 60 dB when it falls to a thousandth."""
 _RATES = 8
-_ROUNDS = 30
+_ROUNDS = 15
 _DONE = 1e-7
 
 
@@ -66,7 +65,7 @@ def exponentials(s: Complex, time_s: Real) -> Complex:
     return np.asarray((coarse[..., :, None] * fine[..., None, :]).reshape(*s.shape, -1)[..., :count])
 
 
-def search_one(time_s: Real, y: Complex, widest_hz: float) -> Complex:
+def search_one(time_s: Real, y: Complex, widest_hz: float, fastest_t60_s: float) -> Complex:
     """Where to begin: the decay rate and frequency that explain most, on a coarse grid.
 
     Parameters
@@ -75,6 +74,8 @@ def search_one(time_s: Real, y: Complex, widest_hz: float) -> Complex:
     y : array, shape (P, n)
     widest_hz : float
         How far from zero the frequency may lie.
+    fastest_t60_s : float
+        The shortest time in which it may fall by 60 dB.
 
     Returns
     -------
@@ -84,7 +85,7 @@ def search_one(time_s: Real, y: Complex, widest_hz: float) -> Complex:
     size = int(scipy.fft.next_fast_len(len(time_s)))
     freq_hz = scipy.fft.fftfreq(size, step_s)
     inside = np.flatnonzero(np.abs(freq_hz) <= widest_hz)
-    rates = T60_LOG / np.geomspace(FASTEST_T60_S, min(SLOWEST_T60_S, 30.0 * float(time_s[-1])), _RATES)
+    rates = T60_LOG / np.geomspace(fastest_t60_s, min(SLOWEST_T60_S, 30.0 * float(time_s[-1])), _RATES)
     best = np.full(len(y), -1.0)
     found = np.zeros(len(y), dtype=np.complex128)
     for rate in rates:
@@ -98,7 +99,9 @@ def search_one(time_s: Real, y: Complex, widest_hz: float) -> Complex:
     return found
 
 
-def fit_decays(time_s: Real, y: Complex, start: Complex, widest_hz: float) -> Decays:
+def fit_decays(
+    time_s: Real, y: Complex, start: Complex, widest_hz: float, fastest_t60_s: float, *, rounds: int = _ROUNDS
+) -> Decays:
     """Fit R damped exponentials to each of P partials, from given starting values (Levenberg-Marquardt).
 
     Parameters
@@ -108,17 +111,21 @@ def fit_decays(time_s: Real, y: Complex, start: Complex, widest_hz: float) -> De
     start : complex array, shape (P, R)
     widest_hz : float
         How far from zero a frequency may lie.
+    fastest_t60_s : float
+        The shortest time in which a component may fall by 60 dB.
+    rounds : int
+        At most so many steps.
 
     Returns
     -------
     Decays
     """
-    s = _within(start, widest_hz)
+    s = _within(start, widest_hz, fastest_t60_s)
     energy = np.einsum("pn,pn->p", y.real, y.real) + np.einsum("pn,pn->p", y.imag, y.imag)
     damping = np.full(len(y), 1e-3)
     c, rest, slope, bend = _project(time_s, y, energy, s)
     active = np.arange(len(y))
-    for _ in range(_ROUNDS):
+    for _ in range(rounds):
         if not len(active):
             break
         diagonal = np.einsum("prr->pr", bend[active]).real * (1.0 + damping[active, None])
@@ -126,7 +133,7 @@ def fit_decays(time_s: Real, y: Complex, start: Complex, widest_hz: float) -> De
         for r in range(s.shape[1]):
             system[:, r, r] = diagonal[:, r] + 1e-300
         move = np.linalg.solve(system, slope[active][..., None])[..., 0]
-        tried = _within(s[active] + move, widest_hz)
+        tried = _within(s[active] + move, widest_hz, fastest_t60_s)
         new_c, new_rest, new_slope, new_bend = _project(time_s, y[active], energy[active], tried)
         better = new_rest <= rest[active]
         gain = np.where(better, rest[active] - new_rest, np.inf)
@@ -139,8 +146,8 @@ def fit_decays(time_s: Real, y: Complex, start: Complex, widest_hz: float) -> De
     return Decays(s=s, c=c, rest=rest)
 
 
-def _within(s: Complex, widest_hz: float) -> Complex:
-    rate = np.clip(-s.real, T60_LOG / SLOWEST_T60_S, T60_LOG / FASTEST_T60_S)
+def _within(s: Complex, widest_hz: float, fastest_t60_s: float) -> Complex:
+    rate = np.clip(-s.real, T60_LOG / SLOWEST_T60_S, T60_LOG / fastest_t60_s)
     turn = np.clip(s.imag, -2.0 * np.pi * widest_hz, 2.0 * np.pi * widest_hz)
     return np.asarray(-rate + 1j * turn)
 

@@ -14,7 +14,7 @@ longer taken for two.
 import numpy as np
 from numpy.typing import NDArray
 
-from timbre_match.measure.decay import FASTEST_T60_S, SLOWEST_T60_S, T60_LOG, Decays, exponentials
+from timbre_match.measure.decay import SLOWEST_T60_S, T60_LOG, Decays, exponentials
 
 Real = NDArray[np.float64]
 Complex = NDArray[np.complex128]
@@ -25,7 +25,7 @@ _STEEPEST = 3.0
 """Nepers by which one step may change an amplitude."""
 
 
-def fit_fading(time_s: Real, size: Real, noise: Real, start: Decays) -> Decays:
+def fit_fading(time_s: Real, size: Real, noise: Real, start: Decays, fastest_t60_s: float) -> Decays:
     """Fit the sizes of P partials by components that begin at `start` (Levenberg-Marquardt).
 
     Parameters
@@ -37,6 +37,8 @@ def fit_fading(time_s: Real, size: Real, noise: Real, start: Decays) -> Decays:
         Noise power per sample of y.
     start : Decays
         R components for each.
+    fastest_t60_s : float
+        The shortest time in which a component may fall by 60 dB.
 
     Returns
     -------
@@ -56,7 +58,7 @@ def fit_fading(time_s: Real, size: Real, noise: Real, start: Decays) -> Decays:
         system[:, index, index] *= 1.0 + damping[active, None]
         system[:, index, index] += 1e-12 * np.einsum("pqq->p", system)[:, None] + 1e-300
         move = np.linalg.solve(system, slope[active][..., None])[..., 0]
-        new_s, new_c = _moved(s[active], c[active], move)
+        new_s, new_c = _moved(s[active], c[active], move, T60_LOG / fastest_t60_s)
         new_rest, new_slope, new_bend = _equations(time_s, size[active], noise[active], new_s, new_c)
         better = new_rest <= rest[active]
         gain = np.where(better, rest[active] - new_rest, np.inf)
@@ -99,7 +101,7 @@ def _equations(time_s: Real, size: Real, noise: Real, s: Complex, c: Complex) ->
     )
 
 
-def _moved(s: Complex, c: Complex, move: Real) -> tuple[Complex, Complex]:
+def _moved(s: Complex, c: Complex, move: Real, fastest: float) -> tuple[Complex, Complex]:
     log_c = np.zeros_like(c)
     change = np.zeros_like(s)
     log_c[:, 0], change[:, 0] = move[:, 0], move[:, 1]
@@ -109,5 +111,5 @@ def _moved(s: Complex, c: Complex, move: Real) -> tuple[Complex, Complex]:
         change[:, i] = move[:, first + 2] + 1j * move[:, first + 3]
     log_c = np.clip(log_c.real, -_STEEPEST, _STEEPEST) + 1j * log_c.imag
     new = s + change
-    rate = np.clip(-new.real, T60_LOG / SLOWEST_T60_S, T60_LOG / FASTEST_T60_S)
+    rate = np.clip(-new.real, T60_LOG / SLOWEST_T60_S, fastest)
     return -rate + 1j * new.imag, c * np.exp(log_c)

@@ -23,10 +23,13 @@ _NEAR_DB, _OVER_NOISE_DB = 30.0, 10.0
 _VISIBLE_DB = 1.0
 _MISFIT = 0.1
 """Root-mean-square error relative to the partial beyond which a fit does not describe it: a little under 1 dB."""
+_ROUNDS_FOR_START = 8
 _PIECES = 24
 _SURELY_MORE = 2.5
 _OVERLAP_DB = 12.0
-_JUMP_DB = 6.0
+_FARTHEST_DB = 12.0
+"""How far a decay is followed back from where it is first seen to the onset."""
+_UNSURE_DB = 3.0
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
@@ -92,18 +95,27 @@ def measure_partials(bands: Bands, noise: Real, reach_hz: float, half_hz: float)
     """
     time_s, y = bands.time_s, bands.y
     each = noise / bands.noise_factor
-    start = search_one(time_s, y, reach_hz)
-    one = fit_decays(time_s, y, start[:, None], reach_hz)
+    # What has died before it can be seen is the attack, or a partial that is gone too soon to be told from it.
+    fastest_t60_s = 60.0 / _FARTHEST_DB * float(time_s[0])
+    start = search_one(time_s, y, reach_hz, fastest_t60_s)
+    one = fit_decays(time_s, y, start[:, None], reach_hz, fastest_t60_s)
     energy = (y.real**2 + y.imag**2).sum(axis=1)
-    heard = (energy - one.rest > _HEARD * each) & (np.abs(one.s[:, 0].imag) < 2.0 * np.pi * 0.999 * reach_hz)
+    heard = energy - one.rest > _HEARD * each
+    heard &= np.abs(one.s[:, 0].imag) < 2.0 * np.pi * 0.999 * reach_hz
+    heard &= -T60_LOG / one.s[:, 0].real > 1.001 * fastest_t60_s
     typical = np.median(one.s[heard, 0].real) if heard.any() else -T60_LOG
     spread = np.exp(2.0 * np.where(heard, one.s[:, 0].real, typical)[:, None] * time_s).sum(axis=1)
     noise_amplitude = np.sqrt(each / spread)
+    # Where something was there that is no partial, that is what a partial would have to stand out of.
+    begins = np.abs(y[:, : max(1, len(time_s) // 20)]).max(axis=1) * 10.0 ** (_FARTHEST_DB / 20.0)
+    noise_amplitude = np.where(heard, noise_amplitude, np.maximum(noise_amplitude, begins))
     rows = np.flatnonzero(heard)
     values = {name: np.full(len(y), np.nan) for name in _VALUES}
     decay: list[DecayShape | None] = [None] * len(y)
     if len(rows):
-        found, shapes = _described(time_s, y[rows], noise[rows], bands.noise_factor, one.chosen(rows), half_hz)
+        found, shapes = _described(
+            time_s, y[rows], noise[rows], bands.noise_factor, one.chosen(rows), half_hz, fastest_t60_s
+        )
         for name, value in found.items():
             values[name][rows] = value
         for row, shape in zip(rows, shapes, strict=True):
@@ -118,57 +130,73 @@ _VALUES = (
 
 
 def _described(
-    time_s: Real, y: Complex, noise: Real, noise_factor: float, one: Decays, half_hz: float
+    time_s: Real,
+    y: Complex,
+    noise: Real,
+    noise_factor: float,
+    one: Decays,
+    half_hz: float,
+    fastest_t60_s: float,
 ) -> tuple[dict[str, Real], list[DecayShape]]:
     size = np.abs(y)
-    plain = fit_fading(time_s, size, noise, one)
-    double = _fit_two(time_s, y, size, noise, one, plain, half_hz)
+    plain = fit_fading(time_s, size, noise, one, fastest_t60_s)
+    double = _fit_two(time_s, y, size, noise, one, plain, half_hz, fastest_t60_s)
     taken = _second_is_needed(time_s, plain, double, noise, noise_factor)
-    shapes: list[DecayShape] = ["plain"] * len(y)
     values = {name: np.full(len(y), np.nan) for name in _VALUES}
     values["off_hz"] = one.s[:, 0].imag / (2.0 * np.pi)
     values["freq_se_hz"] = _frequency_se(time_s, one, noise, noise_factor)
     values["phase_rad"] = np.angle(one.c[:, 0])
-    for rows, fit in ((np.flatnonzero(~taken), plain), (np.flatnonzero(taken), double)):
-        if not len(rows):
-            continue
-        fit = fit.chosen(rows)
-        start, decrease = _start_and_decrease(fit)
-        covariance = _covariance(time_s, size[rows], noise[rows], noise_factor, fit)
-        values["amplitude"][rows] = np.exp(start)
-        values["t60_s"][rows] = decrease
-        by_start, by_decrease = _sensitivities(fit)
-        values["amplitude_se"][rows] = np.sqrt(np.einsum("pq,pqr,pr->p", by_start, covariance, by_start))
-        values["t60_se_s"][rows] = np.sqrt(np.einsum("pq,pqr,pr->p", by_decrease, covariance, by_decrease))
-    misfit = _misfit(time_s, size, np.where(taken, double.rest, plain.rest), noise, noise_factor)
-    for row in range(len(y)):
-        if taken[row]:
-            shapes[row], details = _shape(time_s, double.s[row], double.c[row], float(noise[row]))
-            for name, value in details.items():
+    bad = _misfit(time_s, size, plain.rest, noise, noise_factor) > _MISFIT
+    shapes: list[DecayShape] = ["unclear" if row else "plain" for row in bad]
+    of_plain = _start_and_decrease_with_errors(time_s, size, noise, noise_factor, plain)
+    for name, value in zip(_FOUR, of_plain, strict=True):
+        values[name][:] = value
+    rows = np.flatnonzero(taken)
+    if len(rows):
+        double = double.chosen(rows)
+        still_bad = _misfit(time_s, size[rows], double.rest, noise[rows], noise_factor) > 2.0 * _MISFIT
+        of_double = _start_and_decrease_with_errors(time_s, size[rows], noise[rows], noise_factor, double)
+        unsure = of_double[1] > _UNSURE_DB / _DB_PER_NEPER
+        for i, row in enumerate(rows):
+            shape, details = _shape(time_s, double.s[i], double.c[i], float(noise[row]))
+            # A decay that bends a little, and is neither, is still described by its plain fit.
+            if unsure[i] or (shape == "unclear" and not bad[row]):
+                continue
+            shapes[row] = "unclear" if still_bad[i] else shape
+            values_of = dict(zip(_FOUR, (value[i] for value in of_double), strict=True))
+            for name, value in (values_of | ({} if still_bad[i] else details)).items():
                 values[name][row] = value
-        if misfit[row] > (2.0 if taken[row] else 1.0) * _MISFIT:
-            shapes[row] = "unclear"
     return values, shapes
 
 
-def _fit_two(time_s: Real, y: Complex, size: Real, noise: Real, one: Decays, plain: Decays, half_hz: float) -> Decays:
+_FOUR = ("amplitude", "amplitude_se", "t60_s", "t60_se_s")
+
+
+def _fit_two(
+    time_s: Real,
+    y: Complex,
+    size: Real,
+    noise: Real,
+    one: Decays,
+    plain: Decays,
+    half_hz: float,
+    fastest_t60_s: float,
+) -> Decays:
     """The better of two fits: from a second component in what the first leaves, and from a decay that bends."""
-    second = search_one(time_s, y - one.at(time_s), 0.8 * half_hz)
-    apart = fit_decays(time_s, y, np.stack([one.s[:, 0], second], axis=1), half_hz)
-    apart = fit_fading(time_s, size, noise, apart)
+    second = search_one(time_s, y - one.at(time_s), 0.8 * half_hz, fastest_t60_s)
+    start = np.stack([one.s[:, 0], second], axis=1)
+    apart = fit_decays(time_s, y, start, half_hz, fastest_t60_s, rounds=_ROUNDS_FOR_START)
     rate = plain.s[:, 0].real
-    bent = Decays(
-        s=np.stack([1.8 * rate, 0.4 * rate + 0.01j], axis=1),
-        c=np.stack([np.abs(plain.c[:, 0]), 0.15 * np.abs(plain.c[:, 0])], axis=1).astype(np.complex128),
-        rest=plain.rest,
+    bent_s = np.stack([1.8 * rate, 0.4 * rate + 0.01j], axis=1)
+    bent_c = np.stack([np.abs(plain.c[:, 0]), 0.15 * np.abs(plain.c[:, 0])], axis=1)
+    both = Decays(
+        s=np.concatenate([apart.s, bent_s]),
+        c=np.concatenate([apart.c, bent_c.astype(np.complex128)]),
+        rest=np.concatenate([apart.rest, plain.rest]),
     )
-    bent = fit_fading(time_s, size, noise, bent)
-    better = (bent.rest < apart.rest)[:, None]
-    return Decays(
-        s=np.where(better, bent.s, apart.s),
-        c=np.where(better, bent.c, apart.c),
-        rest=np.minimum(bent.rest, apart.rest),
-    )
+    fits = fit_fading(time_s, np.tile(size, (2, 1)), np.tile(noise, 2), both, fastest_t60_s)
+    count = len(y)
+    return fits.chosen(np.where(fits.rest[count:] < fits.rest[:count], np.arange(count) + count, np.arange(count)))
 
 
 def _level_db(fit: Decays, time_s: Real) -> Real:
@@ -189,7 +217,7 @@ def _seen(time_s: Real, level_db: Real, noise: Real) -> NDArray[np.bool_]:
 def _second_is_needed(
     time_s: Real, plain: Decays, double: Decays, noise: Real, noise_factor: float
 ) -> NDArray[np.bool_]:
-    """Whether the data ask for a second component, it can be seen, and it is no remnant of the attack."""
+    """Whether the data ask for a second component, and it can be seen."""
     values = len(time_s) * noise_factor
     # The Bayesian information criterion for four more parameters, with a margin for the search among many.
     ratio = np.maximum(plain.rest, 1e-30) / np.maximum(double.rest, 1e-30)
@@ -197,9 +225,7 @@ def _second_is_needed(
     before, after = _level_db(plain, time_s), _level_db(double, time_s)
     seen = _seen(time_s, after, noise)
     visible = np.where(seen, np.abs(after - before), 0.0).max(axis=1) > _VISIBLE_DB
-    start = np.zeros(1)
-    back = (_level_db(double, start)[:, 0] - after[:, 0]) - (_level_db(plain, start)[:, 0] - before[:, 0])
-    return np.asarray(asked & visible & (np.abs(back) < _JUMP_DB))
+    return np.asarray(asked & visible)
 
 
 def _misfit(time_s: Real, size: Real, rest: Real, noise: Real, noise_factor: float) -> Real:
@@ -220,7 +246,7 @@ def _covariance(time_s: Real, size: Real, noise: Real, noise_factor: float, fit:
     parameters = columns.shape[1]
     scale = np.sqrt(np.einsum("pqn,pqn->pq", columns, columns)) + 1e-300
     columns = columns / scale[:, :, None]
-    inverse = np.linalg.pinv(np.matmul(columns, columns.transpose(0, 2, 1)), hermitian=True, rcond=1e-10)
+    inverse = np.linalg.pinv(np.matmul(columns, columns.transpose(0, 2, 1)), hermitian=True, rcond=1e-7)
     error = size - np.sqrt(np.abs(fit.at(time_s)) ** 2 + noise[:, None])
     freedom = max(1.0, len(time_s) * noise_factor - parameters)
     white = (
@@ -242,9 +268,18 @@ def _covariance(time_s: Real, size: Real, noise: Real, noise_factor: float, fit:
     return np.asarray(chosen / (scale[:, :, None] * scale[:, None, :]))
 
 
-def _start_and_decrease(fit: Decays) -> tuple[Real, Real]:
-    """Natural logarithm of the amplitude at the onset, and T60 in seconds."""
-    return np.log(np.abs(fit.c.sum(axis=1)) + 1e-300), _t60_s(fit.s, fit.c)
+def _start_and_decrease_with_errors(
+    time_s: Real, size: Real, noise: Real, noise_factor: float, fit: Decays
+) -> tuple[Real, Real, Real, Real]:
+    """Amplitude at the onset, its relative standard error, T60 in seconds and its standard error, each shape (P,)."""
+    covariance = _covariance(time_s, size, noise, noise_factor, fit)
+    by_start, by_decrease = _sensitivities(fit)
+    return (
+        np.abs(fit.c.sum(axis=1)),
+        np.sqrt(np.einsum("pq,pqr,pr->p", by_start, covariance, by_start)),
+        _t60_s(fit.s, fit.c),
+        np.sqrt(np.einsum("pq,pqr,pr->p", by_decrease, covariance, by_decrease)),
+    )
 
 
 def _t60_s(s: Complex, c: Complex) -> Real:
@@ -255,7 +290,7 @@ def _t60_s(s: Complex, c: Complex) -> Real:
     weight = c[:, :, None] * c[:, None, :].conj() / -pair
     whole = weight.sum(axis=(1, 2)).real
     low, high = np.zeros(len(s)), -T60_LOG / s.real.max(axis=1)
-    for _ in range(40):
+    for _ in range(30):
         middle = 0.5 * (low + high)
         left = (weight * np.exp(pair * middle[:, None, None])).sum(axis=(1, 2)).real
         above = left > 0.01 * whole
@@ -264,25 +299,24 @@ def _t60_s(s: Complex, c: Complex) -> Real:
 
 
 def _sensitivities(fit: Decays) -> tuple[Real, Real]:
-    """Derivatives of :func:`_start_and_decrease` by the parameters of the fit, each of shape (P, q)."""
-    count = fit.s.shape[1]
+    """Derivatives of the logarithm of the amplitude at the onset and of T60 by the parameters, each of shape (P, q)."""
+    partials, count = fit.s.shape
     parameters = 4 * count - 2
-    by_start, by_decrease = np.zeros((2, len(fit.s), parameters))
+    s, c = np.tile(fit.s, (2 * parameters, 1, 1)), np.tile(fit.c, (2 * parameters, 1, 1))
+    step = np.empty((parameters, partials))
     for q in range(parameters):
         i, which = (0, (0, 2)[q]) if q < 2 else ((q - 2) // 4 + 1, (q - 2) % 4)
-        step = 1e-4 * (np.ones(len(fit.s)) if which < 2 else np.abs(fit.s[:, i].real))
-        ends = []
-        for sign in (1.0, -1.0):
-            s, c = fit.s.copy(), fit.c.copy()
-            move = sign * step * (1j if which in (1, 3) else 1.0)
+        step[q] = 1e-4 if which < 2 else 1e-4 * np.abs(fit.s[:, i].real)
+        for place, sign in ((2 * q, 1.0), (2 * q + 1, -1.0)):
+            move = sign * step[q] * (1j if which in (1, 3) else 1.0)
             if which < 2:
-                c[:, i] *= np.exp(move)
+                c[place, :, i] *= np.exp(move)
             else:
-                s[:, i] += move
-            ends.append(_start_and_decrease(Decays(s=s, c=c, rest=fit.rest)))
-        by_start[:, q] = (ends[0][0] - ends[1][0]) / (2.0 * step)
-        by_decrease[:, q] = (ends[0][1] - ends[1][1]) / (2.0 * step)
-    return by_start, by_decrease
+                s[place, :, i] += move
+    start = np.log(np.abs(c.sum(axis=2)) + 1e-300)
+    decrease = _t60_s(s.reshape(-1, count), c.reshape(-1, count)).reshape(start.shape)
+    by_start, by_decrease = ((each[::2] - each[1::2]) / (2.0 * step) for each in (start, decrease))
+    return by_start.T, by_decrease.T
 
 
 def _frequency_se(time_s: Real, one: Decays, noise: Real, noise_factor: float) -> Real:

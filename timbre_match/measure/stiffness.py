@@ -27,6 +27,8 @@ _NEAR_CENTS = 4
 _NOISE_DB, _ENOUGH_DB = 10.0, 30.0
 """A bin of noise stands this far above its surroundings now and then; more than so far above them is sure enough."""
 _MOST = 96
+_NORMAL_MEDIAN = 0.6745
+"""Median of the absolute value of a standard normal variable."""
 _TUKEY = 4.685
 """The biweight at this many standard deviations is 95 % efficient for normal errors (Beaton & Tukey 1974)."""
 
@@ -135,8 +137,8 @@ def fit_law(k: NDArray[np.int64], freq_hz: Real, se_hz: Real) -> StiffString:
 
     With u = (f_k / k)^2 the law is a straight line, u = f0^2 + f0^2 B k^2. A partial's variance is that of its own
     frequency plus a relative scatter common to all (the body's resonances push partials off the law), estimated from
-    the residuals (Paule & Mandel 1982, J. Res. Natl. Bur. Stand. 87:377); partials far off it lose their weight
-    (biweight: Beaton & Tukey 1974, Technometrics 16:147).
+    the median of the residuals; partials far off it lose their weight (biweight: Beaton & Tukey 1974, Technometrics
+    16:147).
 
     Parameters
     ----------
@@ -176,20 +178,17 @@ def fit_law(k: NDArray[np.int64], freq_hz: Real, se_hz: Real) -> StiffString:
 
 def _robust_line(design: Real, y: Real, own: Real) -> tuple[Real, Real, float]:
     """Coefficients, their covariance and the common scatter."""
-    robust = np.ones(len(y))
     # From far off, so that the many that agree begin by outvoting the few that claim to be exact.
     scatter = float(np.median(np.abs(y - np.median(y)))) + float(np.median(own))
-    theta, covariance = _line(design, y, robust / (own**2 + scatter**2))
-    for _ in range(20):
-        rest = y - design @ theta
-        spread = np.sqrt(own**2 + scatter**2)
-        if len(y) > 4:
-            middle = 1.4826 * float(np.median(np.abs(rest / spread)))
-            robust = np.clip(1.0 - (rest / (_TUKEY * max(1.0, middle) * spread)) ** 2, 1e-6, 1.0) ** 2
+    theta, covariance = _line(design, y, 1.0 / (own**2 + scatter**2))
+    for _ in range(12):
+        rest = np.abs(y - design @ theta)
         before = scatter
-        scatter = _scatter(rest, own, robust, max(1.0, float(robust.sum()) - design.shape[1]))
-        theta, covariance = _line(design, y, robust / (own**2 + scatter**2))
-        if abs(scatter - before) <= 1e-3 * scatter + 1e-12:
+        scatter = _scatter(rest, own, len(y) - design.shape[1])
+        spread = np.sqrt(own**2 + scatter**2)
+        robust = np.maximum(1.0 - (rest / (_TUKEY * spread)) ** 2, 0.0) ** 2 if len(y) > 4 else np.ones(len(y))
+        theta, covariance = _line(design, y, robust / spread**2)
+        if abs(scatter - before) <= 1e-2 * scatter + 1e-12:
             break
     return theta, covariance, scatter
 
@@ -204,13 +203,15 @@ def _line(design: Real, y: Real, weight: Real) -> tuple[Real, Real]:
     return theta / size, covariance / np.outer(size, size)
 
 
-def _scatter(rest: Real, own: Real, robust: Real, free: float) -> float:
-    """The common scatter that makes the weighted residuals as large as they should be."""
-    square, own_square = robust * rest**2, own**2
-    if float(np.sum(square / own_square)) <= free:
+def _scatter(rest: Real, own: Real, freedom: int) -> float:
+    """The common scatter that makes the median of the residuals as large, relative to their errors, as it should be."""
+    # Of n residuals of a fit with p parameters, p may be zero whatever the scatter is.
+    share = 1.0 - 0.5 * freedom / len(rest)
+    if freedom < 1 or float(np.quantile(rest / own, share)) <= _NORMAL_MEDIAN:
         return 0.0
-    low, high = 0.0, float(np.sum(square)) / free + 1e-30
-    for _ in range(30):
+    low, high = 0.0, float(rest.max()) / _NORMAL_MEDIAN
+    for _ in range(24):
         middle = 0.5 * (low + high)
-        low, high = (middle, high) if float(np.sum(square / (own_square + middle))) > free else (low, middle)
-    return float(np.sqrt(high))
+        above = float(np.quantile(rest / np.sqrt(own**2 + middle**2), share)) > _NORMAL_MEDIAN
+        low, high = (middle, high) if above else (low, middle)
+    return high
