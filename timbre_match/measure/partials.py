@@ -42,7 +42,7 @@ class Partials:
     off_hz, freq_se_hz : frequency relative to the middle of the band, and its standard error
     amplitude, amplitude_se : peak amplitude at the onset, and its relative standard error
     phase_rad : phase of the cosine at the onset
-    noise_amplitude : amplitude that the noise alone would show (also where not heard)
+    floor_power : square of the peak amplitude of the noise in the band (also where not heard)
     decay, t60_s, t60_se_s, early_t60_s, late_t60_s, late_db, beat_hz, beat_depth_db
         As in :class:`timbre_match.measure.records.Ringing`.
     """
@@ -53,7 +53,7 @@ class Partials:
     amplitude: Real
     amplitude_se: Real
     phase_rad: Real
-    noise_amplitude: Real
+    floor_power: Real
     decay: tuple[DecayShape | None, ...]
     t60_s: Real
     t60_se_s: Real
@@ -99,16 +99,12 @@ def measure_partials(bands: Bands, noise: Real, reach_hz: float, half_hz: float)
     fastest_t60_s = 60.0 / _FARTHEST_DB * float(time_s[0])
     start = search_one(time_s, y, reach_hz, fastest_t60_s)
     one = fit_decays(time_s, y, start[:, None], reach_hz, fastest_t60_s)
-    energy = (y.real**2 + y.imag**2).sum(axis=1)
-    heard = energy - one.rest > _HEARD * each
+    size = np.abs(y)
+    heard = (size**2).sum(axis=1) - one.rest > _HEARD * each
     heard &= np.abs(one.s[:, 0].imag) < 2.0 * np.pi * 0.999 * reach_hz
     heard &= -T60_LOG / one.s[:, 0].real > 1.001 * fastest_t60_s
-    typical = np.median(one.s[heard, 0].real) if heard.any() else -T60_LOG
-    spread = np.exp(2.0 * np.where(heard, one.s[:, 0].real, typical)[:, None] * time_s).sum(axis=1)
-    noise_amplitude = np.sqrt(each / spread)
     # Where something was there that is no partial, that is what a partial would have to stand out of.
-    begins = np.abs(y[:, : max(1, len(time_s) // 20)]).max(axis=1) * 10.0 ** (_FARTHEST_DB / 20.0)
-    noise_amplitude = np.where(heard, noise_amplitude, np.maximum(noise_amplitude, begins))
+    begins = (size[:, : max(1, len(time_s) // 20)] ** 2).max(axis=1) * 10.0 ** (_FARTHEST_DB / 10.0)
     rows = np.flatnonzero(heard)
     values = {name: np.full(len(y), np.nan) for name in _VALUES}
     decay: list[DecayShape | None] = [None] * len(y)
@@ -120,7 +116,9 @@ def measure_partials(bands: Bands, noise: Real, reach_hz: float, half_hz: float)
             values[name][rows] = value
         for row, shape in zip(rows, shapes, strict=True):
             decay[row] = shape
-    return Partials(heard=heard, noise_amplitude=noise_amplitude, decay=tuple(decay), **values)
+    return Partials(
+        heard=heard, floor_power=np.where(heard, noise, np.maximum(noise, begins)), decay=tuple(decay), **values
+    )
 
 
 _VALUES = (
@@ -140,6 +138,8 @@ def _described(
 ) -> tuple[dict[str, Real], list[DecayShape]]:
     size = np.abs(y)
     plain = fit_fading(time_s, size, noise, one, fastest_t60_s)
+    # A partial that is nothing but one damped cosine in noise is best described by the fit to wave and phase together.
+    exact = _misfit(time_s, size, 0.5 * one.rest, noise, noise_factor) == 0.0
     double = _fit_two(time_s, y, size, noise, one, plain, half_hz, fastest_t60_s)
     taken = _second_is_needed(time_s, plain, double, noise, noise_factor)
     values = {name: np.full(len(y), np.nan) for name in _VALUES}
@@ -148,6 +148,9 @@ def _described(
     values["phase_rad"] = np.angle(one.c[:, 0])
     bad = _misfit(time_s, size, plain.rest, noise, noise_factor) > _MISFIT
     shapes: list[DecayShape] = ["unclear" if row else "plain" for row in bad]
+    plain = Decays(
+        s=np.where(exact[:, None], one.s, plain.s), c=np.where(exact[:, None], one.c, plain.c), rest=plain.rest
+    )
     of_plain = _start_and_decrease_with_errors(time_s, size, noise, noise_factor, plain)
     for name, value in zip(_FOUR, of_plain, strict=True):
         values[name][:] = value

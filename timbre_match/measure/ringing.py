@@ -21,10 +21,10 @@ from timbre_match.measure.stiffness import StiffString, fit_law, search_law, str
 from timbre_match.measure.subbands import Bands, cut_bands
 
 _ATTACK_S = 0.02
-_SETTLED = 1.5
+_SETTLED = 1.0
 """The band's own response to the attack has passed after so many times the inverse of its half-width."""
-_NARROWEST_HZ = 25.0
-_RESOLVED = 120.0
+_NARROWEST_HZ = 20.0
+_RESOLVED = 90.0
 """Half-width times length of a band: some 360 samples tell of every decay."""
 _MOST_PARTIALS = 200
 
@@ -61,7 +61,7 @@ def measure_ringing(recording: Recording, note: HeldNote, *, a4_hz: float = unit
     expected_hz = stretched_hz(k, f0_hz, b)
     k = k[: max(1, int(np.searchsorted(expected_hz, edge_hz)))]
     expected_hz = expected_hz[: len(k)]
-    half_hz = min(0.5 * f0_hz, max(_NARROWEST_HZ, _RESOLVED / (note.end_s - onset_s)))
+    half_hz = min(0.45 * f0_hz, max(_NARROWEST_HZ, _RESOLVED / (note.end_s - onset_s)))
     begin_s = min(onset_s + _ATTACK_S + _SETTLED / half_hz, onset_s + 0.5 * (note.end_s - onset_s))
     bands = cut_bands(recording.samples, rate, onset_s, (begin_s, note.end_s), expected_hz, half_hz)
     noise = noise_of_bands(bands, half_hz)
@@ -123,7 +123,7 @@ def _recipe(
         freq_hz=freq_hz,
         level_db=level_db,
         se_db=se_db,
-        floor_db=units.power_to_db(partials.noise_amplitude**2 / total),
+        floor_db=units.power_to_db(partials.floor_power / total),
         heard=heard,
         phase_rad=np.where(heard, (phase + np.pi) % (2.0 * np.pi) - np.pi, np.nan),
         ringing=Ringing(

@@ -26,6 +26,8 @@ _NEAR_CENTS = 4
 """How far off a partial still counts in the search."""
 _NOISE_DB, _ENOUGH_DB = 10.0, 30.0
 """A bin of noise stands this far above its surroundings now and then; more than so far above them is sure enough."""
+_ALONE = 0.12
+"""A peak is the highest within this share of the fundamental."""
 _MOST = 96
 _NORMAL_MEDIAN = 0.6745
 """Median of the absolute value of a standard normal variable."""
@@ -123,13 +125,18 @@ def _salience(samples: Real, rate: float, f0_hz: float, highest_hz: float) -> Re
     padded = np.pad(level_db, (0, blocks * per - len(level_db)), mode="edge").reshape(blocks, per)
     floor_db = np.interp(np.arange(len(level_db)), (np.arange(blocks) + 0.5) * per, np.percentile(padded, 40, axis=1))
     above = np.clip(level_db - floor_db - _NOISE_DB, 0.0, _ENOUGH_DB - _NOISE_DB)
-    steps = int(cents_between(highest_hz, f0_hz)) + _OFF_CENTS
-    edge = f0_hz * 2.0 ** ((np.arange(steps + 1) - _OFF_CENTS - 0.5) / 1200.0) / bin_hz
-    between = np.interp(0.5 * (edge[1:] + edge[:-1]), np.arange(len(above)), above)
-    first = np.minimum(np.ceil(edge).astype(np.int64), len(above) - 1)
-    # Where a cent holds several bins, the highest of them.
-    highest = np.maximum.reduceat(above, first[:-1])
-    return scipy.ndimage.maximum_filter1d(np.where(np.diff(first) > 0, highest, between), 2 * _NEAR_CENTS - 1)
+    # Peaks only: the slopes of a strong one stand out of the floor as well.
+    near = 2 * round(_ALONE * f0_hz / bin_hz) + 1
+    peak = np.flatnonzero((level_db == scipy.ndimage.maximum_filter1d(level_db, near)) & (above > 0.0))
+    peak = peak[(peak > 0) & (peak < len(level_db) - 1)]
+    left, middle, right = level_db[peak - 1], level_db[peak], level_db[peak + 1]
+    place_hz = bin_hz * (peak + 0.5 * (left - right) / np.minimum(left - 2.0 * middle + right, -1e-9))
+    steps = round(cents_between(highest_hz, f0_hz)) + _OFF_CENTS
+    cents = np.round(1200.0 * np.log2(np.maximum(place_hz, 1.0) / f0_hz)).astype(np.int64) + _OFF_CENTS
+    inside = (cents >= 0) & (cents < steps)
+    salience = np.zeros(steps)
+    np.maximum.at(salience, cents[inside], above[peak[inside]])
+    return np.asarray(scipy.ndimage.maximum_filter1d(salience, 2 * _NEAR_CENTS + 1))
 
 
 def fit_law(k: NDArray[np.int64], freq_hz: Real, se_hz: Real) -> StiffString:

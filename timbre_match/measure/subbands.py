@@ -9,8 +9,8 @@ from numpy.typing import NDArray
 Real = NDArray[np.float64]
 Complex = NDArray[np.complex128]
 
-_FADE = 0.5
-"""A band fades out within this share of its half-width."""
+_FADE = 1.0
+"""A band fades out within so many of its half-widths: the slower, the sooner its response to the attack has passed."""
 _EDGE_S = 0.02
 
 
@@ -53,7 +53,7 @@ def cut_bands(
         From where to where the envelopes are wanted, seconds from the start of the recording.
     centre_hz : array, shape (P,)
     half_hz : float
-        Half-width of each band; it fades out within another half of that.
+        Half-width of each band where it is flat; at twice that it has faded out.
 
     Returns
     -------
