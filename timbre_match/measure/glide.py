@@ -16,6 +16,8 @@ _SMOOTH_S = 0.05
 _ENOUGH = 30.0
 """Beyond this ratio of power to noise a partial's own beats, not the noise, limit what it says."""
 _CERTAIN = 4.0
+_WORTH = 3e-4
+"""Half a cent: less than that harms no fit."""
 
 
 def common_glide(time_s: Real, y: Complex, freq_hz: Real, noise: Real) -> Real:
@@ -67,7 +69,8 @@ def common_glide(time_s: Real, y: Complex, freq_hz: Real, noise: Real) -> Real:
     spread = float((robust * (deviation - own[:, None] - glide) ** 2).sum()) / float(np.count_nonzero(robust) or 1)
     # How much larger the common deviation is than partials that do nothing together would show.
     pieces = max(4.0, len(total) * step_s / _SMOOTH_S)
-    if float(robust.sum(axis=0) @ glide**2) < _CERTAIN * spread * pieces:
+    power = float(robust.sum(axis=0) @ glide**2)
+    if power < _CERTAIN * spread * pieces or power < _WORTH**2 * float(robust.sum()):
         return none
     return np.interp(np.arange(len(time_s)), np.arange(len(total)) + 0.5, glide)
 

@@ -20,6 +20,8 @@ _HEARD = 20.0
 frequencies of a band, reaches this in one of some 10,000 bands (exp(-20) times a few hundred places)."""
 _NEAR_DB, _OVER_NOISE_DB = 30.0, 10.0
 """A decay is described down to so far under its beginning, and so far above the noise."""
+_ACCURACY = 1e-9
+"""Less than so much of the strongest partial's power is noise, were it only that of 16 bits or of a lossy codec."""
 _VISIBLE_DB = 1.0
 _MISFIT = 0.1
 """Root-mean-square error relative to the partial beyond which a fit does not describe it: a little under 1 dB."""
@@ -39,6 +41,9 @@ class Partials:
     Attributes
     ----------
     heard : bool array
+    found : bool array
+        Whether there is a partial at all; one that dies too fast for its level to be known is found, but not heard.
+        `off_hz` and `freq_se_hz` are right for these too.
     off_hz, freq_se_hz : frequency relative to the middle of the band, and its standard error
     amplitude, amplitude_se : peak amplitude at the onset, and its relative standard error
     phase_rad : phase of the cosine at the onset
@@ -48,6 +53,7 @@ class Partials:
     """
 
     heard: NDArray[np.bool_]
+    found: NDArray[np.bool_]
     off_hz: Real
     freq_se_hz: Real
     amplitude: Real
@@ -76,7 +82,8 @@ def noise_of_bands(bands: Bands, half_hz: float) -> Real:
     off_hz = np.abs(scipy.fft.fftfreq(count, float(bands.time_s[1] - bands.time_s[0])))
     outer = power[:, (off_hz > 0.5 * half_hz) & (off_hz < half_hz)]
     # The median of an exponential variable is ln 2 of its mean.
-    return np.asarray(np.median(outer, axis=1) / np.log(2.0) * bands.noise_factor) + 1e-30
+    noise = np.median(outer, axis=1) / np.log(2.0) * bands.noise_factor
+    return np.maximum(noise, _ACCURACY * float(np.max(np.abs(bands.y)) ** 2) + 1e-30)
 
 
 def measure_partials(bands: Bands, noise: Real, reach_hz: float, half_hz: float) -> Partials:
@@ -100,24 +107,30 @@ def measure_partials(bands: Bands, noise: Real, reach_hz: float, half_hz: float)
     start = search_one(time_s, y, reach_hz, fastest_t60_s)
     one = fit_decays(time_s, y, start[:, None], reach_hz, fastest_t60_s)
     size = np.abs(y)
-    heard = (size**2).sum(axis=1) - one.rest > _HEARD * each
-    heard &= np.abs(one.s[:, 0].imag) < 2.0 * np.pi * 0.999 * reach_hz
-    heard &= -T60_LOG / one.s[:, 0].real > 1.001 * fastest_t60_s
+    found = (size**2).sum(axis=1) - one.rest > _HEARD * each
+    found &= np.abs(one.s[:, 0].imag) < 2.0 * np.pi * 0.999 * reach_hz
+    heard = found & (-T60_LOG / one.s[:, 0].real > 1.001 * fastest_t60_s)
     # Where something was there that is no partial, that is what a partial would have to stand out of.
     begins = (size[:, : max(1, len(time_s) // 20)] ** 2).max(axis=1) * 10.0 ** (_FARTHEST_DB / 10.0)
     rows = np.flatnonzero(heard)
     values = {name: np.full(len(y), np.nan) for name in _VALUES}
+    values["off_hz"] = one.s[:, 0].imag / (2.0 * np.pi)
+    values["freq_se_hz"] = _frequency_se(time_s, one, noise, bands.noise_factor)
     decay: list[DecayShape | None] = [None] * len(y)
     if len(rows):
-        found, shapes = _described(
+        described, shapes = _described(
             time_s, y[rows], noise[rows], bands.noise_factor, one.chosen(rows), half_hz, fastest_t60_s
         )
-        for name, value in found.items():
+        for name, value in described.items():
             values[name][rows] = value
         for row, shape in zip(rows, shapes, strict=True):
             decay[row] = shape
     return Partials(
-        heard=heard, floor_power=np.where(heard, noise, np.maximum(noise, begins)), decay=tuple(decay), **values
+        heard=heard,
+        found=found,
+        floor_power=np.where(heard, noise, np.maximum(noise, begins)),
+        decay=tuple(decay),
+        **values,
     )
 
 
@@ -142,9 +155,7 @@ def _described(
     exact = _misfit(time_s, size, 0.5 * one.rest, noise, noise_factor) == 0.0
     double = _fit_two(time_s, y, size, noise, one, plain, half_hz, fastest_t60_s)
     taken = _second_is_needed(time_s, plain, double, noise, noise_factor)
-    values = {name: np.full(len(y), np.nan) for name in _VALUES}
-    values["off_hz"] = one.s[:, 0].imag / (2.0 * np.pi)
-    values["freq_se_hz"] = _frequency_se(time_s, one, noise, noise_factor)
+    values = {name: np.full(len(y), np.nan) for name in _VALUES[2:]}
     values["phase_rad"] = np.angle(one.c[:, 0])
     bad = _misfit(time_s, size, plain.rest, noise, noise_factor) > _MISFIT
     shapes: list[DecayShape] = ["unclear" if row else "plain" for row in bad]

@@ -17,7 +17,7 @@ from timbre_match.measure.glide import common_glide, without_glide
 from timbre_match.measure.onset import onset_of
 from timbre_match.measure.partials import Partials, measure_partials, noise_of_bands
 from timbre_match.measure.records import RINGING_ARRAYS, Recipe, Ringing
-from timbre_match.measure.stiffness import StiffString, fit_law, search_law, stretched_hz
+from timbre_match.measure.stiffness import StiffString, fit_law, search_partials, stretched_hz
 from timbre_match.measure.subbands import Bands, cut_bands
 
 _ATTACK_S = 0.02
@@ -26,7 +26,6 @@ _SETTLED = 1.0
 _NARROWEST_HZ = 20.0
 _RESOLVED = 90.0
 """Half-width times length of a band: some 360 samples tell of every decay."""
-_MOST_PARTIALS = 200
 
 
 def measure_ringing(recording: Recording, note: HeldNote, *, a4_hz: float = units.STANDARD_A4_HZ) -> Recipe:
@@ -56,11 +55,8 @@ def measure_ringing(recording: Recording, note: HeldNote, *, a4_hz: float = unit
         edge_hz = min(edge_hz, 0.97 * recording.low_pass_hz)
     onset_s = onset_of(recording.samples, rate, note)
     first, last = round((onset_s + _ATTACK_S) * rate), round(note.end_s * rate)
-    f0_hz, b = search_law(recording.samples[first:last], rate, note.f0_hz, edge_hz)
-    k = np.arange(1, _MOST_PARTIALS + 1)
-    expected_hz = stretched_hz(k, f0_hz, b)
-    k = k[: max(1, int(np.searchsorted(expected_hz, edge_hz)))]
-    expected_hz = expected_hz[: len(k)]
+    expected_hz, f0_hz = search_partials(recording.samples[first:last], rate, note.f0_hz, edge_hz)
+    k = np.arange(1, len(expected_hz) + 1)
     half_hz = min(0.45 * f0_hz, max(_NARROWEST_HZ, _RESOLVED / (note.end_s - onset_s)))
     begin_s = min(onset_s + _ATTACK_S + _SETTLED / half_hz, onset_s + 0.5 * (note.end_s - onset_s))
     bands = cut_bands(recording.samples, rate, onset_s, (begin_s, note.end_s), expected_hz, half_hz)
@@ -74,16 +70,16 @@ def measure_ringing(recording: Recording, note: HeldNote, *, a4_hz: float = unit
     partials = measure_partials(bands, noise, min(0.5 * half_hz, 0.1 * f0_hz + 3.0), half_hz)
     if not partials.heard.any():
         raise NoHeldNoteError(
-            f"nothing of {note.note} at {onset_s:.2f} s stands out of the noise",
+            f"nothing of {note.note} at {onset_s:.2f} s stands out of the noise for long enough to be measured",
             where=recording.file,
             cause="the note is too soft against the noise around it",
             remedy="record closer to the microphone, or in a quieter room",
         )
     own_hz = expected_hz + partials.off_hz
-    heard = partials.heard
-    law = fit_law(k[heard], own_hz[heard], partials.freq_se_hz[heard])
+    found = partials.found
+    law = fit_law(k[found], own_hz[found], partials.freq_se_hz[found])
     return _recipe(
-        note, a4_hz, onset_s, partials, law, np.where(heard, own_hz, stretched_hz(k, law.f0_hz, law.b)), edge_hz
+        note, a4_hz, onset_s, partials, law, np.where(found, own_hz, stretched_hz(k, law.f0_hz, law.b)), edge_hz
     )
 
 

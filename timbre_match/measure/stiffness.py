@@ -11,7 +11,6 @@ from dataclasses import dataclass
 import numpy as np
 import scipy.fft
 import scipy.ndimage
-import scipy.signal
 from numpy.typing import NDArray
 
 from timbre_match.units import cents_between
@@ -19,16 +18,19 @@ from timbre_match.units import cents_between
 Real = NDArray[np.float64]
 
 LARGEST_B = 3e-3
+MOST_PARTIALS = 200
 _LONGEST_S = 1.0
 _SHORTEST_CYCLES = 14.0
 _OFF_CENTS = 60
 _NEAR_CENTS = 4
 """How far off a partial still counts in the search."""
-_NOISE_DB, _ENOUGH_DB = 10.0, 30.0
-"""A bin of noise stands this far above its surroundings now and then; more than so far above them is sure enough."""
+_NOISE_DB, _ENOUGH_DB = 14.0, 26.0
+"""A bin of noise stands so far above its surroundings now and then; another so much above that is sure enough."""
 _ALONE = 0.12
 """A peak is the highest within this share of the fundamental."""
 _MOST = 96
+_PEAK_HZ = 0.3
+"""How well a peak shows a partial that dies within a second."""
 _NORMAL_MEDIAN = 0.6745
 """Median of the absolute value of a standard normal variable."""
 _TUKEY = 4.685
@@ -61,8 +63,8 @@ def stretched_hz(k: NDArray[np.int64], f0_hz: float, b: float) -> Real:
     return np.asarray(k * f0_hz * np.sqrt(1.0 + b * np.square(k, dtype=np.float64)))
 
 
-def search_law(samples: Real, sample_rate_hz: float, f0_hz: float, highest_hz: float) -> tuple[float, float]:
-    """The f0 and B whose partials stand out most from the spectrum of a note.
+def search_partials(samples: Real, sample_rate_hz: float, f0_hz: float, highest_hz: float) -> tuple[Real, float]:
+    """Find the partials of a note in its spectrum, by the f0 and B whose partials stand out most.
 
     The first eight partials are tried over a wide grid of f0 and B, then twice as many over a finer one around the
     best, and so on: a few partials that the body pulls off the law, or that are missing, do not lead the search astray.
@@ -79,9 +81,13 @@ def search_law(samples: Real, sample_rate_hz: float, f0_hz: float, highest_hz: f
 
     Returns
     -------
-    f0_hz, b : float
+    freq_hz : array, shape (K,)
+        A frequency for each partial in the band: that of a peak near where the law has it, else where the law has it.
+    f0_hz : float
+        The flexible fundamental, roughly.
     """
-    salience = _salience(samples, sample_rate_hz, f0_hz, highest_hz)
+    peak_hz, height_db = _peaks(samples, sample_rate_hz, f0_hz, highest_hz)
+    salience = _by_cents(peak_hz, height_db, f0_hz, highest_hz)
     off_cents = np.arange(-_OFF_CENTS, _OFF_CENTS + 1, 3, dtype=np.float64)
     count = min(8, max(1, int(highest_hz / f0_hz)))
     step = _stretch_step(count)
@@ -95,15 +101,33 @@ def search_law(samples: Real, sample_rate_hz: float, f0_hz: float, highest_hz: f
         score -= 1e-3 * np.arange(len(b))
         best = np.unravel_index(score.argmax(), score.shape)
         centre, middle = float(off_cents[best[0]]), float(b[best[1]])
-        if (
-            2 * count > _MOST
-            or f0_hz * 2.0 ** (centre / 1200.0) * count * np.sqrt(1.0 + middle * count**2) > highest_hz
-        ):
-            return f0_hz * 2.0 ** (centre / 1200.0), middle
+        found_hz = f0_hz * 2.0 ** (centre / 1200.0)
+        if 2 * count > _MOST or found_hz * count * np.sqrt(1.0 + middle * count**2) > highest_hz:
+            break
         count *= 2
         off_cents = centre + np.arange(-4.0, 5.0)
         reach, step = 2.0 * step, _stretch_step(count)
         b = np.arange(max(0.0, middle - reach), middle + reach, step)
+    return _on_peaks(peak_hz, found_hz, middle, highest_hz)
+
+
+def _on_peaks(peak_hz: Real, f0_hz: float, b: float, highest_hz: float) -> tuple[Real, float]:
+    """Partials of a law that is nearly right, on peaks where there are any near; and the fundamental through these."""
+    for near_cents in (2.0 * _NEAR_CENTS, 1.5 * _NEAR_CENTS):
+        freq_hz = stretched_hz(np.arange(1, MOST_PARTIALS + 1), f0_hz, b)
+        freq_hz = freq_hz[: max(1, int(np.searchsorted(freq_hz, highest_hz)))]
+        if not len(peak_hz):
+            return freq_hz, f0_hz
+        at = np.clip(np.searchsorted(peak_hz, freq_hz), 1, max(1, len(peak_hz) - 1))
+        at = np.where(np.abs(peak_hz[at - 1] - freq_hz) < np.abs(peak_hz[at % len(peak_hz)] - freq_hz), at - 1, at)
+        nearest_hz = peak_hz[at % len(peak_hz)]
+        reach_hz = np.minimum(freq_hz * (2.0 ** (near_cents / 1200.0) - 1.0) + 0.5, 0.1 * f0_hz)
+        close = np.flatnonzero(np.abs(nearest_hz - freq_hz) < reach_hz)
+        if len(close) > 2:
+            law = fit_law(close + 1, nearest_hz[close], np.full(len(close), _PEAK_HZ))
+            f0_hz, b = law.f0_hz, law.b
+        freq_hz[close] = nearest_hz[close]
+    return freq_hz, f0_hz
 
 
 def _stretch_step(count: int) -> float:
@@ -111,8 +135,8 @@ def _stretch_step(count: int) -> float:
     return _NEAR_CENTS / (600.0 / np.log(2.0) * count**2)
 
 
-def _salience(samples: Real, rate: float, f0_hz: float, highest_hz: float) -> Real:
-    """How far the spectrum stands out of its surroundings, cent by cent from 60 cents under `f0_hz`, dB (0 to 20)."""
+def _peaks(samples: Real, rate: float, f0_hz: float, highest_hz: float) -> tuple[Real, Real]:
+    """The peaks of a note's spectrum: frequencies in Hz, and how far they stand out of their surroundings, dB."""
     length = min(len(samples), round(max(_LONGEST_S, _SHORTEST_CYCLES / f0_hz) * rate))
     # Fast in, slowly out: a decaying note is best told from noise by its beginning.
     window = np.minimum(1.0, np.linspace(0.0, 6.0, length)) * np.hanning(2 * length)[length:]
@@ -124,18 +148,23 @@ def _salience(samples: Real, rate: float, f0_hz: float, highest_hz: float) -> Re
     blocks = -(-len(level_db) // per)
     padded = np.pad(level_db, (0, blocks * per - len(level_db)), mode="edge").reshape(blocks, per)
     floor_db = np.interp(np.arange(len(level_db)), (np.arange(blocks) + 0.5) * per, np.percentile(padded, 40, axis=1))
-    above = np.clip(level_db - floor_db - _NOISE_DB, 0.0, _ENOUGH_DB - _NOISE_DB)
-    # Peaks only: the slopes of a strong one stand out of the floor as well.
+    above_db = level_db - floor_db - _NOISE_DB
+    # Only the highest around: the slopes of a strong peak stand out of the floor as well.
     near = 2 * round(_ALONE * f0_hz / bin_hz) + 1
-    peak = np.flatnonzero((level_db == scipy.ndimage.maximum_filter1d(level_db, near)) & (above > 0.0))
+    peak = np.flatnonzero((level_db == scipy.ndimage.maximum_filter1d(level_db, near)) & (above_db > 0.0))
     peak = peak[(peak > 0) & (peak < len(level_db) - 1)]
     left, middle, right = level_db[peak - 1], level_db[peak], level_db[peak + 1]
-    place_hz = bin_hz * (peak + 0.5 * (left - right) / np.minimum(left - 2.0 * middle + right, -1e-9))
+    place = peak + 0.5 * (left - right) / np.minimum(left - 2.0 * middle + right, -1e-9)
+    return bin_hz * place, above_db[peak]
+
+
+def _by_cents(peak_hz: Real, height_db: Real, f0_hz: float, highest_hz: float) -> Real:
+    """Heights of peaks cent by cent from 60 cents under `f0_hz` on; high ones count as sure, a few cents off as near."""
     steps = round(cents_between(highest_hz, f0_hz)) + _OFF_CENTS
-    cents = np.round(1200.0 * np.log2(np.maximum(place_hz, 1.0) / f0_hz)).astype(np.int64) + _OFF_CENTS
+    cents = np.round(1200.0 * np.log2(np.maximum(peak_hz, 1.0) / f0_hz)).astype(np.int64) + _OFF_CENTS
     inside = (cents >= 0) & (cents < steps)
     salience = np.zeros(steps)
-    np.maximum.at(salience, cents[inside], above[peak[inside]])
+    np.maximum.at(salience, cents[inside], np.minimum(height_db[inside], _ENOUGH_DB))
     return np.asarray(scipy.ndimage.maximum_filter1d(salience, 2 * _NEAR_CENTS + 1))
 
 
