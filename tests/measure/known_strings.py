@@ -16,8 +16,8 @@ from numpy.typing import NDArray
 from tests.intake.sounds import recording_of
 from timbre_match.errors import NoHeldNoteError
 from timbre_match.intake.notes import held_notes
-from timbre_match.measure.records import Recipe
 from timbre_match.measure.recipe import measure_recipe
+from timbre_match.measure.records import Recipe
 
 Array = NDArray[np.float64]
 
@@ -30,7 +30,7 @@ LN_1000 = np.log(1000.0)
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class Setting:
-    """What strings to draw: f0, B, the T60 of the lowest partial, power of all partials at the onset over the noise's."""
+    """What strings to draw: f0, B, T60 of the lowest partial, and the power of all partials at the onset over noise."""
 
     f0_hz: float
     b: float
@@ -84,11 +84,11 @@ def draw_string(setting: Setting, rng: np.random.Generator) -> String:
     freq_hz = freq_hz[: len(k)]
     amplitude = 10.0 ** ((-9.0 * np.log2(k) + rng.uniform(-5.0, 5.0, len(k))) / 20.0)
     t60_s = np.clip(setting.t60_s * k**-0.5 * rng.uniform(0.7, 1.3, len(k)), 0.3, 20.0)
-    tones = setting_tones(freq_hz, amplitude, LN_1000 / t60_s, rng, setting.length_s, rate)
+    tones = damped_tones(freq_hz, amplitude, LN_1000 / t60_s, rng, setting.length_s, rate)
     return mixed(tones, f0_hz, setting, freq_hz, amplitude, t60_s, rng)
 
 
-def setting_tones(
+def damped_tones(
     freq_hz: Array, amplitude: Array, rate_per_s: Array, rng: np.random.Generator, length_s: float, rate: int
 ) -> Array:
     """A sum of damped cosines with phases of their own."""

@@ -17,6 +17,9 @@ _EDGE_S = 0.004
 _AROUND_S = 0.2
 _DIP_DB = 16.0
 _STRIKE_S = 0.03
+_EARLY_S = 0.25
+_LONG_ENOUGH_S = 1.0
+_FALLS_DB_PER_S = 2.0
 _RISE_DB = 10.0
 
 
@@ -123,6 +126,33 @@ def is_ringing(envelope: Envelope, begin_s: float, end_s: float) -> bool:
         return False
     half, most = fall[len(fall) // 2], fall[3 * len(fall) // 4]
     return bool(half > 0.35 * fall[-1] and most > 0.5 * fall[-1])
+
+
+def rises_again_db(envelope: Envelope, begin_s: float, end_s: float) -> float:
+    """By how many decibels a note grows again on its way down from its loudest moment to 30 dB below it."""
+    step = envelope.step_s
+    a, b = int(begin_s / step), min(len(envelope.level_db), int(np.ceil(end_s / step)) + 1)
+    level = scipy.ndimage.uniform_filter1d(envelope.level_db[a:b], max(1, round(0.05 / step)), mode="nearest")
+    rest = level[int(np.argmax(level)) :]
+    below = np.flatnonzero(rest < rest[0] - 30.0)
+    rest = rest[: int(below[0])] if len(below) else rest
+    return float((rest - np.minimum.accumulate(rest)).max())
+
+
+def falls_from_the_start(envelope: Envelope, begin_s: float, end_s: float) -> bool:
+    """Whether a note is loudest near its beginning and falls on the whole, beats or not.
+
+    Plucked strings do, but so does many a blown note; the harmonics must tell these apart.
+    """
+    step = envelope.step_s
+    a, b = int(begin_s / step), min(len(envelope.level_db), int(np.ceil(end_s / step)) + 1)
+    level = scipy.ndimage.uniform_filter1d(envelope.level_db[a:b], max(1, round(0.05 / step)), mode="nearest")
+    peak = int(np.argmax(level))
+    rest = level[peak:]
+    if peak * step > _EARLY_S or len(rest) * step < _LONG_ENOUGH_S:
+        return False
+    slope = np.polynomial.Polynomial.fit(np.arange(len(rest)) * step, rest, 1).convert().coef[1]
+    return bool(slope < -_FALLS_DB_PER_S)
 
 
 def _renewals(level_db: NDArray[np.float64], step_s: float) -> tuple[float, ...]:

@@ -10,7 +10,15 @@ from numpy.typing import NDArray
 
 from timbre_match import units
 from timbre_match.errors import NoHeldNoteError
-from timbre_match.intake.envelope import Envelope, is_ringing, level_envelope, steady_stretch
+from timbre_match.intake.envelope import (
+    Envelope,
+    falls_from_the_start,
+    is_ringing,
+    level_envelope,
+    rises_again_db,
+    steady_stretch,
+)
+from timbre_match.intake.locking import spread_of_harmonics
 from timbre_match.intake.octave import settle_octave
 from timbre_match.intake.pitch import HOP_S, PitchTrack, track_pitch, without_rumble
 from timbre_match.intake.recording import Recording
@@ -32,6 +40,12 @@ _STEP_FRAMES = 8
 _SETTLE_S = 1.0
 _BLUR_FRAMES = 3
 _NAMED_WITHIN_CENTS = 70.0
+_LOCKED_CENTS, _LOCKED_HARMONICS = 0.4, 6
+"""On 200 real notes of plucked and struck strings six or more strong harmonics spread by 0.6 cents or more; those of a
+diminuendo on a trumpet by 0.2."""
+_GROWS_DB = 3.0
+_FREE_CENTS, _FREE_HARMONICS = 1.2, 5
+_REST_RISES_DB = 10.0
 _CLOCK_BAND_HZ = 5600.0
 """Up to where harmonics tell the clock."""
 _CLOCK_DENSITY = 3.0
@@ -75,7 +89,11 @@ class HeldNote:
 
 
 def held_notes(
-    recording: Recording, *, notes: Sequence[str] | None = None, a4_hz: float = units.STANDARD_A4_HZ
+    recording: Recording,
+    *,
+    notes: Sequence[str] | None = None,
+    a4_hz: float = units.STANDARD_A4_HZ,
+    kind: NoteKind | None = None,
 ) -> tuple[HeldNote, ...]:
     """Find the held and ringing notes of a recording, in order of time.
 
@@ -87,6 +105,8 @@ def held_notes(
         are left out.
     a4_hz : float
         Tuning reference for the note names, Hz.
+    kind : {"held", "ringing"}, optional
+        What all notes are, where the instrument tells; otherwise each note's level and harmonics do.
 
     Returns
     -------
@@ -119,10 +139,10 @@ def held_notes(
         # The window blurs periodicity at both ends of a note; the level tells better where it begins and ends.
         first = max(first - _BLUR_FRAMES, edges[index])
         last = min(last + _BLUR_FRAMES, starts[index + 1])
-        note = _measured(signal, track, envelope, first, last, f0_hz, a4_hz, wanted_hz)
+        note = _measured(signal, track, envelope, first, last, f0_hz, a4_hz, wanted_hz, kind)
         if note is not None and (wanted_hz is None or _is_one_of(note.f0_hz, wanted_hz)):
             found.append(note)
-    found = _without_scraps(found)
+    found = _without_rests(_without_scraps(found), envelope)
     if not found:
         raise NoHeldNoteError(
             "no held note found" if notes is None else f"none of the notes {' '.join(notes)} found",
@@ -225,10 +245,13 @@ def _measured(
     f0_hz: float,
     a4_hz: float,
     wanted_hz: list[float] | None,
+    kind: NoteKind | None,
 ) -> HeldNote | None:
     """The held note between two frames, or None where too little of it is steady."""
     begin_s, end_s = float(track.time_s[first]), float(track.time_s[last])
-    ringing = is_ringing(envelope, begin_s, end_s)
+    if kind is None:
+        kind = _kind(signal, track, envelope, first, last, f0_hz)
+    ringing = kind == "ringing"
     start_s, stop_s = steady_stretch(envelope, begin_s, end_s, ringing=ringing)
     frames = np.flatnonzero((track.time_s >= start_s) & (track.time_s <= stop_s))
     if stop_s - start_s < _SHORTEST_S or len(frames) < 3:
@@ -253,10 +276,51 @@ def _measured(
         start_s=start_s,
         end_s=stop_s,
         cycles=clock.cycles,
-        kind="ringing" if ringing else "held",
+        kind=kind,
         track_s=clock.time_s,
         track_hz=clock.f0_hz,
     )
+
+
+def _kind(signal: BandLimited, track: PitchTrack, envelope: Envelope, first: int, last: int, f0_hz: float) -> NoteKind:
+    """Whether a note is held or rings: by its level over time, and in doubt by whether its harmonics are locked."""
+    begin_s, end_s = float(track.time_s[first]), float(track.time_s[last])
+    ringing = is_ringing(envelope, begin_s, end_s)
+    if not ringing and not falls_from_the_start(envelope, begin_s, end_s):
+        return "held"
+    start_s, stop_s = steady_stretch(envelope, begin_s, end_s, ringing=True)
+    frames = np.flatnonzero((track.time_s >= start_s) & (track.time_s <= stop_s))
+    if len(frames) < 3:
+        return "ringing" if ringing else "held"
+    clock = refine_clock(signal, Clock(track.time_s[frames], _folded(track.f0_hz[frames], f0_hz)))
+    spread = spread_of_harmonics(signal, clock)
+    if ringing:
+        # Harmonics that keep step cannot beat: if such a note grows again, someone blows or bows it.
+        locked = spread.harmonics >= _LOCKED_HARMONICS and spread.cents < _LOCKED_CENTS
+        driven = locked and rises_again_db(envelope, begin_s, end_s) > _GROWS_DB
+        return "held" if driven else "ringing"
+    free = spread.harmonics >= _FREE_HARMONICS and spread.cents > _FREE_CENTS
+    return "ringing" if free else "held"
+
+
+def _without_rests(notes: list[HeldNote], envelope: Envelope) -> list[HeldNote]:
+    """The notes less what is left of a ringing one after it has been lost for a moment, in a beat or near the floor."""
+    kept: list[HeldNote] = []
+    lowest_db = np.inf
+    for note in notes:
+        peak_db = float(envelope.level_db[_place(envelope, note.start_s) : _place(envelope, note.end_s) + 1].max())
+        if kept and kept[-1].kind == "ringing":
+            since = envelope.level_db[_place(envelope, kept[-1].end_s - 0.1) : _place(envelope, note.start_s) + 1]
+            lowest_db = min(lowest_db, float(since.min())) if len(since) else lowest_db
+            if peak_db < max(lowest_db, envelope.floor_db) + _REST_RISES_DB:
+                continue
+        kept.append(note)
+        lowest_db = np.inf
+    return kept
+
+
+def _place(envelope: Envelope, instant_s: float) -> int:
+    return min(len(envelope.level_db) - 1, max(0, round(instant_s / envelope.step_s)))
 
 
 def _without_scraps(notes: list[HeldNote]) -> list[HeldNote]:

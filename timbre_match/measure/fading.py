@@ -46,7 +46,7 @@ def fit_fading(time_s: Real, size: Real, noise: Real, start: Decays, fastest_t60
         Frequencies and phases mean something only between the components of one partial; `rest` is the sum of squares
         of the sizes' errors.
     """
-    s, c = start.s.copy(), start.c + 1e-30
+    s, c = start.s.copy(), np.asarray(start.c + 1e-30)
     rest, slope, bend = _equations(time_s, size, noise, s, c)
     damping = np.full(len(s), 1e-2)
     active = np.arange(len(s))
@@ -57,7 +57,7 @@ def fit_fading(time_s: Real, size: Real, noise: Real, start: Decays, fastest_t60
         index = np.arange(system.shape[1])
         system[:, index, index] *= 1.0 + damping[active, None]
         system[:, index, index] += 1e-12 * np.einsum("pqq->p", system)[:, None] + 1e-300
-        move = np.linalg.solve(system, slope[active][..., None])[..., 0]
+        move = np.asarray(np.linalg.solve(system, slope[active][..., None])[..., 0], dtype=np.float64)
         new_s, new_c = _moved(s[active], c[active], move, T60_LOG / fastest_t60_s)
         new_rest, new_slope, new_bend = _equations(time_s, size[active], noise[active], new_s, new_c)
         better = new_rest <= rest[active]

@@ -28,10 +28,10 @@ _DECIDING = 32
 def measure_recipe(recording: Recording, note: HeldNote, *, a4_hz: float = units.STANDARD_A4_HZ) -> Recipe:
     """Measure the harmonics of a note; of a ringing one by :func:`timbre_match.measure.ringing.measure_ringing`.
 
-    A held harmonic's power is the mean over the blocks of |c_k|^2 less the floor's share. Its standard error is that of the
-    same estimate in white noise at the measured floor or, where the harmonic moves more than that within the note, that
-    of a mean of correlated blocks (Newey & West 1987, Econometrica 55:703). A harmonic is heard where its power beats
-    the floor at a false-alarm rate of 1e-4.
+    A held harmonic's power is the mean over the blocks of |c_k|^2 less the floor's share. Its standard error is that of
+    the same estimate in white noise at the measured floor or, where the harmonic moves more than that within the note,
+    that of a mean of correlated blocks (Newey & West 1987, Econometrica 55:703). A harmonic is heard where its power
+    beats the floor at a false-alarm rate of 1e-4.
 
     Parameters
     ----------

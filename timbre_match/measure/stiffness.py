@@ -132,7 +132,7 @@ def _on_peaks(peak_hz: Real, f0_hz: float, b: float, highest_hz: float) -> tuple
 
 def _stretch_step(count: int) -> float:
     """The step in B that moves the highest of `count` partials by as far as a partial may lie off."""
-    return _NEAR_CENTS / (600.0 / np.log(2.0) * count**2)
+    return float(_NEAR_CENTS / (600.0 / np.log(2.0) * count**2))
 
 
 def _peaks(samples: Real, rate: float, f0_hz: float, highest_hz: float) -> tuple[Real, Real]:
@@ -159,7 +159,7 @@ def _peaks(samples: Real, rate: float, f0_hz: float, highest_hz: float) -> tuple
 
 
 def _by_cents(peak_hz: Real, height_db: Real, f0_hz: float, highest_hz: float) -> Real:
-    """Heights of peaks cent by cent from 60 cents under `f0_hz` on; high ones count as sure, a few cents off as near."""
+    """Heights of peaks cent by cent from 60 cents under `f0_hz` on; a peak counts a few cents off too."""
     steps = round(cents_between(highest_hz, f0_hz)) + _OFF_CENTS
     cents = np.round(1200.0 * np.log2(np.maximum(peak_hz, 1.0) / f0_hz)).astype(np.int64) + _OFF_CENTS
     inside = (cents >= 0) & (cents < steps)

@@ -90,7 +90,7 @@ def cut_bands(
     origin = np.exp(2j * np.pi * middle * bin_hz * (onset_s - first / rate))
     turn = np.exp(2j * np.pi * off_hz[:, None] * (time_s - onset_s))
     return Bands(
-        time_s=time_s - onset_s,
+        time_s=np.asarray(time_s - onset_s, dtype=np.float64),
         y=envelope[:, wanted] * turn * origin[:, None],
         noise_factor=float(np.sum(gain**2)) / count,
     )
