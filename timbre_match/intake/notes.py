@@ -306,21 +306,24 @@ def _kind(signal: BandLimited, track: PitchTrack, envelope: Envelope, first: int
 def _without_rests(notes: list[HeldNote], envelope: Envelope) -> list[HeldNote]:
     """The notes less what is left of a ringing one after it has been lost for a moment, in a beat or near the floor."""
     kept: list[HeldNote] = []
-    lowest_db = np.inf
     for note in notes:
-        peak_db = float(envelope.level_db[_place(envelope, note.start_s) : _place(envelope, note.end_s) + 1].max())
         if kept and kept[-1].kind == "ringing":
-            since = envelope.level_db[_place(envelope, kept[-1].end_s - 0.1) : _place(envelope, note.start_s) + 1]
-            lowest_db = min(lowest_db, float(since.min())) if len(since) else lowest_db
-            if peak_db < max(lowest_db, envelope.floor_db) + _REST_RISES_DB:
+            rung = kept[-1]
+            between_db = _levels_between(envelope, rung.end_s - 0.1, note.start_s)
+            peak_db = float(_levels_between(envelope, note.start_s, note.end_s).max())
+            before_db = float(_levels_between(envelope, rung.start_s, rung.end_s).max())
+            anew = any(rung.end_s - 0.1 < instant_s < note.start_s + 0.1 for instant_s in envelope.renewals_s)
+            same = abs(units.cents_between(note.f0_hz, rung.f0_hz)) < _STEP_CENTS
+            faint = peak_db < max(float(between_db.min()), envelope.floor_db) + _REST_RISES_DB
+            if not anew and (faint or (same and peak_db < before_db - _TAIL_DB)):
                 continue
         kept.append(note)
-        lowest_db = np.inf
     return kept
 
 
-def _place(envelope: Envelope, instant_s: float) -> int:
-    return min(len(envelope.level_db) - 1, max(0, round(instant_s / envelope.step_s)))
+def _levels_between(envelope: Envelope, begin_s: float, end_s: float) -> NDArray[np.float64]:
+    first = min(len(envelope.level_db) - 1, max(0, round(begin_s / envelope.step_s)))
+    return envelope.level_db[first : max(first, round(end_s / envelope.step_s)) + 1]
 
 
 def _without_scraps(notes: list[HeldNote]) -> list[HeldNote]:
