@@ -17,6 +17,8 @@ _EDGE_S = 0.004
 _AROUND_S = 0.2
 _DIP_DB = 16.0
 _STRIKE_S = 0.03
+_FADES_DB = 10.0
+_LONGEST_FADE_S = 2.0
 _EARLY_S = 0.25
 _LONG_ENOUGH_S = 1.0
 _FALLS_DB_PER_S = 2.0
@@ -37,12 +39,15 @@ class Envelope:
         Level of the quietest twentieth of the recording.
     renewals_s : tuple of float
         Times in seconds at which a sounding note begins anew (bow change, second pluck).
+    fade_s : float
+        When someone has begun to fade the recording out, seconds; infinite where it is not faded out.
     """
 
     step_s: float
     level_db: NDArray[np.float64]
     floor_db: float
     renewals_s: tuple[float, ...]
+    fade_s: float
 
 
 def level_envelope(samples: NDArray[np.float64], sample_rate_hz: float) -> Envelope:
@@ -60,6 +65,7 @@ def level_envelope(samples: NDArray[np.float64], sample_rate_hz: float) -> Envel
         level_db=level_db,
         floor_db=float(np.percentile(level_db, 5)),
         renewals_s=_renewals(level_db, step_s),
+        fade_s=_fade_out(level_db, step_s),
     )
 
 
@@ -67,7 +73,7 @@ def steady_stretch(envelope: Envelope, begin_s: float, end_s: float, *, ringing:
     """Start and end in seconds of the steady part of a note that sounds from about `begin_s` to about `end_s`.
 
     A held note is steady where its level, smoothed over vibrato, stays within 9 dB of its usual level. A ringing note
-    counts from the end of its attack until it has fallen by 40 dB or reaches the floor. Attack and release are left
+    counts from the end of its attack until it has fallen by 40 dB, reaches the floor or is faded out. Attack and release are left
     out unless the recording itself begins or ends inside the steady part.
     """
     step = envelope.step_s
@@ -78,6 +84,7 @@ def steady_stretch(envelope: Envelope, begin_s: float, end_s: float, *, ringing:
         lowest = max(float(level[peak]) - _RINGS_DB, envelope.floor_db + 3.0)
         below = np.nonzero(level[peak:] < lowest)[0]
         last = peak + int(below[0]) if len(below) else len(level)
+        last = min(last, max(peak, int(envelope.fade_s / step) - a)) if np.isfinite(envelope.fade_s) else last
         return _within((a + peak) * step, (a + last) * step, _ATTACK_S, 0.0)
     smooth = scipy.ndimage.uniform_filter1d(level, min(len(level), round(0.15 / step)), mode="nearest")
     usual = float(np.percentile(smooth, 70))
@@ -153,6 +160,28 @@ def falls_from_the_start(envelope: Envelope, begin_s: float, end_s: float) -> bo
         return False
     slope = np.polynomial.Polynomial.fit(np.arange(len(rest)) * step, rest, 1).convert().coef[1]
     return bool(slope < -_FALLS_DB_PER_S)
+
+
+def _fade_out(level_db: NDArray[np.float64], step_s: float) -> float:
+    """When a fade-out at the end of a recording begins, seconds; infinity without one.
+
+    A recording that falls by 10 dB and more from the sixth to the second last 25 ms does so by hand: that is a ramp to
+    nothing. Where it begins is what best makes the level a straight line times a ramp.
+    """
+    last = len(level_db) - round(_SMOOTH_S / step_s)
+    at = [last - round(frames * _SMOOTH_S / step_s) for frames in (1, 5)]
+    if at[1] < 0 or level_db[at[1]] - level_db[at[0]] < _FADES_DB:
+        return np.inf
+    window = level_db[max(0, last - round(_LONGEST_FADE_S * 1.5 / step_s)) : last]
+    before_end = (np.arange(len(window), 0, -1) + 0.5 * _SMOOTH_S / step_s) * step_s
+    design = np.stack([np.ones(len(window)), before_end], axis=1)
+    best_s, least = np.inf, np.inf
+    for length_s in np.geomspace(0.03, _LONGEST_FADE_S, 40):
+        flat = window - 20.0 * np.log10(np.minimum(before_end / length_s, 1.0))
+        rest = flat - design @ np.linalg.lstsq(design, flat, rcond=None)[0]
+        if float(rest @ rest) < least:
+            least, best_s = float(rest @ rest), float(length_s)
+    return max(0.0, last * step_s - best_s)
 
 
 def _renewals(level_db: NDArray[np.float64], step_s: float) -> tuple[float, ...]:
