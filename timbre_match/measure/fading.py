@@ -19,8 +19,8 @@ from timbre_match.measure.decay import SLOWEST_T60_S, T60_LOG, Decays, exponenti
 Real = NDArray[np.float64]
 Complex = NDArray[np.complex128]
 
-_ROUNDS = 25
-_DONE = 1e-4
+_ROUNDS = 16
+_DONE = 1e-3
 _STEEPEST = 3.0
 """Nepers by which one step may change an amplitude."""
 

@@ -241,13 +241,9 @@ def _line(design: Real, y: Real, weight: Real) -> tuple[Real, Real]:
 
 def _scatter(rest: Real, own: Real, freedom: int) -> float:
     """The common scatter that makes the median of the residuals as large, relative to their errors, as it should be."""
-    # Of n residuals of a fit with p parameters, p may be zero whatever the scatter is.
-    share = 1.0 - 0.5 * freedom / len(rest)
-    if freedom < 1 or float(np.quantile(rest / own, share)) <= _NORMAL_MEDIAN:
+    if freedom < 1:
         return 0.0
-    low, high = 0.0, float(rest.max()) / _NORMAL_MEDIAN
-    for _ in range(24):
-        middle = 0.5 * (low + high)
-        above = float(np.quantile(rest / np.sqrt(own**2 + middle**2), share)) > _NORMAL_MEDIAN
-        low, high = (middle, high) if above else (low, middle)
-    return high
+    # For each residual the scatter (squared) at which it is as large as the median should be. Of n residuals of a fit
+    # with p parameters, p may be zero whatever the scatter is: hence not quite the median.
+    needed = np.sort((rest / _NORMAL_MEDIAN) ** 2 - own**2)
+    return float(np.sqrt(max(0.0, needed[len(rest) - 1 - (freedom - 1) // 2])))
