@@ -73,8 +73,8 @@ def steady_stretch(envelope: Envelope, begin_s: float, end_s: float, *, ringing:
     """Start and end in seconds of the steady part of a note that sounds from about `begin_s` to about `end_s`.
 
     A held note is steady where its level, smoothed over vibrato, stays within 9 dB of its usual level. A ringing note
-    counts from the end of its attack until it has fallen by 40 dB, reaches the floor or is faded out. Attack and release are left
-    out unless the recording itself begins or ends inside the steady part.
+    counts from the end of its attack until it has fallen by 40 dB, reaches the floor or is faded out. Attack and
+    release are left out unless the recording itself begins or ends inside the steady part.
     """
     step = envelope.step_s
     a, b = int(begin_s / step), min(len(envelope.level_db) - 1, int(np.ceil(end_s / step)))

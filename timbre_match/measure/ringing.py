@@ -7,6 +7,7 @@ strings: Karjalainen et al. 2002, J. Audio Eng. Soc. 50:867.)
 """
 
 import numpy as np
+from numpy.typing import NDArray
 
 from timbre_match import units
 from timbre_match.errors import NoHeldNoteError
@@ -79,7 +80,14 @@ def measure_ringing(recording: Recording, note: HeldNote, *, a4_hz: float = unit
     found = partials.found
     law = fit_law(k[found], own_hz[found], partials.freq_se_hz[found])
     return _recipe(
-        note, a4_hz, onset_s, partials, law, np.where(found, own_hz, stretched_hz(k, law.f0_hz, law.b)), edge_hz
+        note,
+        a4_hz,
+        onset_s,
+        begin_s,
+        partials,
+        law,
+        np.where(found, own_hz, stretched_hz(k, law.f0_hz, law.b)),
+        edge_hz,
     )
 
 
@@ -87,9 +95,10 @@ def _recipe(
     note: HeldNote,
     a4_hz: float,
     onset_s: float,
+    begin_s: float,
     partials: Partials,
     law: StiffString,
-    freq_hz: np.ndarray,
+    freq_hz: NDArray[np.float64],
     edge_hz: float,
 ) -> Recipe:
     heard = partials.heard
@@ -110,9 +119,9 @@ def _recipe(
         note=note.note,
         f0_hz=law.f0_hz,
         cents=units.cents_between(law.f0_hz, units.note_to_hz(note.note, a4_hz)),
-        start_s=note.start_s,
+        start_s=begin_s,
         end_s=note.end_s,
-        cycles=note.cycles,
+        cycles=max(1, int((note.end_s - begin_s) * law.f0_hz)),
         points_per_cycle=points_per_cycle(law.f0_hz, edge_hz),
         kind=note.kind,
         k=k,
