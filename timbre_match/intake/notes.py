@@ -315,7 +315,9 @@ def _without_rests(notes: list[HeldNote], envelope: Envelope) -> list[HeldNote]:
             anew = any(rung.end_s - 0.1 < instant_s < note.start_s + 0.1 for instant_s in envelope.renewals_s)
             same = abs(units.cents_between(note.f0_hz, rung.f0_hz)) < _STEP_CENTS
             faint = peak_db < max(float(between_db.min()), envelope.floor_db) + _REST_RISES_DB
-            if not anew and (faint or (same and peak_db < before_db - _TAIL_DB)):
+            # A beat may pass through nothing, which looks like a new beginning but for the attack.
+            quiet = faint or (same and peak_db < before_db - _TAIL_DB)
+            if quiet and (not anew or note.kind == "held"):
                 continue
         kept.append(note)
     return kept
