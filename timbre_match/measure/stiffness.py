@@ -105,8 +105,8 @@ def search_partials(samples: Real, sample_rate_hz: float, f0_hz: float, highest_
         if 2 * count > _MOST or found_hz * count * np.sqrt(1.0 + middle * count**2) > highest_hz:
             break
         count *= 2
-        off_cents = centre + np.arange(-4.0, 5.0)
-        reach, step = 2.0 * step, _stretch_step(count)
+        off_cents = centre + np.arange(-6.0, 7.0)
+        reach, step = 5.0 * step, _stretch_step(count)
         b = np.arange(max(0.0, middle - reach), middle + reach, step)
     return _on_peaks(peak_hz, found_hz, middle, highest_hz)
 
