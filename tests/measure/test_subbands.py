@@ -61,5 +61,8 @@ def test_a_common_glide_is_found_and_taken_out() -> None:
 def test_partials_that_do_nothing_together_have_no_glide() -> None:
     rng = np.random.default_rng(3)
     time_s = np.linspace(0.05, 2.45, 301)[:300]
-    y = np.exp(-2.0 * time_s) + 0.01 * (rng.standard_normal((10, 300)) + 1j * rng.standard_normal((10, 300)))
+    y = np.asarray(
+        np.exp(-2.0 * time_s) + 0.01 * (rng.standard_normal((10, 300)) + 1j * rng.standard_normal((10, 300))),
+        dtype=np.complex128,
+    )
     assert not np.any(common_glide(time_s, y, np.linspace(200.0, 2000.0, 10), np.full(10, 2e-4)))

@@ -20,6 +20,7 @@ _DB_PER_NEPER = 20.0 / np.log(10.0)
 _HEARD = 20.0
 """How many times the noise of one value the energy of a partial must be: noise alone, searched over all rates and
 frequencies of a band, reaches this in one of some 10,000 bands (exp(-20) times a few hundred places)."""
+_FEWEST_VALUES = 40
 _ACCURACY = 1e-9
 """Less than so much of the strongest partial's power is noise, were it only that of 16 bits or of a lossy codec."""
 _MISFIT = 0.1
@@ -77,8 +78,12 @@ def noise_of_bands(bands: Bands, half_hz: float) -> Real:
     power = np.abs(scipy.fft.fft(bands.y * window, axis=1)) ** 2 / float(window @ window)
     off_hz = np.abs(scipy.fft.fftfreq(count, float(bands.time_s[1] - bands.time_s[0])))
     outer = power[:, (off_hz > 0.5 * half_hz) & (off_hz < half_hz)]
+    # Few values tell little: the neighbouring bands' are taken in too.
+    beside = -(-_FEWEST_VALUES // (2 * max(1, outer.shape[1])))
+    padded = np.pad(outer, ((beside, beside), (0, 0)), mode="symmetric" if beside <= len(outer) else "edge")
+    around = np.lib.stride_tricks.sliding_window_view(padded, 2 * beside + 1, axis=0)
     # The median of an exponential variable is ln 2 of its mean.
-    noise = np.median(outer, axis=1) / np.log(2.0) * bands.noise_factor
+    noise = np.median(around, axis=(1, 2)) / np.log(2.0) * bands.noise_factor
     return np.asarray(np.maximum(noise, _ACCURACY * float(np.max(np.abs(bands.y)) ** 2) + 1e-30))
 
 
@@ -103,9 +108,13 @@ def measure_partials(bands: Bands, noise: Real, reach_hz: float, half_hz: float)
     start = search_one(time_s, y, reach_hz, fastest_t60_s)
     one = fit_decays(time_s, y, start[:, None], reach_hz, fastest_t60_s)
     size = np.abs(y)
-    found = (size**2).sum(axis=1) - one.rest > _HEARD * each
+    explained = size**2 - np.abs(y - one.at(time_s)) ** 2
+    found = explained.sum(axis=1) > _HEARD * each
     found &= np.abs(one.s[:, 0].imag) < 2.0 * np.pi * 0.999 * reach_hz
     heard = found & (-T60_LOG / one.s[:, 0].real > 1.001 * fastest_t60_s)
+    # Not by what the attack may have left in the first moments: a partial is still there afterwards.
+    later = np.searchsorted(time_s, time_s[0] + 1.0 / half_hz)
+    heard &= explained[:, later:].sum(axis=1) > _HEARD * each
     # Where something was there that is no partial, that is what a partial would have to stand out of.
     begins = (size[:, : max(1, len(time_s) // 20)] ** 2).max(axis=1) * 10.0 ** (_FARTHEST_DB / 10.0)
     rows = np.flatnonzero(heard)
