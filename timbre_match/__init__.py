@@ -31,7 +31,8 @@ if TYPE_CHECKING:
     )
     from timbre_match.measure import dtfs
     from timbre_match.measure.profile import Profile, Session, Take
-    from timbre_match.measure.recipe import Recipe, measure_recipe
+    from timbre_match.measure.recipe import measure_recipe
+    from timbre_match.measure.records import Recipe, Ringing
     from timbre_match.pipeline import compare_and_advise, measure_profile
 
 _HOME = {
@@ -39,8 +40,9 @@ _HOME = {
     "Cycles": "intake.cycles",
     "HeldNote": "intake.notes",
     "Profile": "measure.profile",
-    "Recipe": "measure.recipe",
+    "Recipe": "measure.records",
     "Recording": "intake.recording",
+    "Ringing": "measure.records",
     "Session": "measure.profile",
     "Take": "measure.profile",
     "Target": "compare.target",
@@ -68,6 +70,7 @@ __all__ = [
     "Profile",
     "Recipe",
     "Recording",
+    "Ringing",
     "Session",
     "Take",
     "Target",

@@ -4,7 +4,13 @@ import numpy as np
 import pytest
 from numpy.typing import NDArray
 
-from timbre_match.intake.envelope import is_ringing, level_envelope, steady_stretch
+from timbre_match.intake.envelope import (
+    falls_from_the_start,
+    is_ringing,
+    level_envelope,
+    rises_again_db,
+    steady_stretch,
+)
 
 RATE = 22_050
 Array = NDArray[np.float64]
@@ -88,3 +94,38 @@ def test_vibrato_of_the_level_renews_nothing() -> None:
     moving = held()
     moving += 5.0 * np.sin(2.0 * np.pi * 6.0 * np.arange(len(moving)) / RATE)
     assert level_envelope(sounding(moving), RATE).renewals_s == ()
+
+
+def fading(t60_s: float, length_s: float, fade_s: float) -> Array:
+    """A free decay whose recording someone has faded out, in a straight line to nothing."""
+    time_s = np.arange(round(length_s * RATE)) / RATE
+    ramp = np.minimum(1.0, (length_s - time_s) / fade_s) if fade_s else np.ones(len(time_s))
+    return np.concatenate([sounding(np.full(RATE // 2, -120.0)), sounding(-10.0 - 60.0 * time_s / t60_s) * ramp])
+
+
+@pytest.mark.parametrize("fade_s", [0.15, 0.5, 1.0])
+def test_a_fade_out_is_seen_and_ends_the_stretch(fade_s: float) -> None:
+    envelope = level_envelope(fading(12.0, 4.0, fade_s), RATE)
+    assert 4.5 - envelope.fade_s == pytest.approx(fade_s, rel=0.3)
+    _, stop_s = steady_stretch(envelope, 0.45, 4.5, ringing=True)
+    assert stop_s == pytest.approx(envelope.fade_s, abs=0.02)
+
+
+def test_a_decay_that_is_cut_or_reaches_the_floor_is_no_fade_out() -> None:
+    assert level_envelope(fading(12.0, 4.0, 0.0), RATE).fade_s == np.inf
+    assert level_envelope(fading(1.0, 4.0, 0.0), RATE).fade_s == np.inf
+
+
+def test_a_note_that_beats_falls_from_the_start_and_grows_again() -> None:
+    time_s = np.arange(4 * RATE) / RATE
+    beats_db = 6.0 * np.cos(2.0 * np.pi * 0.8 * time_s)
+    envelope = level_envelope(sounding(-20.0 - 60.0 * time_s / 10.0 + beats_db), RATE)
+    assert falls_from_the_start(envelope, 0.0, 4.0)
+    # Between two extremes 0.625 s apart the decay takes 3.75 of the 12 dB; smoothing takes little.
+    assert rises_again_db(envelope, 0.0, 4.0) == pytest.approx(12.0 - 3.75, abs=1.0)
+    steady = level_envelope(sounding(-20.0 - 60.0 * time_s / 10.0), RATE)
+    assert rises_again_db(steady, 0.0, 4.0) < 0.5
+
+
+def test_a_held_note_does_not_fall_from_the_start() -> None:
+    assert not falls_from_the_start(level_envelope(sounding(held()), RATE), 0.45, 2.4)

@@ -7,7 +7,7 @@ import scipy.signal
 
 from tests.intake.sounds import RATE, Array, hum, recording_of
 from timbre_match.errors import NoHeldNoteError
-from timbre_match.intake.notes import HeldNote, held_notes
+from timbre_match.intake.notes import HeldNote, NoteKind, held_notes
 from timbre_match.units import cents_between, note_to_hz
 
 NATURAL = tuple(1.0 / k for k in range(1, 13))
@@ -44,8 +44,10 @@ def with_noise(sound: Array, snr_db: float = 60.0, seed: int = 2) -> Array:
     return np.asarray(sound + 0.2 * 10.0 ** (-snr_db / 20.0) * noise)
 
 
-def found(*parts: Array, snr_db: float = 60.0, notes: list[str] | None = None) -> tuple[HeldNote, ...]:
-    return held_notes(recording_of(with_noise(np.concatenate(parts), snr_db), RATE), notes=notes)
+def found(
+    *parts: Array, snr_db: float = 60.0, notes: list[str] | None = None, kind: NoteKind | None = None
+) -> tuple[HeldNote, ...]:
+    return held_notes(recording_of(with_noise(np.concatenate(parts), snr_db), RATE), notes=notes, kind=kind)
 
 
 def the_one(*parts: Array, snr_db: float = 60.0) -> HeldNote:
@@ -209,6 +211,42 @@ def test_plucked_note_rings_and_held_note_does_not() -> None:
     # A long diminuendo under the bow begins with a slow attack.
     fading = tone(196.0, 3.0, fade_s=0.4) * 10.0 ** (-0.5 * time_s / 3.0)
     assert the_one(silence(0.3), fading, silence(0.3)).kind == "held"
+
+
+def test_a_blown_note_that_falls_and_grows_again_is_held() -> None:
+    # As it dies and swells its harmonics keep step, which no beating string does.
+    time_s = np.arange(4 * RATE) / RATE
+    level_db = np.interp(time_s, [0.0, 0.1, 2.5, 3.0, 4.0], [0.0, 0.0, -24.0, -14.0, -40.0])
+    blown = tone(196.0, 4.0, fade_s=0.004) * 10.0 ** (level_db / 20.0)
+    assert the_one(silence(0.3), blown, silence(0.3)).kind == "held"
+
+
+def test_a_string_that_beats_deeply_rings_all_the_same() -> None:
+    time_s = np.arange(5 * RATE) / RATE
+    k = np.arange(1, 9)[:, None]
+    # Each partial a little off the multiples, and all of them beating together.
+    partials = np.cos(2.0 * np.pi * k * 196.0 * np.sqrt(1.0 + 2e-4 * k**2) * time_s + k) / k
+    beats = 1.0 + 0.85 * np.cos(2.0 * np.pi * 0.7 * time_s)
+    sound = 0.1 * partials.sum(axis=0) * beats * 10.0 ** (-3.0 * time_s / 6.0)
+    assert the_one(silence(0.3), sound, silence(0.3)).kind == "ringing"
+
+
+def test_the_family_may_say_what_all_notes_are() -> None:
+    time_s = np.arange(3 * RATE) / RATE
+    plucked = tone(196.0, 3.0, fade_s=0.004) * 10.0 ** (-3.0 * time_s / 2.5)
+    assert [note.kind for note in found(silence(0.3), plucked, silence(0.3), kind="held")] == ["held"]
+    # Damped before it has died by enough to tell.
+    short = tone(196.0, 0.6, fade_s=0.004) * 10.0 ** (-3.0 * time_s[: round(0.6 * RATE)] / 12.0)
+    assert [note.kind for note in found(silence(0.3), short, silence(0.3))] == ["held"]
+    assert [note.kind for note in found(silence(0.3), short, silence(0.3), kind="ringing")] == ["ringing"]
+
+
+def test_what_is_left_of_a_ringing_note_is_no_note() -> None:
+    # One that beats down into the noise two seconds after the pluck and comes back, far softer than it began.
+    time_s = np.arange(5 * RATE) / RATE
+    beats = np.abs(1.0 + 0.99 * np.exp(2j * np.pi * 0.25 * time_s)) / 2.0
+    sound = tone(196.0, 5.0, fade_s=0.004) * 10.0 ** (-3.0 * time_s / 6.0) * beats
+    assert [note.kind for note in found(silence(0.3), sound, silence(0.3))] == ["ringing"]
 
 
 def test_second_pluck_while_the_first_rings() -> None:

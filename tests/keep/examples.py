@@ -1,10 +1,12 @@
 """Profiles, targets and comparisons to write and read, by hand and by Hypothesis."""
 
+import dataclasses
 import datetime
 import math
 
 import numpy as np
 from hypothesis import strategies as st
+from numpy.typing import NDArray
 
 from timbre_match.advise.suggestions import Move, Suggestion
 from timbre_match.compare.records import (
@@ -16,8 +18,9 @@ from timbre_match.compare.records import (
     Region,
     Repeatability,
 )
+from timbre_match.intake.notes import NoteKind
 from timbre_match.measure.profile import Profile, Session, Source, Take
-from timbre_match.measure.recipe import Recipe
+from timbre_match.measure.records import DecayShape, Recipe, Ringing
 
 SHA = "0123456789abcdef" * 4
 
@@ -43,6 +46,29 @@ def recipe(note: str = "A4", f0_hz: float = 440.25, levels_db: tuple[float, ...]
         floor_db=-70.0 - k_real,
         heard=heard,
         phase_rad=np.where(heard, 0.5 * (k - 1), np.nan),
+    )
+
+
+def ringing_recipe() -> Recipe:
+    """A plucked note: a plain decay, a beating one, a partial that is not heard, one of two stages, one unclear."""
+    nan = math.nan
+    return dataclasses.replace(
+        recipe("E4", 329.6, (-3.0, -4.5, nan, -12.0, -20.0)),
+        kind="ringing",
+        ringing=Ringing(
+            onset_s=0.2,
+            f0_se_hz=0.0125,
+            inharmonicity_b=3.7e-5,
+            inharmonicity_se=1.5e-7,
+            decay=("plain", "beating", None, "two-stage", "unclear"),
+            t60_s=np.array([4.25, 3.5, nan, 2.0, 1.0]),
+            t60_se_s=np.array([0.05, 0.25, nan, 0.1, 0.5]),
+            early_t60_s=np.array([nan, nan, nan, 1.5, nan]),
+            late_t60_s=np.array([nan, nan, nan, 4.5, nan]),
+            late_db=np.array([nan, nan, nan, -14.5, nan]),
+            beat_hz=np.array([nan, 1.25, nan, nan, nan]),
+            beat_depth_db=np.array([nan, 9.5, nan, nan, nan]),
+        ),
     )
 
 
@@ -137,6 +163,7 @@ def recipes(draw: st.DrawFn) -> Recipe:
     def numbers(strategy: st.SearchStrategy[float]) -> np.ndarray[tuple[int], np.dtype[np.float64]]:
         return np.array(draw(st.lists(strategy, min_size=count, max_size=count)))
 
+    kind: NoteKind = draw(st.sampled_from(["held", "ringing"]))
     return Recipe(
         note=draw(st.sampled_from(["A4", "F#2", "Bb7", "C-1"])),
         f0_hz=draw(_frequency),
@@ -145,7 +172,7 @@ def recipes(draw: st.DrawFn) -> Recipe:
         end_s=start_s + draw(st.floats(0.01, 100.0)),
         cycles=draw(st.integers(1, 10**6)),
         points_per_cycle=draw(st.integers(1, 10**5)),
-        kind=draw(st.sampled_from(["held", "ringing"])),
+        kind=kind,
         k=np.arange(1, count + 1),
         freq_hz=numbers(_frequency),
         level_db=np.where(heard, numbers(_level), np.nan),
@@ -153,6 +180,32 @@ def recipes(draw: st.DrawFn) -> Recipe:
         floor_db=numbers(st.one_of(_level, st.just(-math.inf))),
         heard=heard,
         phase_rad=np.where(heard, numbers(st.floats(-math.pi, math.pi)), np.nan),
+        ringing=draw(_ringing(heard)) if kind == "ringing" and draw(st.booleans()) else None,
+    )
+
+
+@st.composite
+def _ringing(draw: st.DrawFn, heard: NDArray[np.bool_]) -> Ringing:
+    shapes: list[DecayShape] = ["plain", "two-stage", "beating", "unclear"]
+    decay = tuple(draw(st.sampled_from(shapes)) if each else None for each in heard)
+
+    def numbers(low: float, high: float, where: list[bool]) -> NDArray[np.float64]:
+        return np.array([draw(st.floats(low, high)) if each else math.nan for each in where])
+
+    staged, beating = [shape == "two-stage" for shape in decay], [shape == "beating" for shape in decay]
+    return Ringing(
+        onset_s=draw(st.floats(0.0, 100.0)),
+        f0_se_hz=draw(st.floats(0.0, 1.0)),
+        inharmonicity_b=draw(st.floats(0.0, 1e-2)),
+        inharmonicity_se=draw(st.one_of(st.floats(0.0, 1e-3), st.just(math.nan))),
+        decay=decay,
+        t60_s=numbers(0.05, 60.0, list(heard)),
+        t60_se_s=numbers(0.0, 10.0, list(heard)),
+        early_t60_s=numbers(0.05, 60.0, staged),
+        late_t60_s=numbers(0.05, 60.0, staged),
+        late_db=numbers(-60.0, 6.0, staged),
+        beat_hz=numbers(0.01, 50.0, beating),
+        beat_depth_db=numbers(0.1, 40.0, beating),
     )
 
 

@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 import soundfile
 
-from tests.keep.examples import SHA, profile, recipe
+from tests.keep.examples import SHA, profile, recipe, ringing_recipe
 from timbre_match.errors import OutputError
 from timbre_match.keep.export import COLUMNS, averaged_cycle, export_csv, export_cycles, export_json
 from timbre_match.keep.files import profile_to_json
@@ -46,9 +46,21 @@ def test_one_row_per_take_note_and_harmonic(tmp_path: Path) -> None:
         "floor_db": "-72.0",
         "heard": "true",
         "phase_rad": "0.5",
+        **dict.fromkeys(COLUMNS[18:], ""),
     }
     not_heard = table[2]
     assert [not_heard[name] for name in ("level_db", "se_db", "heard", "phase_rad")] == ["", "", "false", ""]
+
+
+def test_ringing_notes_fill_the_columns_of_their_decays(tmp_path: Path) -> None:
+    one = profile(takes=1)
+    export_csv(replace(one, takes=(replace(one.takes[0], notes=(ringing_recipe(),)),)), tmp_path / "table.csv")
+    table = rows(tmp_path / "table.csv")
+    assert [row["decay"] for row in table] == ["plain", "beating", "", "two-stage", "unclear"]
+    assert {row["inharmonicity_b"] for row in table} == {"3.7e-05"}
+    assert [row["t60_s"] for row in table] == ["4.25", "3.5", "", "2.0", "1.0"]
+    assert [table[3][name] for name in ("early_t60_s", "late_t60_s", "late_db")] == ["1.5", "4.5", "-14.5"]
+    assert [table[1][name] for name in ("beat_hz", "beat_depth_db", "late_db")] == ["1.25", "9.5", ""]
 
 
 def test_lines_end_as_rfc_4180_says(tmp_path: Path) -> None:

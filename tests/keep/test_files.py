@@ -14,7 +14,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from tests.keep.examples import COMPARISON, SHA, SUGGESTIONS, profile, profiles, recipe
+from tests.keep.examples import COMPARISON, SHA, SUGGESTIONS, profile, profiles, recipe, ringing_recipe
 from timbre_match.compare.records import Interval
 from timbre_match.compare.target import Target
 from timbre_match.errors import FileVersionError, OutputError, SavedFileError
@@ -29,6 +29,7 @@ from timbre_match.keep.files import (
     save_target,
 )
 from timbre_match.measure.profile import Profile, Session
+from timbre_match.measure.records import Recipe, Ringing
 
 Content = dict[str, Any]
 
@@ -52,13 +53,64 @@ def assert_same(one: Profile, other: Profile) -> None:
     assert [take.recordings for take in one.takes] == [take.recordings for take in other.takes]
     for take, other_take in zip(one.takes, other.takes, strict=True):
         for note, other_note in zip(take.notes, other_take.notes, strict=True):
-            for field in fields(note):
-                value, other_value = getattr(note, field.name), getattr(other_note, field.name)
-                if isinstance(value, str | int):
-                    assert value == other_value
-                else:
-                    close = np.isclose(value, other_value, rtol=0, atol=6e-5, equal_nan=True)
-                    assert np.all(close | ~np.isfinite(value)), field.name
+            assert_same_values(note, other_note)
+
+
+def assert_same_values(one: Recipe | Ringing, other: Recipe | Ringing) -> None:
+    for field in fields(one):
+        value, other_value = getattr(one, field.name), getattr(other, field.name)
+        if isinstance(value, Ringing):
+            assert isinstance(other_value, Ringing)
+            assert_same_values(value, other_value)
+        elif value is None or isinstance(value, str | int | tuple):
+            assert value == other_value
+        else:
+            close = np.isclose(value, other_value, rtol=0, atol=6e-5, equal_nan=True)
+            assert np.all(close | ~np.isfinite(value)), field.name
+
+
+def test_a_ringing_note_comes_back_with_its_decays(tmp_path: Path) -> None:
+    one = profile(takes=1)
+    one = replace(one, takes=(replace(one.takes[0], notes=(ringing_recipe(),)),))
+    save_profile(one, tmp_path / "profile.json")
+    assert_same(one, load_profile(tmp_path / "profile.json"))
+    (note,) = as_content(one)["takes"][0]["notes"]
+    assert note["inharmonicity_b"] == 3.7e-5
+    assert [harmonic["t60_s"] for harmonic in note["harmonics"]] == [4.25, 3.5, None, 2.0, 1.0]
+    assert note["harmonics"][1]["beat_hz"] == 1.25
+    assert "beat_hz" not in note["harmonics"][0]
+
+
+def test_ringing_notes_of_older_files_have_no_decays(tmp_path: Path) -> None:
+    content = as_content(profile())
+    content["takes"][0]["notes"][0]["kind"] = "ringing"
+    note = load_profile(saved(tmp_path, content)).takes[0].notes[0]
+    assert (note.kind, note.ringing) == ("ringing", None)
+
+
+@pytest.mark.parametrize(
+    ("key", "value", "where"),
+    [
+        ("decay", "slow", r"takes\[0\].notes\[0\].harmonics\[1\].decay"),
+        ("decay", None, r"harmonics\[1\].decay"),
+        ("t60_s", -1.0, r"takes\[0\].notes\[0\].harmonics\[1\].t60_s"),
+        ("t60_s", None, r"harmonics\[1\].t60_s"),
+        ("late_db", "loud", r"harmonics\[1\].late_db"),
+    ],
+)
+def test_wrong_decays_are_named_with_their_path(tmp_path: Path, key: str, value: object, where: str) -> None:
+    one = profile(takes=1)
+    content = as_content(replace(one, takes=(replace(one.takes[0], notes=(ringing_recipe(),)),)))
+    content["takes"][0]["notes"][0]["harmonics"][1][key] = value
+    with pytest.raises(SavedFileError, match=where):
+        load_profile(saved(tmp_path, content))
+
+
+def test_only_ringing_notes_have_an_inharmonicity(tmp_path: Path) -> None:
+    content = as_content(profile())
+    content["takes"][0]["notes"][0]["inharmonicity_b"] = 1e-4
+    with pytest.raises(SavedFileError, match="inharmonicity_b is given of ringing notes alone"):
+        load_profile(saved(tmp_path, content))
 
 
 @settings(deadline=None, max_examples=50)

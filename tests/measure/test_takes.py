@@ -49,6 +49,19 @@ def test_channels_that_differ_are_pointed_out(tmp_path: Path) -> None:
     assert not measure_takes([left, right], Listening(channel=1)).warnings
 
 
+def test_the_family_decides_whether_notes_ring(tmp_path: Path) -> None:
+    time_s = np.arange(RATE) / RATE
+    plucked = written(tmp_path / "p.wav", np.concatenate([np.zeros(RATE // 4), tone(220.0) * 10.0 ** (-2.0 * time_s)]))
+    for family, kind in (
+        ("", "ringing"),
+        ("hurdy-gurdy", "ringing"),
+        ("classical guitar", "ringing"),
+        ("viola", "held"),
+    ):
+        (take,) = measure_takes([plucked], Listening(), family=family).profile.takes
+        assert [(note.kind, note.ringing is not None) for note in take.notes] == [(kind, kind == "ringing")]
+
+
 def test_a_note_that_was_played_but_not_found_is_named(tmp_path: Path) -> None:
     measured = measure_takes([written(tmp_path / "a.wav", tone(440.0))], Listening(notes=("A4", "D4")))
     assert "Not found: D4." in measured.warnings

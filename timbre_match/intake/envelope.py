@@ -17,6 +17,11 @@ _EDGE_S = 0.004
 _AROUND_S = 0.2
 _DIP_DB = 16.0
 _STRIKE_S = 0.03
+_FADES_DB = 8.0
+_LONGEST_FADE_S = 2.0
+_EARLY_S = 0.25
+_LONG_ENOUGH_S = 1.0
+_FALLS_DB_PER_S = 2.0
 _RISE_DB = 10.0
 
 
@@ -34,12 +39,15 @@ class Envelope:
         Level of the quietest twentieth of the recording.
     renewals_s : tuple of float
         Times in seconds at which a sounding note begins anew (bow change, second pluck).
+    fade_s : float
+        When someone has begun to fade the recording out, seconds; infinite where it is not faded out.
     """
 
     step_s: float
     level_db: NDArray[np.float64]
     floor_db: float
     renewals_s: tuple[float, ...]
+    fade_s: float
 
 
 def level_envelope(samples: NDArray[np.float64], sample_rate_hz: float) -> Envelope:
@@ -57,6 +65,7 @@ def level_envelope(samples: NDArray[np.float64], sample_rate_hz: float) -> Envel
         level_db=level_db,
         floor_db=float(np.percentile(level_db, 5)),
         renewals_s=_renewals(level_db, step_s),
+        fade_s=_fade_out(level_db, step_s),
     )
 
 
@@ -64,8 +73,8 @@ def steady_stretch(envelope: Envelope, begin_s: float, end_s: float, *, ringing:
     """Start and end in seconds of the steady part of a note that sounds from about `begin_s` to about `end_s`.
 
     A held note is steady where its level, smoothed over vibrato, stays within 9 dB of its usual level. A ringing note
-    counts from the end of its attack until it has fallen by 40 dB or reaches the floor. Attack and release are left
-    out unless the recording itself begins or ends inside the steady part.
+    counts from the end of its attack until it has fallen by 40 dB, reaches the floor or is faded out. Attack and
+    release are left out unless the recording itself begins or ends inside the steady part.
     """
     step = envelope.step_s
     a, b = int(begin_s / step), min(len(envelope.level_db) - 1, int(np.ceil(end_s / step)))
@@ -75,6 +84,7 @@ def steady_stretch(envelope: Envelope, begin_s: float, end_s: float, *, ringing:
         lowest = max(float(level[peak]) - _RINGS_DB, envelope.floor_db + 3.0)
         below = np.nonzero(level[peak:] < lowest)[0]
         last = peak + int(below[0]) if len(below) else len(level)
+        last = min(last, max(peak, int(envelope.fade_s / step) - a)) if np.isfinite(envelope.fade_s) else last
         return _within((a + peak) * step, (a + last) * step, _ATTACK_S, 0.0)
     smooth = scipy.ndimage.uniform_filter1d(level, min(len(level), round(0.15 / step)), mode="nearest")
     usual = float(np.percentile(smooth, 70))
@@ -123,6 +133,59 @@ def is_ringing(envelope: Envelope, begin_s: float, end_s: float) -> bool:
         return False
     half, most = fall[len(fall) // 2], fall[3 * len(fall) // 4]
     return bool(half > 0.35 * fall[-1] and most > 0.5 * fall[-1])
+
+
+def rises_again_db(envelope: Envelope, begin_s: float, end_s: float) -> float:
+    """By how many decibels a note grows again on its way down from its loudest moment to 30 dB below it."""
+    step = envelope.step_s
+    a, b = int(begin_s / step), min(len(envelope.level_db), int(np.ceil(end_s / step)) + 1)
+    level = scipy.ndimage.uniform_filter1d(envelope.level_db[a:b], max(1, round(0.05 / step)), mode="nearest")
+    rest = level[int(np.argmax(level)) :]
+    below = np.flatnonzero(rest < rest[0] - 30.0)
+    rest = rest[: int(below[0])] if len(below) else rest
+    return float((rest - np.minimum.accumulate(rest)).max())
+
+
+def falls_from_the_start(envelope: Envelope, begin_s: float, end_s: float) -> bool:
+    """Whether a note is loudest near its beginning and falls on the whole, beats or not.
+
+    Plucked strings do, but so does many a blown note; the harmonics must tell these apart.
+    """
+    step = envelope.step_s
+    a, b = int(begin_s / step), min(len(envelope.level_db), int(np.ceil(end_s / step)) + 1)
+    level = scipy.ndimage.uniform_filter1d(envelope.level_db[a:b], max(1, round(0.05 / step)), mode="nearest")
+    peak = int(np.argmax(level))
+    rest = level[peak:]
+    if peak * step > _EARLY_S or len(rest) * step < _LONG_ENOUGH_S:
+        return False
+    slope = np.polynomial.Polynomial.fit(np.arange(len(rest)) * step, rest, 1).convert().coef[1]
+    return bool(slope < -_FALLS_DB_PER_S)
+
+
+def _fade_out(level_db: NDArray[np.float64], step_s: float) -> float:
+    """When a fade-out at the end of a recording begins, seconds; infinity without one.
+
+    A straight ramp to nothing falls by 9.5 dB from 150 to 50 ms before its end. Where it begins is what best makes the
+    level a straight line times a ramp; a decay that needs no ramp to be straight is none.
+    """
+    last = len(level_db) - round(_SMOOTH_S / step_s)
+    at = [last - round(frames * _SMOOTH_S / step_s) for frames in (1, 5)]
+    if at[1] < 0 or level_db[at[1]] - level_db[at[0]] < _FADES_DB:
+        return np.inf
+    window = level_db[max(0, last - round(_LONGEST_FADE_S * 1.5 / step_s)) : last]
+    before_end = (np.arange(len(window), 0, -1) + 0.5 * _SMOOTH_S / step_s) * step_s
+    design = np.stack([np.ones(len(window)), before_end], axis=1)
+
+    def left_by(length_s: float) -> float:
+        flat = window - 20.0 * np.log10(np.minimum(before_end / length_s, 1.0)) if length_s else window
+        rest = flat - design @ np.linalg.lstsq(design, flat, rcond=None)[0]
+        return float(rest @ rest)
+
+    lengths_s = np.geomspace(0.03, _LONGEST_FADE_S, 40)
+    left = [left_by(length_s) for length_s in lengths_s.tolist()]
+    if min(left) > 0.5 * left_by(0.0):
+        return np.inf
+    return max(0.0, last * step_s - float(lengths_s[int(np.argmin(left))]))
 
 
 def _renewals(level_db: NDArray[np.float64], step_s: float) -> tuple[float, ...]:

@@ -10,7 +10,15 @@ from numpy.typing import NDArray
 
 from timbre_match import units
 from timbre_match.errors import NoHeldNoteError
-from timbre_match.intake.envelope import Envelope, is_ringing, level_envelope, steady_stretch
+from timbre_match.intake.envelope import (
+    Envelope,
+    falls_from_the_start,
+    is_ringing,
+    level_envelope,
+    rises_again_db,
+    steady_stretch,
+)
+from timbre_match.intake.locking import spread_of_harmonics
 from timbre_match.intake.octave import settle_octave
 from timbre_match.intake.pitch import HOP_S, PitchTrack, track_pitch, without_rumble
 from timbre_match.intake.recording import Recording
@@ -33,6 +41,12 @@ _STEP_FRAMES = 8
 _SETTLE_S = 1.0
 _BLUR_FRAMES = 3
 _NAMED_WITHIN_CENTS = 70.0
+_LOCKED_CENTS, _LOCKED_HARMONICS = 0.4, 6
+"""On 200 real notes of plucked and struck strings six or more strong harmonics spread by 0.6 cents or more; those of a
+diminuendo on a trumpet by 0.2."""
+_GROWS_DB = 3.0
+_FREE_CENTS, _FREE_HARMONICS = 1.2, 5
+_REST_RISES_DB = 10.0
 _CLOCK_BAND_HZ = 5600.0
 """Up to where harmonics tell the clock."""
 _CLOCK_DENSITY = 3.0
@@ -77,7 +91,11 @@ class HeldNote:
 
 @single_threaded
 def held_notes(
-    recording: Recording, *, notes: Sequence[str] | None = None, a4_hz: float = units.STANDARD_A4_HZ
+    recording: Recording,
+    *,
+    notes: Sequence[str] | None = None,
+    a4_hz: float = units.STANDARD_A4_HZ,
+    kind: NoteKind | None = None,
 ) -> tuple[HeldNote, ...]:
     """Find the held and ringing notes of a recording, in order of time.
 
@@ -89,6 +107,8 @@ def held_notes(
         are left out.
     a4_hz : float
         Tuning reference for the note names, Hz.
+    kind : {"held", "ringing"}, optional
+        What all notes are, where the instrument tells; otherwise each note's level and harmonics do.
 
     Returns
     -------
@@ -120,10 +140,10 @@ def held_notes(
         # The window blurs periodicity at both ends of a note; the level tells better where it begins and ends.
         first = max(first - _BLUR_FRAMES, edges[index])
         last = min(last + _BLUR_FRAMES, starts[index + 1])
-        note = _measured(signal, track, envelope, first, last, f0_hz, a4_hz, wanted_hz)
+        note = _measured(signal, track, envelope, first, last, f0_hz, a4_hz, wanted_hz, kind)
         if note is not None and (wanted_hz is None or _is_one_of(note.f0_hz, wanted_hz)):
             found.append(note)
-    found = _without_scraps(found)
+    found = _without_rests(_without_scraps(found), envelope)
     if not found:
         raise NoHeldNoteError(
             "no held note found" if notes is None else f"none of the notes {' '.join(notes)} found",
@@ -226,10 +246,13 @@ def _measured(
     f0_hz: float,
     a4_hz: float,
     wanted_hz: list[float] | None,
+    kind: NoteKind | None,
 ) -> HeldNote | None:
     """The held note between two frames, or None where too little of it is steady."""
     begin_s, end_s = float(track.time_s[first]), float(track.time_s[last])
-    ringing = is_ringing(envelope, begin_s, end_s)
+    if kind is None:
+        kind = _kind(signal, track, envelope, first, last, f0_hz)
+    ringing = kind == "ringing"
     start_s, stop_s = steady_stretch(envelope, begin_s, end_s, ringing=ringing)
     frames = np.flatnonzero((track.time_s >= start_s) & (track.time_s <= stop_s))
     if stop_s - start_s < _SHORTEST_S or len(frames) < 3:
@@ -254,10 +277,56 @@ def _measured(
         start_s=start_s,
         end_s=stop_s,
         cycles=clock.cycles,
-        kind="ringing" if ringing else "held",
+        kind=kind,
         track_s=clock.time_s,
         track_hz=clock.f0_hz,
     )
+
+
+def _kind(signal: BandLimited, track: PitchTrack, envelope: Envelope, first: int, last: int, f0_hz: float) -> NoteKind:
+    """Whether a note is held or rings: by its level over time, and in doubt by whether its harmonics are locked."""
+    begin_s, end_s = float(track.time_s[first]), float(track.time_s[last])
+    ringing = is_ringing(envelope, begin_s, end_s)
+    if not ringing and not falls_from_the_start(envelope, begin_s, end_s):
+        return "held"
+    start_s, stop_s = steady_stretch(envelope, begin_s, end_s, ringing=True)
+    frames = np.flatnonzero((track.time_s >= start_s) & (track.time_s <= stop_s))
+    if len(frames) < 3:
+        return "ringing" if ringing else "held"
+    clock = refine_clock(signal, Clock(track.time_s[frames], _folded(track.f0_hz[frames], f0_hz)))
+    spread = spread_of_harmonics(signal, clock)
+    if ringing:
+        # Harmonics that keep step cannot beat: if such a note grows again, someone blows or bows it.
+        locked = spread.harmonics >= _LOCKED_HARMONICS and spread.cents < _LOCKED_CENTS
+        driven = locked and rises_again_db(envelope, begin_s, end_s) > _GROWS_DB
+        return "held" if driven else "ringing"
+    free = spread.harmonics >= _FREE_HARMONICS and spread.cents > _FREE_CENTS
+    return "ringing" if free else "held"
+
+
+def _without_rests(notes: list[HeldNote], envelope: Envelope) -> list[HeldNote]:
+    """The notes less what is left of a ringing one after it has been lost for a moment, in a beat or near the floor."""
+    kept: list[HeldNote] = []
+    for note in notes:
+        if kept and kept[-1].kind == "ringing":
+            rung = kept[-1]
+            between_db = _levels_between(envelope, rung.end_s - 0.1, note.start_s)
+            peak_db = float(_levels_between(envelope, note.start_s, note.end_s).max())
+            before_db = float(_levels_between(envelope, rung.start_s, rung.end_s).max())
+            anew = any(rung.end_s - 0.1 < instant_s < note.start_s + 0.1 for instant_s in envelope.renewals_s)
+            same = abs(units.cents_between(note.f0_hz, rung.f0_hz)) < _STEP_CENTS
+            faint = peak_db < max(float(between_db.min()), envelope.floor_db) + _REST_RISES_DB
+            # A beat may pass through nothing, which looks like a new beginning but for the attack.
+            quiet = faint or (same and peak_db < before_db - _TAIL_DB)
+            if quiet and (not anew or note.kind == "held"):
+                continue
+        kept.append(note)
+    return kept
+
+
+def _levels_between(envelope: Envelope, begin_s: float, end_s: float) -> NDArray[np.float64]:
+    first = min(len(envelope.level_db) - 1, max(0, round(begin_s / envelope.step_s)))
+    return envelope.level_db[first : max(first, round(end_s / envelope.step_s)) + 1]
 
 
 def _without_scraps(notes: list[HeldNote]) -> list[HeldNote]:

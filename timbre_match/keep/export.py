@@ -15,7 +15,7 @@ from timbre_match.keep.files import save_profile
 from timbre_match.keep.writing import write_folder_whole, write_whole
 from timbre_match.measure.dtfs import synthesise
 from timbre_match.measure.profile import Profile
-from timbre_match.measure.recipe import Recipe
+from timbre_match.measure.records import RINGING_ARRAYS, Recipe
 
 CYCLE_POINTS = 2048
 CYCLE_RATE_HZ = 48_000
@@ -40,6 +40,11 @@ COLUMNS = (
     "floor_db",
     "heard",
     "phase_rad",
+    "inharmonicity_b",
+    "inharmonicity_se",
+    "onset_s",
+    "decay",
+    *RINGING_ARRAYS,
 )
 
 _FORMULA_STARTS = ("=", "+", "-", "@", "\t", "\r")
@@ -49,7 +54,8 @@ def export_csv(profile: Profile, path: str | Path) -> None:
     """Write one row per take, note and harmonic, with the columns of :data:`COLUMNS` in a first row.
 
     The file is UTF-8 after RFC 4180. Takes count from 1; the recordings of a take stand in one cell with "; " between
-    them; `heard` is true or false; what is not a number is an empty cell. A text that a spreadsheet would run as a
+    them; `heard` is true or false; what is not a number is an empty cell, and so is
+    what only ringing notes have. A text that a spreadsheet would run as a
     formula (it begins with =, +, -, @, a tab or a carriage return) gets an apostrophe in front; numbers stay numbers.
 
     Raises
@@ -67,6 +73,7 @@ def export_csv(profile: Profile, path: str | Path) -> None:
             texts += [str(number), _defused(recording), _defused(recipe.note)]
             texts += [_number(recipe.f0_hz, 6), _number(recipe.cents, 4)]
             texts += [_number(recipe.start_s, 6), _number(recipe.end_s, 6), recipe.kind]
+            decays = _decay_cells(recipe)
             for index, k in enumerate(recipe.k.tolist()):
                 writer.writerow(
                     [
@@ -78,6 +85,7 @@ def export_csv(profile: Profile, path: str | Path) -> None:
                         _number(recipe.floor_db[index], 4),
                         "true" if recipe.heard[index] else "false",
                         _number(recipe.phase_rad[index], 6),
+                        *decays[index],
                     ]
                 )
     # A name that came from an undecodable file name may hold half characters, which UTF-8 has no bytes for.
@@ -152,6 +160,18 @@ def averaged_cycle(recipes: list[Recipe]) -> NDArray[np.float64]:
         coefficients[CYCLE_POINTS - k] = np.conj(coefficients[k])
     period = synthesise(coefficients).real
     return np.asarray(period * (10.0 ** (CYCLE_PEAK_DB / 20.0) / np.abs(period).max()))
+
+
+def _decay_cells(recipe: Recipe) -> list[list[str]]:
+    """The cells that only ringing notes fill, harmonic by harmonic."""
+    ringing = recipe.ringing
+    if ringing is None:
+        return [[""] * (4 + len(RINGING_ARRAYS))] * len(recipe.k)
+    note = [_number(ringing.inharmonicity_b, 12), _number(ringing.inharmonicity_se, 12), _number(ringing.onset_s, 6)]
+    return [
+        [*note, shape or "", *(_number(getattr(ringing, name)[index], 6) for name in RINGING_ARRAYS)]
+        for index, shape in enumerate(ringing.decay)
+    ]
 
 
 def _wav(period: NDArray[np.float64]) -> bytes:

@@ -7,11 +7,9 @@ written: where a harmonic is not heard its level is null, and a floor without an
 """
 
 import json
-import math
 from collections.abc import Iterable
 from pathlib import Path
 
-import numpy as np
 from pydantic import ValidationError
 
 from timbre_match.advise.suggestions import Move, Suggestion
@@ -28,11 +26,9 @@ from timbre_match.compare.target import Target, as_target
 from timbre_match.errors import OutputError
 from timbre_match.keep import layout
 from timbre_match.keep.checking import check, first_fault, read_saved, refuse_format
+from timbre_match.keep.recipes import Json, read_recipe, recipe_body, rounded
 from timbre_match.keep.writing import check_file_place, write_whole
 from timbre_match.measure.profile import Profile, Session, Source, Take
-from timbre_match.measure.recipe import Recipe
-
-Json = dict[str, object]
 
 
 def check_output(path: str | Path, inputs: Iterable[str | Path], *, kind: str | None) -> None:
@@ -154,8 +150,8 @@ def comparison_to_json(comparison: Comparison, suggestions: tuple[Suggestion, ..
         "stage": comparison.stage,
         "family": comparison.family,
         "target": comparison.target,
-        "margin_db": _round(comparison.margin_db, 4),
-        "colour_distance_db": {**_interval_body(distance.distance_db), "own": _round(distance.own_db, 4)},
+        "margin_db": rounded(comparison.margin_db, 4),
+        "colour_distance_db": {**_interval_body(distance.distance_db), "own": rounded(distance.own_db, 4)},
         "closeness_percent": _interval_body(comparison.closeness_percent),
         "repeatability": {
             "source": comparison.repeatability.source,
@@ -166,7 +162,7 @@ def comparison_to_json(comparison: Comparison, suggestions: tuple[Suggestion, ..
             {
                 "note": harmonic.note,
                 "k": harmonic.k,
-                "freq_hz": _round(harmonic.freq_hz, 6),
+                "freq_hz": rounded(harmonic.freq_hz, 6),
                 **_difference_body(harmonic.difference_db),
                 "p": float(f"{harmonic.p:.6g}"),
                 "verdict": harmonic.verdict,
@@ -176,10 +172,10 @@ def comparison_to_json(comparison: Comparison, suggestions: tuple[Suggestion, ..
         ],
         "body_curve": [
             {
-                "freq_hz": _round(point.freq_hz, 6),
+                "freq_hz": rounded(point.freq_hz, 6),
                 **_difference_body(point.difference_db),
-                "simultaneous_low_db": _round(point.simultaneous_low_db, 4),
-                "simultaneous_high_db": _round(point.simultaneous_high_db, 4),
+                "simultaneous_low_db": rounded(point.simultaneous_low_db, 4),
+                "simultaneous_high_db": rounded(point.simultaneous_high_db, 4),
             }
             for point in comparison.body_curve
         ],
@@ -282,19 +278,12 @@ def _text(name: str, body_layout: type[layout.Layout], body: Json) -> str:
     return json.dumps(head | body, allow_nan=False, separators=(",", ":")) + "\n"
 
 
-def _round(value: float | None, digits: int) -> float | None:
-    """Round, with None for what is no number, and 0 rather than -0."""
-    if value is None or not math.isfinite(value):
-        return None
-    return round(float(value), digits) + 0.0
-
-
 def _profile_body(profile: Profile) -> Json:
     return {
         "instrument": profile.instrument,
         "stage": profile.stage,
         "family": profile.family,
-        "a4_hz": _round(profile.a4_hz, 6),
+        "a4_hz": rounded(profile.a4_hz, 6),
         "session": {
             "date": profile.session.date,
             "room": profile.session.room,
@@ -303,43 +292,9 @@ def _profile_body(profile: Profile) -> Json:
         "takes": [
             {
                 "recordings": [{"file": source.file, "sha256": source.sha256} for source in take.recordings],
-                "notes": [_recipe_body(recipe) for recipe in take.notes],
+                "notes": [recipe_body(recipe) for recipe in take.notes],
             }
             for take in profile.takes
-        ],
-    }
-
-
-def _recipe_body(recipe: Recipe) -> Json:
-    return {
-        "note": recipe.note,
-        "f0_hz": _round(recipe.f0_hz, 6),
-        "cents": _round(recipe.cents, 4),
-        "start_s": _round(recipe.start_s, 6),
-        "end_s": _round(recipe.end_s, 6),
-        "cycles": int(recipe.cycles),
-        "points_per_cycle": int(recipe.points_per_cycle),
-        "kind": recipe.kind,
-        "harmonics": [
-            {
-                "k": k,
-                "freq_hz": _round(freq_hz, 6),
-                "level_db": _round(level_db, 4),
-                "se_db": _round(se_db, 6),
-                "floor_db": _round(floor_db, 4),
-                "heard": heard,
-                "phase_rad": _round(phase_rad, 6),
-            }
-            for k, freq_hz, level_db, se_db, floor_db, heard, phase_rad in zip(
-                recipe.k.tolist(),
-                recipe.freq_hz.tolist(),
-                recipe.level_db.tolist(),
-                recipe.se_db.tolist(),
-                recipe.floor_db.tolist(),
-                recipe.heard.tolist(),
-                recipe.phase_rad.tolist(),
-                strict=True,
-            )
         ],
     }
 
@@ -353,7 +308,7 @@ def _profile(body: layout.ProfileBody) -> Profile:
         takes=tuple(
             Take(
                 recordings=tuple(Source(file=source.file, sha256=source.sha256) for source in take.recordings),
-                notes=tuple(_recipe(note) for note in take.notes),
+                notes=tuple(read_recipe(note) for note in take.notes),
             )
             for take in body.takes
         ),
@@ -361,33 +316,11 @@ def _profile(body: layout.ProfileBody) -> Profile:
     )
 
 
-def _recipe(note: layout.Note) -> Recipe:
-    harmonics = note.harmonics
-    return Recipe(
-        note=note.note,
-        f0_hz=note.f0_hz,
-        cents=note.cents,
-        start_s=note.start_s,
-        end_s=note.end_s,
-        cycles=note.cycles,
-        points_per_cycle=note.points_per_cycle,
-        kind=note.kind,
-        k=np.array([harmonic.k for harmonic in harmonics]),
-        freq_hz=np.array([harmonic.freq_hz for harmonic in harmonics]),
-        # As floats, None becomes NaN.
-        level_db=np.array([harmonic.level_db for harmonic in harmonics], dtype=np.float64),
-        se_db=np.array([harmonic.se_db for harmonic in harmonics], dtype=np.float64),
-        floor_db=np.array([harmonic.floor_db for harmonic in harmonics], dtype=np.float64),
-        heard=np.array([harmonic.heard for harmonic in harmonics]),
-        phase_rad=np.array([harmonic.phase_rad for harmonic in harmonics], dtype=np.float64),
-    )
-
-
 def _interval_body(interval: Interval) -> Json:
     return {
-        "value": _round(interval.value, 4),
-        "low": _round(interval.low, 4),
-        "high": _round(interval.high, 4),
+        "value": rounded(interval.value, 4),
+        "low": rounded(interval.low, 4),
+        "high": rounded(interval.high, 4),
     }
 
 
@@ -397,9 +330,9 @@ def _interval(body: layout.IntervalLayout) -> Interval:
 
 def _difference_body(interval: Interval) -> Json:
     return {
-        "difference_db": _round(interval.value, 4),
-        "low_db": _round(interval.low, 4),
-        "high_db": _round(interval.high, 4),
+        "difference_db": rounded(interval.value, 4),
+        "low_db": rounded(interval.low, 4),
+        "high_db": rounded(interval.high, 4),
     }
 
 
@@ -409,8 +342,8 @@ def _difference(body: layout.DifferenceLayout | layout.CurvePointLayout | layout
 
 def _region_body(region: Region) -> Json:
     return {
-        "low_hz": _round(region.low_hz, 6),
-        "high_hz": _round(region.high_hz, 6),
+        "low_hz": rounded(region.low_hz, 6),
+        "high_hz": rounded(region.high_hz, 6),
         **_difference_body(region.difference_db),
         "verdict": region.verdict,
         "harmonics": region.harmonics,

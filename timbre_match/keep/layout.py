@@ -11,6 +11,7 @@ from pydantic import AfterValidator, BaseModel, ConfigDict, Field, FiniteFloat, 
 from timbre_match import units
 from timbre_match.errors import UnknownNameError
 from timbre_match.measure.profile import Session
+from timbre_match.measure.records import DecayShape
 
 PROFILE_FORMAT = "timbre-match/profile"
 TARGET_FORMAT = "timbre-match/target"
@@ -32,6 +33,7 @@ Share = Annotated[FiniteFloat, Field(ge=0.0, le=1.0)]
 # No count in a recording comes near this; without a bound a hostile file could hold a number of a million digits.
 Count = Annotated[int, Field(ge=1, le=2**53)]
 CountOrZero = Annotated[int, Field(ge=0, le=2**53)]
+Positive = Annotated[FiniteFloat, Field(gt=0.0)]
 Verdict = Literal["stronger", "weaker", "alike", "unsettled"]
 
 
@@ -64,7 +66,10 @@ class NoteName(Layout):
 
 
 class Harmonic(Layout):
-    """One harmonic; `level_db` and `phase_rad` are null exactly where it is not heard."""
+    """One harmonic; `level_db` and `phase_rad` are null exactly where it is not heard.
+
+    What follows `phase_rad` is there for ringing notes alone, and of that only what applies to the partial's decay.
+    """
 
     k: Count
     freq_hz: Frequency
@@ -73,6 +78,14 @@ class Harmonic(Layout):
     floor_db: FiniteFloat | None
     heard: bool
     phase_rad: FiniteFloat | None
+    decay: DecayShape | None = None
+    t60_s: Positive | None = None
+    t60_se_s: NotNegative | None = None
+    early_t60_s: Positive | None = None
+    late_t60_s: Positive | None = None
+    late_db: FiniteFloat | None = None
+    beat_hz: NotNegative | None = None
+    beat_depth_db: FiniteFloat | None = None
 
     @model_validator(mode="after")
     def _null_where_not_heard(self) -> Self:
@@ -85,7 +98,10 @@ class Harmonic(Layout):
 
 
 class Note(NoteName):
-    """The recipe of one held note."""
+    """The recipe of one note.
+
+    From `onset_s` on for ringing notes alone; missing in files that were written before these were measured.
+    """
 
     f0_hz: Frequency
     cents: FiniteFloat
@@ -94,6 +110,10 @@ class Note(NoteName):
     cycles: Count
     points_per_cycle: Count
     kind: Literal["held", "ringing"]
+    onset_s: NotNegative | None = None
+    f0_se_hz: NotNegative | None = None
+    inharmonicity_b: NotNegative | None = None
+    inharmonicity_se: NotNegative | None = None
     harmonics: Annotated[list[Harmonic], Field(min_length=1)]
 
     @model_validator(mode="after")
@@ -103,6 +123,23 @@ class Note(NoteName):
         for index, harmonic in enumerate(self.harmonics):
             if harmonic.k != index + 1:
                 raise ValueError(f"harmonics[{index}].k is {harmonic.k}; harmonics count 1, 2, 3 without a gap")
+        return self
+
+    @model_validator(mode="after")
+    def _whole_where_ringing(self) -> Self:
+        if self.inharmonicity_b is None:
+            return self
+        if self.kind != "ringing":
+            raise ValueError("inharmonicity_b is given of ringing notes alone")
+        for name in ("onset_s", "f0_se_hz"):
+            if getattr(self, name) is None:
+                raise ValueError(f"{name} is missing, though inharmonicity_b is there")
+        for index, harmonic in enumerate(self.harmonics):
+            for name in ("decay", "t60_s"):
+                if (getattr(harmonic, name) is not None) != harmonic.heard:
+                    raise ValueError(
+                        f"harmonics[{index}].{name} is given where heard is true, and null where it is false"
+                    )
         return self
 
 

@@ -1,6 +1,4 @@
-"""Levels, phases and their uncertainty for the harmonics of one held note."""
-
-from dataclasses import dataclass
+"""Levels, phases and their uncertainty for the harmonics of one note."""
 
 import numpy as np
 import scipy.fft
@@ -10,11 +8,15 @@ from numpy.typing import NDArray
 from timbre_match import units
 from timbre_match.errors import NoHeldNoteError
 from timbre_match.intake.cycles import Cycles, cut_cycles
-from timbre_match.intake.notes import HeldNote, NoteKind
+from timbre_match.intake.notes import HeldNote
 from timbre_match.intake.recording import Recording
 from timbre_match.intake.warp import turned_back
 from timbre_match.measure.blocks import Blocks, analyse_blocks
+from timbre_match.measure.records import Recipe, Ringing
+from timbre_match.measure.ringing import measure_ringing
 from timbre_match.threads import single_threaded
+
+__all__ = ["Recipe", "Ringing", "measure_recipe"]
 
 _FALSE_ALARM = 1e-4
 _LEAST_EXCESS = 2.0
@@ -24,83 +26,14 @@ _STEP_S = 0.02
 _DECIDING = 32
 
 
-@dataclass(frozen=True, kw_only=True, slots=True, eq=False)
-class Recipe:
-    """The harmonics of one held note.
-
-    All arrays have shape (n_harmonics,) and are read-only; harmonic k stands at index k - 1.
-
-    Attributes
-    ----------
-    note : str
-        Nearest equal-tempered note, e.g. ``"A4"``.
-    f0_hz, cents : float
-        Fundamental in Hz (mean over the held note) and its deviation from `note` in cents.
-    start_s, end_s : float
-        The measured stretch of the recording, seconds.
-    cycles, points_per_cycle : int
-        Number of whole cycles measured, and points N per cycle after resampling.
-    kind : {"held", "ringing"}
-    k : int64 array
-        Harmonic numbers 1, 2, ...
-    freq_hz : float64 array
-        k times the fundamental, Hz.
-    level_db : float64 array
-        10 log10 of the harmonic's share of the note's total harmonic power; NaN where not heard.
-    se_db : float64 array
-        Standard error of `level_db` within this held note, dB; NaN where not heard.
-    floor_db : float64 array
-        Level of the noise that falls into the harmonic's own analysis band, on the scale of `level_db`.
-    heard : bool array
-        Whether the harmonic stands out of its floor.
-    phase_rad : float64 array
-        Phase of c_k relative to a time origin that makes the fundamental's phase zero; NaN where not heard.
-    """
-
-    note: str
-    f0_hz: float
-    cents: float
-    start_s: float
-    end_s: float
-    cycles: int
-    points_per_cycle: int
-    kind: NoteKind
-    k: NDArray[np.int64]
-    freq_hz: NDArray[np.float64]
-    level_db: NDArray[np.float64]
-    se_db: NDArray[np.float64]
-    floor_db: NDArray[np.float64]
-    heard: NDArray[np.bool_]
-    phase_rad: NDArray[np.float64]
-
-    def __post_init__(self) -> None:
-        for name, kind in _ARRAYS.items():
-            array: NDArray[np.generic] = np.array(getattr(self, name), dtype=kind)
-            if array.shape != np.shape(self.k):
-                raise ValueError(f"{name} has shape {array.shape}, but k has shape {np.shape(self.k)}")
-            array.setflags(write=False)
-            object.__setattr__(self, name, array)
-
-
-_ARRAYS: dict[str, type] = {
-    "k": np.int64,
-    "freq_hz": np.float64,
-    "level_db": np.float64,
-    "se_db": np.float64,
-    "floor_db": np.float64,
-    "heard": np.bool_,
-    "phase_rad": np.float64,
-}
-
-
 @single_threaded
 def measure_recipe(recording: Recording, note: HeldNote, *, a4_hz: float = units.STANDARD_A4_HZ) -> Recipe:
-    """Measure the harmonics of a held note.
+    """Measure the harmonics of a note; of a ringing one by :func:`timbre_match.measure.ringing.measure_ringing`.
 
-    A harmonic's power is the mean over the blocks of |c_k|^2 less the floor's share. Its standard error is that of the
-    same estimate in white noise at the measured floor or, where the harmonic moves more than that within the note, that
-    of a mean of correlated blocks (Newey & West 1987, Econometrica 55:703). A harmonic is heard where its power beats
-    the floor at a false-alarm rate of 1e-4.
+    A held harmonic's power is the mean over the blocks of |c_k|^2 less the floor's share. Its standard error is that of
+    the same estimate in white noise at the measured floor or, where the harmonic moves more than that within the note,
+    that of a mean of correlated blocks (Newey & West 1987, Econometrica 55:703). A harmonic is heard where its power
+    beats the floor at a false-alarm rate of 1e-4.
 
     Parameters
     ----------
@@ -119,6 +52,8 @@ def measure_recipe(recording: Recording, note: HeldNote, *, a4_hz: float = units
     NoHeldNoteError
         If none of its harmonics is heard.
     """
+    if note.kind == "ringing":
+        return measure_ringing(recording, note, a4_hz=a4_hz)
     cycles = cut_cycles(recording, note)
     count = max(1, min(int(cycles.highest_hz / note.f0_hz), (cycles.samples.shape[1] - 1) // 2))
     # In single precision, as the cycles were read: its rounding lies 130 dB under the strongest harmonic.

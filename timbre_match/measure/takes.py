@@ -10,7 +10,8 @@ import numpy as np
 
 from timbre_match import units
 from timbre_match.errors import NoHeldNoteError, RecordingError, TimbreMatchError
-from timbre_match.intake.notes import HeldNote, held_notes
+from timbre_match.intake.families import kind_of_family
+from timbre_match.intake.notes import HeldNote, NoteKind, held_notes
 from timbre_match.intake.recording import Recording, read_recording
 from timbre_match.measure.interrupts import deaf_children, interrupts_held_back
 from timbre_match.measure.profile import Profile, Session, Source, Take
@@ -47,12 +48,14 @@ _NOTHING_BETWEEN = 1e-3
 class Listening:
     """How recordings are to be read: the same for all takes of a profile.
 
-    `notes` are the notes that were played, if the maker says so; `channel` counts from 1, None takes the strongest.
+    `notes` are the notes that were played, if the maker says so; `channel` counts from 1, None takes the strongest;
+    `kind` says what all notes are, where the family of the instrument tells.
     """
 
     notes: tuple[str, ...] | None = None
     a4_hz: float = units.STANDARD_A4_HZ
     channel: int | None = None
+    kind: NoteKind | None = None
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -81,7 +84,7 @@ def listen(path: Path, listening: Listening, *, measure: bool = True) -> Heard:
     try:
         with interrupts_held_back():
             recording = read_recording(path, channel=listening.channel)
-        notes = held_notes(recording, notes=listening.notes, a4_hz=listening.a4_hz)
+        notes = held_notes(recording, notes=listening.notes, a4_hz=listening.a4_hz, kind=listening.kind)
         recipes = _recipes(recording, notes, listening.a4_hz) if measure else []
     except TimbreMatchError as error:
         # The rooms behind the reading know the file's name without its folder, which several takes may share.
@@ -177,13 +180,16 @@ def measure_takes(
 ) -> Measured:
     """Measure takes, each a recording or a folder whose recordings together are one take.
 
-    What can be used is measured; what cannot is listed.
+    What can be used is measured; what cannot is listed. The family decides whether its notes are held or ring, where
+    its name tells.
 
     Raises
     ------
     TimbreMatchError
         If no recording of any take can be used: the one failure, or all of them in one message.
     """
+    if listening.kind is None:
+        listening = dataclasses.replace(listening, kind=kind_of_family(family))
     failures: list[TimbreMatchError] = []
     parts: list[list[Path]] = []
     for place in takes:
@@ -265,11 +271,6 @@ def _warnings_about_takes(results: list[Heard], profile: Profile, listening: Lis
         if missing:
             found.append(f"Not found: {', '.join(missing)}.")
         found += _doubts_about_names(profile)
-    if any(recipe.kind == "ringing" for take in profile.takes for recipe in take.notes):
-        found.append(
-            "Ringing notes are measured as if their overtones were exactly harmonic; those of a stiff string are not, "
-            "so do not trust the upper ones."
-        )
     return tuple(found)
 
 
