@@ -250,19 +250,18 @@ def _measured(
 ) -> HeldNote | None:
     """The held note between two frames, or None where too little of it is steady."""
     begin_s, end_s = float(track.time_s[first]), float(track.time_s[last])
+    falls = is_ringing(envelope, begin_s, end_s)
+    doubtful = kind is None and (falls or falls_from_the_start(envelope, begin_s, end_s))
+    ring = None
+    if kind == "ringing" or doubtful:
+        ring = _steady_clock(signal, track, envelope, (begin_s, end_s), f0_hz, ringing=True)
     if kind is None:
-        kind = _kind(signal, track, envelope, first, last, f0_hz)
+        kind = _kind(signal, ring, falls, rises_again_db(envelope, begin_s, end_s)) if doubtful else "held"
     ringing = kind == "ringing"
-    start_s, stop_s = steady_stretch(envelope, begin_s, end_s, ringing=ringing)
-    frames = np.flatnonzero((track.time_s >= start_s) & (track.time_s <= stop_s))
-    if stop_s - start_s < _SHORTEST_S or len(frames) < 3:
+    clock = ring if ringing else _steady_clock(signal, track, envelope, (begin_s, end_s), f0_hz, ringing=False)
+    if clock is None or clock.cycles < _FEWEST_CYCLES:
         return None
-    time_s = track.time_s[frames].copy()
-    # The track reaches to both ends of the stretch.
-    time_s[0], time_s[-1] = start_s, stop_s
-    clock = refine_clock(signal, Clock(time_s, _folded(track.f0_hz[frames], f0_hz)))
-    if clock.cycles < _FEWEST_CYCLES:
-        return None
+    start_s, stop_s = float(clock.time_s[0]), float(clock.time_s[-1])
     mean_hz = clock.turns / (stop_s - start_s)
     name, cents = units.nearest_note(mean_hz, a4_hz)
     if wanted_hz:
@@ -283,23 +282,39 @@ def _measured(
     )
 
 
-def _kind(signal: BandLimited, track: PitchTrack, envelope: Envelope, first: int, last: int, f0_hz: float) -> NoteKind:
-    """Whether a note is held or rings: by its level over time, and in doubt by whether its harmonics are locked."""
-    begin_s, end_s = float(track.time_s[first]), float(track.time_s[last])
-    ringing = is_ringing(envelope, begin_s, end_s)
-    if not ringing and not falls_from_the_start(envelope, begin_s, end_s):
-        return "held"
-    start_s, stop_s = steady_stretch(envelope, begin_s, end_s, ringing=True)
+def _steady_clock(
+    signal: BandLimited,
+    track: PitchTrack,
+    envelope: Envelope,
+    between_s: tuple[float, float],
+    f0_hz: float,
+    *,
+    ringing: bool,
+) -> Clock | None:
+    """The refined clock of the steady part of a note between two times, or None where that is too short."""
+    start_s, stop_s = steady_stretch(envelope, *between_s, ringing=ringing)
     frames = np.flatnonzero((track.time_s >= start_s) & (track.time_s <= stop_s))
-    if len(frames) < 3:
-        return "ringing" if ringing else "held"
-    clock = refine_clock(signal, Clock(track.time_s[frames], _folded(track.f0_hz[frames], f0_hz)))
-    spread = spread_of_harmonics(signal, clock)
-    if ringing:
+    if stop_s - start_s < _SHORTEST_S or len(frames) < 3:
+        return None
+    time_s = track.time_s[frames].copy()
+    # The track reaches to both ends of the stretch.
+    time_s[0], time_s[-1] = start_s, stop_s
+    return refine_clock(signal, Clock(time_s, _folded(track.f0_hz[frames], f0_hz)))
+
+
+def _kind(signal: BandLimited, ring: Clock | None, falls: bool, growth_db: float) -> NoteKind:
+    """Whether a note whose level falls from the start is held or rings: in doubt, whether its harmonics are locked.
+
+    `ring` is its clock while it may ring; `falls` says that its level falls as that of a ringing note does, and
+    `growth_db` by how much it rises again after that.
+    """
+    if ring is None:
+        return "ringing" if falls else "held"
+    spread = spread_of_harmonics(signal, ring)
+    if falls:
         # Harmonics that keep step cannot beat: if such a note grows again, someone blows or bows it.
         locked = spread.harmonics >= _LOCKED_HARMONICS and spread.cents < _LOCKED_CENTS
-        driven = locked and rises_again_db(envelope, begin_s, end_s) > _GROWS_DB
-        return "held" if driven else "ringing"
+        return "held" if locked and growth_db > _GROWS_DB else "ringing"
     free = spread.harmonics >= _FREE_HARMONICS and spread.cents > _FREE_CENTS
     return "ringing" if free else "held"
 

@@ -155,10 +155,12 @@ def _within(s: Complex, widest_hz: float, fastest_t60_s: float) -> Complex:
 def _project(time_s: Real, y: Complex, energy: Real, s: Complex) -> tuple[Complex, Real, Complex, Complex]:
     """Amplitudes, sum of squares left, and the step equations for the s_i, from one table of inner products."""
     count = s.shape[1]
-    basis = exponentials(s, time_s)
-    columns = np.concatenate([basis, basis * time_s], axis=1)
-    table = columns.conj() @ columns.transpose(0, 2, 1)
-    onto = np.matmul(columns.conj(), y[..., None])[..., 0]
+    columns = np.empty((len(s), 2 * count, len(time_s)), dtype=np.complex128)
+    columns[:, :count] = exponentials(s, time_s)
+    np.multiply(columns[:, :count], time_s, out=columns[:, count:])
+    conjugate = columns.conj()
+    table = conjugate @ columns.transpose(0, 2, 1)
+    onto = np.matmul(conjugate, y[..., None])[..., 0]
     own = table[:, :count, :count].copy()
     for r in range(count):
         # Two components that fall together leave their sum determined, not their difference.

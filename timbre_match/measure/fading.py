@@ -18,6 +18,7 @@ from timbre_match.measure.decay import SLOWEST_T60_S, T60_LOG, Decays, exponenti
 
 Real = NDArray[np.float64]
 Complex = NDArray[np.complex128]
+Single = NDArray[np.float32]
 
 _ROUNDS = 16
 _DONE = 1e-3
@@ -75,29 +76,37 @@ def gradients(time_s: Real, noise: Real, fit: Decays) -> Real:
 
     The parameters are ln |c_1| and Re s_1, then for every further component Re and Im of ln c_i and of s_i.
     """
-    return _gradients(time_s, noise, fit.s, fit.c)[1]
+    return _gradients(time_s, noise, fit.s, fit.c)[1].astype(np.float64)
 
 
-def _gradients(time_s: Real, noise: Real, s: Complex, c: Complex) -> tuple[Real, Real]:
-    parts = c[:, :, None] * exponentials(s, time_s)
+def _gradients(time_s: Real, noise: Real, s: Complex, c: Complex) -> tuple[Single, Single]:
+    """Sizes and their derivatives, in single precision: the fit needs no more, and it takes half the time."""
+    parts = exponentials(s, time_s).astype(np.complex64)
+    parts *= c[:, :, None].astype(np.complex64)
     m = parts.sum(axis=1)
-    size = np.sqrt(m.real**2 + m.imag**2 + noise[:, None])
-    turned = parts * (m.conj() / size)[:, None]
-    first = turned[:, 0].real
-    columns = [first, first * time_s]
+    size = np.sqrt(m.real**2 + m.imag**2 + noise[:, None].astype(np.float32))
+    parts *= (m.conj() / size)[:, None]
+    time = time_s.astype(np.float32)
+    columns = np.empty((len(s), 4 * s.shape[1] - 2, len(time)), dtype=np.float32)
+    columns[:, 0] = parts[:, 0].real
+    np.multiply(columns[:, 0], time, out=columns[:, 1])
     for i in range(1, s.shape[1]):
-        real, imag = turned[:, i].real, turned[:, i].imag
-        columns += [real, -imag, real * time_s, -imag * time_s]
-    return size, np.stack(columns, axis=1)
+        real, imag, real_time, imag_time = (columns[:, 4 * i - 2 + place] for place in range(4))
+        real[:] = parts[:, i].real
+        np.negative(parts[:, i].imag, out=imag)
+        np.multiply(real, time, out=real_time)
+        np.multiply(imag, time, out=imag_time)
+    return size, columns
 
 
 def _equations(time_s: Real, size: Real, noise: Real, s: Complex, c: Complex) -> tuple[Real, Real, Real]:
     model, columns = _gradients(time_s, noise, s, c)
     error = size - model
+    single = error.astype(np.float32)
     return (
         np.einsum("pn,pn->p", error, error),
-        np.matmul(columns, error[..., None])[..., 0],
-        np.matmul(columns, columns.transpose(0, 2, 1)),
+        np.matmul(columns, single[..., None])[..., 0].astype(np.float64),
+        np.matmul(columns, columns.transpose(0, 2, 1)).astype(np.float64),
     )
 
 
