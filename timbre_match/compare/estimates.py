@@ -13,8 +13,9 @@ from timbre_match.compare.model import Row, Solution
 
 Array = NDArray[np.float64]
 
-FALSE_CURVE_RATE = 0.05
-"""How often a curve is said to differ somewhere where nothing does, at the most."""
+FALSE_CURVE_RATE = 0.03
+"""How often, as far as the model knows the playing, a curve is said to differ somewhere where nothing does. The rest up
+to one in twenty is left for what it does not know."""
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
@@ -28,7 +29,7 @@ class Estimates:
     curve_db, curve_sd_db : arrays, shape (g,)
     curve_significance : float
         How many of its standard deviations a curve must be off zero somewhere to differ from none at all: the playing
-        alone reaches that in one comparison of twenty.
+        alone reaches that in three comparisons of a hundred.
     harmonic_draws_db, curve_draws_db : arrays, shape (n_draws, n) and (n_draws, g)
         Joint draws of both.
     curve_at_harmonics_db : array, shape (n_draws, n)
