@@ -82,7 +82,12 @@ class Outcome:
     lone_half_width_db: Array
     curve_inside: Array
     simultaneous: bool
+    colour_db: float
+    true_colour_db: float
     colour_inside: bool
+    closeness_percent: float
+    true_closeness_percent: float
+    closeness_inside: bool
     different: int
     false_different: int
     alike: int
@@ -199,7 +204,8 @@ def outcome(rng: np.random.Generator, truth: Truth, takes: int, notes: int) -> O
     found, centre, size = _found(comparison, truth)
     true_bands = colour.all_bands(evidence.note_index, evidence.freq_hz, evidence.target_db, d[None, :])
     true_distance = float(colour.colour_distance(true_bands)[0])
-    distance = comparison.colour_distance.distance_db
+    true_closeness = float(colour.closeness(true_bands, MARGIN_DB)[0])
+    distance, close = comparison.colour_distance.distance_db, comparison.closeness_percent
     return Outcome(
         error_over_half_width=np.abs(value - d) / half,
         half_width_db=half,
@@ -207,7 +213,12 @@ def outcome(rng: np.random.Generator, truth: Truth, takes: int, notes: int) -> O
         lone_half_width_db=lone_half,
         curve_inside=(low <= curve) & (curve <= high),
         simultaneous=bool(np.all((band_low <= curve) & (curve <= band_high))),
+        colour_db=distance.value,
+        true_colour_db=true_distance,
         colour_inside=distance.low <= true_distance <= distance.high,
+        closeness_percent=close.value,
+        true_closeness_percent=true_closeness,
+        closeness_inside=close.low <= true_closeness <= close.high,
         different=int(np.sum(called)),
         false_different=int(np.sum(wrong)),
         alike=int(np.sum(alike)),
@@ -245,6 +256,11 @@ def table(title: str, outcomes: list[Outcome]) -> str:
         f"{100 * np.mean(np.concatenate([one.curve_inside for one in outcomes])):6.1f}",
         f"{100 * np.mean([one.simultaneous for one in outcomes]):6.1f}",
         f"{100 * np.mean([one.colour_inside for one in outcomes]):6.1f}",
+        f"{np.mean([one.true_colour_db for one in outcomes]):6.2f}",
+        f"{np.mean([one.colour_db for one in outcomes]):6.2f}",
+        f"{100 * np.mean([one.closeness_inside for one in outcomes]):6.1f}",
+        f"{np.mean([one.true_closeness_percent for one in outcomes]):6.1f}",
+        f"{np.mean([one.closeness_percent for one in outcomes]):6.1f}",
         f"{100 * sum(one.false_different for one in outcomes) / max(different, 1):6.1f}",
         f"{different / ratio.size * 100:6.1f}",
         f"{100 * sum(one.false_alike for one in outcomes) / max(alike, 1):6.1f}",
@@ -266,8 +282,8 @@ HEAD = " ".join(
     + [
         f"{word:>6s}"
         for word in (
-            "harm%", "curve%", "simul%", "colou%", "fdr%", "diff%", "falik%", "alik%", "regio%", "found%", "centr%",
-            "size%", "dsize", "half", "ratio", "sec",
+            "harm%", "curve%", "simul%", "colou%", "true", "mean", "close%", "true", "mean", "fdr%", "diff%", "falik%",
+            "alik%", "regio%", "found%", "centr%", "size%", "dsize", "half", "ratio", "sec",
         )
     ]
 )  # fmt: skip
@@ -315,13 +331,21 @@ def main() -> None:
         title = f"{kind} {takes}x{notes}"
         if arguments.only not in title:
             continue
-        seeds = np.random.SeedSequence([arguments.seed, len(kind), takes, notes]).spawn(arguments.comparisons)
+        seeds = seeds_of(arguments.seed, kind, takes, notes).spawn(arguments.comparisons)
         with ProcessPoolExecutor(max_workers=arguments.jobs) as pool:
             outcomes = list(pool.map(_one, [(seed, kind, takes, notes) for seed in seeds]))
         print(table(title, outcomes), flush=True)
     if not arguments.only:
         seconds, harmonics = seconds_of_the_largest(arguments.seed)
         print(f"40 notes x 5 takes x 40 harmonics: {seconds:.2f} s of one core ({harmonics} harmonics in common)")
+
+
+def seeds_of(seed: int, kind: str, takes: int, notes: int) -> np.random.SeedSequence:
+    """Seeds of a setting's comparisons; no two settings share them, and no other setting in the list changes them.
+
+    The kind enters by the UTF-8 bytes of its name, read as one number.
+    """
+    return np.random.SeedSequence([seed, int.from_bytes(kind.encode(), "big"), takes, notes])
 
 
 def seconds_of_the_largest(seed: int) -> tuple[float, int]:

@@ -16,6 +16,7 @@ PACKAGE = Path(timbre_match.__file__).parent
 ROOMS = (
     ("errors",),
     ("units",),
+    ("threads",),
     ("intake",),
     ("measure",),
     ("compare",),
@@ -39,6 +40,7 @@ HOMES = {
     "rich": {"show", "cli"},
     "soundfile": {"intake", "keep", "demo"},
     "sqlite3": {"keep"},
+    "threadpoolctl": {"threads"},
     "typer": {"cli"},
 }
 """Who may import what at run time. The command line prints JSON; the demo writes the recordings that it renders."""

@@ -5,7 +5,6 @@ Heavy rooms are imported inside the commands, so that ``--help`` answers at once
 
 import io
 import json
-import os
 import sys
 from collections.abc import Iterable, Iterator, Sequence
 from contextlib import AbstractContextManager, nullcontext
@@ -75,10 +74,6 @@ def main() -> None:
     if isinstance(sys.stdout, io.TextIOWrapper):
         # A terminal or pipe whose alphabet lacks a sign gets a question mark in its place, not a traceback.
         sys.stdout.reconfigure(errors="replace")
-    # The matrices here are small: threads inside the linear algebra cost more than they give, and quarrel over the
-    # cores with --jobs. What the user has set stays.
-    for library in ("OPENBLAS", "MKL", "OMP"):
-        os.environ.setdefault(f"{library}_NUM_THREADS", "1")
     try:
         app()
     except KeyboardInterrupt:

@@ -62,12 +62,17 @@ class ComparisonError(TimbreMatchError):
     """Two profiles have nothing in common that could be compared."""
 
 
+class ControlError(ComparisonError):
+    """A control cannot tell what changed between two sessions: two instruments, or recordings that count twice."""
+
+
 class UnknownNameError(TimbreMatchError):
     """A note name, family or option value that this package does not know."""
 
 
 __all__ = [
     "ComparisonError",
+    "ControlError",
     "FileVersionError",
     "NoHeldNoteError",
     "OutputError",

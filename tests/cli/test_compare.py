@@ -3,9 +3,20 @@
 import json
 from pathlib import Path
 
-from tests.cli.outputs import assert_comparison_keys, assert_figures, assert_same, content, parsed, short_note
+import numpy as np
+
+from tests.cli.outputs import (
+    PLAYED,
+    assert_comparison_keys,
+    assert_figures,
+    assert_same,
+    content,
+    parsed,
+    short_note,
+)
 from tests.command_line import CommandLine
 from tests.intake.sounds import write
+from timbre_match.units import note_to_hz
 
 
 def test_compare_prints_json_and_nothing_else(run: CommandLine, profile: Path, tmp_path: Path) -> None:
@@ -73,9 +84,32 @@ def test_another_session_is_pointed_out_unless_there_is_a_control(
 
     (remark,) = remarks()
     assert remark.startswith(said)
-    assert remarks("--control-now", now, "--control-then", then) == []
-    exchanged = remarks("--control-now", then, "--control-then", now)
-    assert [remark.partition(":")[0] for remark in exchanged] == ["control now", "control then"]
+    control = [tmp_path / "control_now.json", tmp_path / "control_then.json"]
+    for place, gain, source in ((control[0], 0.6, now), (control[1], 0.8, then)):
+        sound = write(
+            place.with_suffix(".wav"), np.concatenate([short_note(note_to_hz(note), gain) for note in PLAYED])
+        )
+        assert run("measure", sound, "--out", place, "--instrument", "Tit", "--family", "violin").code == 0
+        in_session(place, place, **content(source)["session"])
+    assert remarks("--control-now", control[0], "--control-then", control[1]) == []
+    (exchanged,) = remarks("--control-now", control[1], "--control-then", control[0])
+    assert exchanged.startswith("the control now was not recorded in the instrument's session")
+    assert "the control then was recorded in another session than the target" in exchanged
+
+
+def test_a_control_of_the_same_recordings_is_refused(run: CommandLine, profile: Path, tmp_path: Path) -> None:
+    control, out = tmp_path / "tit.json", tmp_path / "c.json"
+    assert run("measure", write(tmp_path / "tit.wav", short_note(note_to_hz("D4"), 0.6)), "--out", control).code == 0
+    ended = run(
+        "compare", profile, "--target", profile, "--control-now", control, "--control-then", control, "--out", out
+    )
+    ended.assert_plain_error("control now", "tit.wav", "control then", "likely cause", "what to do")
+    assert not out.exists()
+
+
+def test_the_same_recordings_on_both_sides_are_said_to_be_that(run: CommandLine, profile: Path) -> None:
+    whole = parsed(run("compare", profile, "--target", profile, "--json").out)
+    assert any(remark.startswith("instrument and target are the same recordings") for remark in whole["remarks"])
 
 
 def test_places_that_cannot_be_written_are_named_before_the_work(

@@ -1,5 +1,6 @@
 """Profiles with a known truth for the tests of the comparison."""
 
+import hashlib
 from collections.abc import Callable, Mapping
 
 import numpy as np
@@ -54,6 +55,14 @@ def base_levels(note: str) -> Array:
     return np.asarray(-8.0 * np.log2(k) + 3.0 * np.sin(2.7 * k + 5.0 * len(note) + ord(note[0])))
 
 
+def take_of(recipes: tuple[Recipe, ...], *, file: str = "take.wav") -> Take:
+    """A take of one recording, whose SHA-256 is that of the levels: another sound is another recording."""
+    heard = hashlib.sha256()
+    for one in recipes:
+        heard.update(one.note.encode() + one.level_db.tobytes())
+    return Take(recordings=(Source(file=file, sha256=heard.hexdigest()),), notes=recipes)
+
+
 def profile(
     seed: int,
     *,
@@ -69,7 +78,7 @@ def profile(
 ) -> Profile:
     """Takes with normal scatter of each level and a tilt of each note, both in dB as standard deviations."""
     rng = np.random.default_rng(seed)
-    made = []
+    made: list[Take] = []
     for _ in range(takes):
         recipes = []
         for note in notes:
@@ -79,5 +88,5 @@ def profile(
             level = level + change(freq_hz) + np.array([(own or {}).get((note, int(one)), 0.0) for one in k])
             level = level + rng.normal(0, tilt_db) * np.log2(freq_hz / 1000.0) + rng.normal(0, scatter_db, k.size)
             recipes.append(recipe(note, level, a4_hz=a4_hz, unheard=unheard))
-        made.append(Take(recordings=(Source(file="take.wav", sha256="0" * 64),), notes=tuple(recipes)))
+        made.append(take_of(tuple(recipes), file=f"{seed}_{len(made) + 1}.wav"))
     return Profile(instrument=f"instrument {seed}", stage="", family=family, a4_hz=a4_hz, takes=tuple(made))

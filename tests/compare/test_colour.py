@@ -12,6 +12,7 @@ from timbre_match.compare.colour import (
     distance_between_takes,
     erb_number,
     loudness_over_frequency,
+    mean_band_variance,
 )
 
 FREQ = np.linspace(220.0, 6600.0, 30)
@@ -96,3 +97,23 @@ def test_notes_count_alike_in_the_loudness() -> None:
     freq, level = np.concatenate([FREQ, FREQ]), np.concatenate([LEVEL, LEVEL - 30.0])
     alone = loudness_over_frequency(two[:30], FREQ, LEVEL, grid)
     assert loudness_over_frequency(two, freq, level, grid) == pytest.approx(alone)
+
+
+def test_variance_of_bands_is_that_of_their_levels() -> None:
+    # To first order, so for small differences: against differences that are drawn.
+    note = np.repeat([0, 1], 30)
+    freq, level = np.concatenate([FREQ, 0.7 * FREQ]), np.concatenate([LEVEL, LEVEL[::-1] / 3.0])
+    rng = np.random.default_rng(5)
+    variance = rng.uniform(0.01, 0.1, 60)
+    drawn = rng.normal(0, np.sqrt(variance), (4000, 60))
+    expected = np.mean(colour_distance(all_bands(note, freq, level, drawn)) ** 2)
+    # Aligning the loudness of some twenty bands a note takes one of them away.
+    assert mean_band_variance(note, freq, level, np.zeros(60), variance) == pytest.approx(expected, rel=0.12)
+
+
+def test_scaled_bands_lie_as_much_farther_apart() -> None:
+    difference = np.random.default_rng(6).normal(0, 3, (2, 30))
+    band = band_differences(FREQ, LEVEL, difference)
+    assert colour_distance([band.scaled(np.array([2.0, 0.0]))]) == pytest.approx(
+        [2.0 * colour_distance([band])[0], 0.0], abs=1e-12
+    )

@@ -8,8 +8,8 @@ from timbre_match.compare import model
 from timbre_match.compare.playing import gather
 from timbre_match.compare.repeatability import scatter_prior
 from timbre_match.compare.target import as_target, blend
-from timbre_match.errors import ComparisonError
-from timbre_match.measure.profile import Take
+from timbre_match.errors import ControlError
+from timbre_match.measure.profile import Source, Take
 
 
 def test_rows_of_repeats_come_from_every_profile_with_two_takes() -> None:
@@ -65,7 +65,13 @@ def test_a_note_that_one_take_skipped_is_still_compared() -> None:
 
 
 def test_a_control_stands_after_the_instrument_and_outside_the_body_curve() -> None:
-    control = profile(4, notes=("G3", "A4")), profile(4, notes=("G3", "A4"))
+    now = profile(4, notes=("G3", "A4"))
+    # Recorded again, and by chance played just as then: the levels are the same, the recordings are not.
+    again = tuple(
+        replace(take, recordings=(Source(file=f"then_{place}.wav", sha256=f"{place:064x}"),))
+        for place, take in enumerate(now.takes)
+    )
+    control = now, replace(now, takes=again)
     plain = gather(profile(1), as_target(profile(2)))
     whole = gather(profile(1), as_target(profile(2)), control)
     count = plain.freq_hz.size
@@ -94,5 +100,5 @@ def test_levels_far_from_the_other_takes_are_listed() -> None:
 
 
 def test_a_control_of_two_instruments_is_refused() -> None:
-    with pytest.raises(ComparisonError, match="two instruments"):
+    with pytest.raises(ControlError, match="two instruments"):
         gather(profile(1), as_target(profile(2)), (profile(3), profile(4)))

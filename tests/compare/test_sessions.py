@@ -6,7 +6,7 @@ import pytest
 
 from tests.compare.simulated import NOTES, profile
 from timbre_match.compare import compare
-from timbre_match.compare.sessions import session_remarks
+from timbre_match.compare.sessions import control_remark, session_remarks
 from timbre_match.compare.target import Target
 from timbre_match.measure.profile import Profile, Session
 
@@ -27,8 +27,9 @@ def said(*sessions: Session, own: Session = MARCH) -> tuple[str, ...]:
     return session_remarks(recorded_in(own), target_of(*sessions))
 
 
-def said_with_control(now: Session, then: Session, *members: Session) -> tuple[str, ...]:
-    return session_remarks(recorded_in(MARCH), target_of(*members), (recorded_in(now), recorded_in(then)))
+def said_with_control(now: Session, then: Session, *members: Session) -> str:
+    control = recorded_in(now), recorded_in(then)
+    return control_remark(recorded_in(MARCH), target_of(*members), control, "38 harmonics of 4 notes")
 
 
 def test_what_differs_is_named_with_what_it_means_and_what_helps() -> None:
@@ -87,28 +88,43 @@ def test_long_lists_and_long_texts_stay_short() -> None:
     assert "takes them out" in remark
 
 
-def test_a_control_of_both_sessions_leaves_nothing_to_say() -> None:
-    assert said_with_control(MARCH, JANUARY, JANUARY) == ()
-    assert said_with_control(Session(), Session(), JANUARY) == ()
-    # One member of a blend may come from elsewhere than the control.
-    assert said_with_control(MARCH, JANUARY, Session(date="2025-11-30"), JANUARY) == ()
+def test_a_control_of_both_sessions_says_what_it_takes_out() -> None:
+    plain = (
+        "what the control (instrument 1) seems to have changed by between the sessions is subtracted, as a curve from "
+        "38 harmonics of 4 notes; its uncertainty is in the intervals"
+    )
+    assert said_with_control(MARCH, JANUARY, JANUARY) == plain
+    assert said_with_control(Session(), Session(), JANUARY) == plain
 
 
 def test_a_control_of_another_session_is_named() -> None:
     elsewhere = Session(date="2026-02-14")
-    (now,) = said_with_control(elsewhere, JANUARY, JANUARY)
-    assert now.startswith("control now: not recorded in the instrument's session (date 2026-02-14 against 2026-03-01)")
-    (then,) = said_with_control(MARCH, elsewhere, JANUARY, Session(date="2025-11-30"))
+    now = said_with_control(elsewhere, JANUARY, JANUARY)
+    assert now == (
+        "the control now was not recorded in the instrument's session (date 2026-02-14 against 2026-03-01): what the "
+        "control (instrument 1) seems to have changed by is subtracted all the same, as a curve from 38 harmonics of 4 "
+        "notes, but there it is not the change of microphone, room and player that is in the difference; take a "
+        "control from those sessions, or compare without one"
+    )
+    then = said_with_control(MARCH, elsewhere, JANUARY, Session(date="2025-11-30"))
     assert then.startswith(
-        "control then: not recorded in the target's session (date 2026-02-14 against 2026-01-10, 2025-11-30)"
+        "the control then was recorded in another session than the target (date 2026-02-14 against 2026-01-10, "
+        "2025-11-30): what"
+    )
+
+
+def test_a_control_that_fits_some_members_of_a_blend_says_which_share_it_does_not_fit() -> None:
+    some = said_with_control(MARCH, JANUARY, Session(date="2025-11-30"), JANUARY, Session())
+    assert some.startswith(
+        "the control then was recorded in another session than 1 of the target's 3 members (date 2026-01-10 against "
+        "2025-11-30): what"
     )
 
 
 def test_exchanged_controls_are_both_named() -> None:
-    assert [remark.partition(":")[0] for remark in said_with_control(JANUARY, MARCH, JANUARY)] == [
-        "control now",
-        "control then",
-    ]
+    remark = said_with_control(JANUARY, MARCH, JANUARY)
+    assert remark.startswith("the control now was not recorded in the instrument's session (date 2026-01-10")
+    assert "; the control then was recorded in another session than the target (date 2026-03-01" in remark
 
 
 def test_a_comparison_carries_the_remark_and_the_control_takes_it_away() -> None:
@@ -123,6 +139,10 @@ def test_a_comparison_carries_the_remark_and_the_control_takes_it_away() -> None
     silent = compare(replace(instrument, session=Session()), target)
     assert replace(across, remarks=across.remarks[1:]) == silent
     controlled = compare(instrument, target, control_now=now, control_then=then)
-    assert not any("session than" in remark or "not recorded in" in remark for remark in controlled.remarks)
+    assert not any("another session" in remark or "not recorded in" in remark for remark in controlled.remarks)
+    assert sum("the control" in remark for remark in controlled.remarks) == 1
     exchanged = compare(instrument, target, control_now=then, control_then=now)
-    assert sum("not recorded in" in remark for remark in exchanged.remarks) == 2
+    (remark,) = (remark for remark in exchanged.remarks if "the control" in remark)
+    # One remark, so that none says that the sessions are taken out while another says that they are not.
+    assert "not recorded in" in remark
+    assert "subtracted all the same" in remark

@@ -137,6 +137,14 @@ def test_a_harmonic_that_the_other_side_must_have_weaker_is_named() -> None:
     assert named(back, "stronger") == {}
 
 
+def test_a_named_harmonic_is_told_in_plain_words() -> None:
+    strong, weak = profile(1, own={("G3", 30): 36.0}), noisy(profile(2), -36.0)
+    end = r" left out\. What is not heard is weaker than the noise there: with the notes of both sides brought to the "
+    end += r"same level, the instrument is at least \d+ dB {}: G3 harmonic 30$"
+    for found, word in ((compare(strong, weak), "stronger"), (compare(weak, strong), "weaker")):
+        assert sum(bool(re.search(end.format(word), remark)) for remark in found.remarks) == 1
+
+
 def test_what_noise_alone_hides_is_counted_and_not_named() -> None:
     found = compare(profile(1), noisy(profile(2), -36.0))
     assert any("too seldom" in remark for remark in found.remarks)

@@ -356,7 +356,10 @@ def _lone_remarks(
         return (plain,)
     farthest = places[np.argsort(-least_db[places], kind="stable")][:_NAMED]
     named = "; ".join(f"at least {math.floor(least_db[place])} dB {word}: {labels[place]}" for place in farthest)
-    return (f"{plain}; going by the {other}'s noise, and against the middle of each note, {named}",)
+    return (
+        f"{plain}. What is not heard is weaker than the noise there: with the notes of both sides brought to the same "
+        f"level, the instrument is {named}",
+    )
 
 
 def _mean_log(values: Array) -> Array:

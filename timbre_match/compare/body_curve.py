@@ -36,7 +36,7 @@ _MEAN_SHIFTS = 50
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class Stretch:
-    """Grid points `first` to `last` (inclusive) over which the band lies on one side of zero."""
+    """Grid points `first` to `last` (inclusive) over which the curve lies on one side of zero."""
 
     first: int
     last: int
@@ -132,9 +132,8 @@ def simultaneous_factor(draws_db: Array, centre_db: Array, sd_db: Array, level: 
     return float(np.quantile(farthest, level))
 
 
-def stretches(low_db: Array, high_db: Array) -> list[Stretch]:
-    """Return the runs of grid points over which the band (n_grid,) lies wholly above or wholly below zero."""
-    side = np.where(low_db > 0, 1, np.where(high_db < 0, -1, 0))
+def stretches(side: NDArray[np.int64]) -> list[Stretch]:
+    """Return the runs of grid points that lie on one side of zero: `side` (n_grid,) is 1 above, -1 below, else 0."""
     edges = np.flatnonzero(np.diff(side)) + 1
     starts = np.concatenate([[0], edges])
     ends = np.concatenate([edges - 1, [side.size - 1]])

@@ -51,6 +51,10 @@ class BandDifferences:
     difference_db: Array
     loudness: Array
 
+    def scaled(self, factor: Array) -> "BandDifferences":
+        """Each draw's differences times a factor of its own, shape (n_draws,)."""
+        return BandDifferences(difference_db=factor[:, None] * self.difference_db, loudness=self.loudness)
+
 
 def audible(freq_hz: Array, level_db: Array) -> NDArray[np.bool_]:
     """Which harmonics of one note, shape (n,), are not hidden under the others.
@@ -78,13 +82,10 @@ def band_differences(freq_hz: Array, target_db: Array, difference_db: Array) -> 
     difference_db : array, shape (n_draws, n_harmonics)
         Instrument minus target; any constant in it drops out.
     """
-    band = np.floor(erb_number(freq_hz)).astype(np.int64)
-    starts = np.flatnonzero(np.concatenate([[True], np.diff(band) > 0]))
     centre = difference_db - np.mean(difference_db, axis=1, keepdims=True)
-    heard = audible(freq_hz, target_db) | audible(freq_hz, target_db + np.mean(centre, axis=0))
+    starts, counted = _audible_bands(freq_hz, target_db, np.mean(centre, axis=0))
     target = np.add.reduceat(db_to_power(target_db), starts)
     instrument = np.add.reduceat(db_to_power(target_db + centre), starts, axis=1)
-    counted = np.maximum.reduceat(heard.astype(np.int64), starts) > 0
     target, instrument = target[counted], instrument[:, counted]
     loudness = target**LOUDNESS_EXPONENT
     ratio = np.sum(loudness) / np.sum(instrument**LOUDNESS_EXPONENT, axis=1, keepdims=True)
@@ -94,13 +95,48 @@ def band_differences(freq_hz: Array, target_db: Array, difference_db: Array) -> 
     )
 
 
+def _audible_bands(freq_hz: Array, target_db: Array, difference_db: Array) -> tuple[IntArray, NDArray[np.bool_]]:
+    """First harmonic of each band that holds one, and which of the bands hold one that is heard on either side."""
+    band = np.floor(erb_number(freq_hz)).astype(np.int64)
+    starts = np.flatnonzero(np.concatenate([[True], np.diff(band) > 0]))
+    heard = audible(freq_hz, target_db) | audible(freq_hz, target_db + difference_db)
+    return starts, np.maximum.reduceat(heard.astype(np.int64), starts) > 0
+
+
 def all_bands(note_index: IntArray, freq_hz: Array, target_db: Array, difference_db: Array) -> list[BandDifferences]:
     """:func:`band_differences` of every note; arrays as there, with `note_index` ascending."""
-    starts = np.flatnonzero(np.concatenate([[True], np.diff(note_index) > 0]))
-    ends = np.append(starts[1:], note_index.size)
     return [
-        band_differences(freq_hz[a:b], target_db[a:b], difference_db[:, a:b]) for a, b in zip(starts, ends, strict=True)
+        band_differences(freq_hz[note], target_db[note], difference_db[:, note]) for note in _notes_apart(note_index)
     ]
+
+
+def mean_band_variance(
+    note_index: IntArray, freq_hz: Array, target_db: Array, difference_db: Array, variance: Array
+) -> float:
+    """Mean variance of the level of an audible band, dB^2, where each harmonic's level has a variance of its own.
+
+    To first order a band's level follows its harmonics' as far as each makes up its power.
+
+    Parameters
+    ----------
+    note_index, freq_hz, target_db, difference_db : arrays, shape (n,)
+        As in :func:`all_bands`; one difference of each harmonic.
+    variance : array, shape (n,)
+        dB^2, independent of each other.
+    """
+    found = []
+    for note in _notes_apart(note_index):
+        starts, counted = _audible_bands(freq_hz[note], target_db[note], difference_db[note])
+        power = db_to_power(target_db[note])
+        spread = np.add.reduceat(power**2 * variance[note], starts) / np.add.reduceat(power, starts) ** 2
+        found.append(spread[counted])
+    return float(np.mean(np.concatenate(found)))
+
+
+def _notes_apart(note_index: IntArray) -> list[slice]:
+    """Where each note's harmonics stand; `note_index` is ascending."""
+    starts = np.flatnonzero(np.concatenate([[True], np.diff(note_index) > 0]))
+    return [slice(int(a), int(b)) for a, b in zip(starts, np.append(starts[1:], note_index.size), strict=True)]
 
 
 def loudness_over_frequency(note_index: IntArray, freq_hz: Array, level_db: Array, grid_hz: Array) -> Array:

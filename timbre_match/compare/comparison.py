@@ -19,9 +19,11 @@ from timbre_match.compare.records import (
     Repeatability,
     Verdict,
 )
+from timbre_match.compare.same_recordings import same_recording_remarks
 from timbre_match.compare.sessions import session_remarks
 from timbre_match.compare.target import Target, as_target
 from timbre_match.measure.profile import Profile
+from timbre_match.threads import single_threaded
 
 __all__ = [
     "ColourDistance",
@@ -44,6 +46,7 @@ _SEED = 20261
 _Z95 = 1.959963984540054
 
 
+@single_threaded
 def compare(
     profile: Profile,
     target: Profile | Target,
@@ -80,7 +83,9 @@ def compare(
     ------
     ComparisonError
         If the two have no note in common or no note with two harmonics that both let one hear, or the same holds of
-        the controls, or the controls are two instruments.
+        the controls.
+    ControlError
+        If the controls are two instruments, or have recordings in common with each other, the instrument or the target.
     ValueError
         If `margin_db` is not positive, or one of the controls is missing.
     """
@@ -93,7 +98,6 @@ def compare(
     control = None if control_now is None or control_then is None else (control_now, control_then)
     evidence = gather(profile, whole, control)
     grid_hz, estimates = _estimated(evidence, generator)
-    curve = _curve(grid_hz, estimates)
     distance, close = _distance_and_closeness(evidence, estimates, margin_db)
     own = colour.distance_between_takes(
         evidence.note_index, evidence.freq_hz, evidence.instrument_db, evidence.instrument_takes_db
@@ -113,9 +117,10 @@ def compare(
             target_takes=sum(len(member.takes) for member in whole.members),
         ),
         harmonics=harmonics,
-        body_curve=curve,
-        regions=_regions(evidence, estimates, curve),
-        remarks=session_remarks(profile, whole, control)
+        body_curve=_curve(grid_hz, estimates),
+        regions=_regions(evidence, estimates, grid_hz),
+        remarks=(session_remarks(profile, whole) if control is None else ())
+        + same_recording_remarks(profile, whole)
         + evidence.remarks
         + _family_remarks(whole, distance)
         + _remarks(harmonics),
@@ -157,22 +162,40 @@ def _estimated(evidence: Evidence, rng: np.random.Generator) -> tuple[Array, Est
         curve_db=sign * found.curve_db,
         harmonic_draws_db=sign * found.harmonic_draws_db,
         curve_draws_db=sign * found.curve_draws_db,
+        curve_at_harmonics_db=sign * found.curve_at_harmonics_db,
     )
 
 
 def _distance_and_closeness(evidence: Evidence, estimates: Estimates, margin_db: float) -> tuple[Interval, Interval]:
-    """Colour distance in dB and closeness in per cent, those of the mean differences, with intervals from the draws.
+    """Colour distance in dB and closeness in per cent from the draws, less what the takes' scatter puts into them.
 
-    A draw differs from the mean by noise, and noise adds to a distance and takes from closeness. What it does so on
-    average is taken off (bias correction as in the bootstrap: Efron & Tibshirani 1993, *An Introduction to the
-    Bootstrap*, chapter 10), for the distance from its square, which is where noise adds up.
+    The distance of the mean differences would be too small, since those are shrunk; the draws have the size that the
+    model finds, but that holds what takes scatter more than the model is told (:mod:`timbre_match.compare.few_takes`):
+    a constant added to the squared distance, which is taken off (as the error's share is in an unbiased estimate of a
+    squared distance: Walther et al. 2016, Reliability of dissimilarity measures for multi-voxel pattern analysis,
+    *NeuroImage* 137). The squares scatter as much more about their mean.
+
+    Closeness is that of the same draws, brought to the same distance: harmonics' own deviations, which is where the
+    scatter went, are made smaller, and the body curve is not until nothing else is left.
     """
-    differences = np.vstack([estimates.harmonic_db, estimates.harmonic_draws_db])
-    bands = colour.all_bands(evidence.note_index, evidence.freq_hz, evidence.target_db, differences)
-    square, share = colour.colour_distance(bands) ** 2, colour.closeness(bands, margin_db)
-    square, share = (np.append(one[0], one[1:] + one[0] - np.mean(one[1:])) for one in (square, share))
-    distance, share = np.sqrt(np.maximum(square, 0.0)), np.clip(share, 0.0, 100.0)
-    return _interval(distance[1:], distance[0]), _interval(share[1:], share[0])
+    where = evidence.note_index, evidence.freq_hz, evidence.target_db
+    draws = estimates.harmonic_draws_db
+    drawn = colour.colour_distance(colour.all_bands(*where, draws)) ** 2
+    excess = (evidence.claim_factor - 1.0) * estimates.scatter_scale
+    added = colour.mean_band_variance(*where, estimates.harmonic_db, excess)
+    middle = float(np.mean(drawn))
+    square = np.maximum(middle + np.sqrt(evidence.claim_factor) * (drawn - middle) - added, 0.0)
+    curve = estimates.curve_at_harmonics_db
+    smooth = colour.colour_distance(colour.all_bands(*where, curve)) ** 2
+    left = np.sqrt(_ratio(np.maximum(square - smooth, 0.0), np.maximum(drawn - smooth, 0.0)))
+    bands = colour.all_bands(*where, curve + left[:, None] * (draws - curve))
+    factor = np.sqrt(_ratio(square, colour.colour_distance(bands) ** 2))
+    share = colour.closeness([band.scaled(factor) for band in bands], margin_db)
+    return _interval(np.sqrt(square), math.sqrt(max(middle - added, 0.0))), _interval(share)
+
+
+def _ratio(part: Array, whole: Array) -> Array:
+    return np.divide(part, whole, out=np.zeros(part.shape), where=whole > 0)
 
 
 def _interval(draws: Array, value: float | None = None) -> Interval:
@@ -222,21 +245,37 @@ def _harmonics(evidence: Evidence, estimates: Estimates, margin_db: float) -> tu
 
 
 def _curve(grid_hz: Array, estimates: Estimates) -> tuple[CurvePoint, ...]:
+    """The curve with its bands; where it is certain on which side of zero it lies, the bands end there.
+
+    Whether a curve that is there is wholly inside its band, and whether there is one, are two questions, and the second
+    asks for less: where the curve is further off zero than playing alone would bring it anywhere, in all but one of
+    twenty comparisons, its sign is known, and the simultaneous band, which need not cover both signs, ends at zero
+    (Benjamini, Hochberg & Stark 1998, Confidence intervals with more power to determine the sign, *JASA* 93).
+    """
     centre, sd = estimates.curve_db, estimates.curve_sd_db
     factor = max(body_curve.simultaneous_factor(estimates.curve_draws_db, centre, sd), _Z95)
+    side = _known_side(estimates)
+    low = np.where(side > 0, np.maximum(centre - factor * sd, 0.0), centre - factor * sd)
+    high = np.where(side < 0, np.minimum(centre + factor * sd, 0.0), centre + factor * sd)
     return tuple(
         CurvePoint(
             freq_hz=float(hz),
             difference_db=_normal_interval(float(value), float(one)),
-            simultaneous_low_db=float(value - factor * one),
-            simultaneous_high_db=float(value + factor * one),
+            simultaneous_low_db=float(below),
+            simultaneous_high_db=float(above),
         )
-        for hz, value, one in zip(grid_hz, centre, sd, strict=True)
+        for hz, value, one, below, above in zip(grid_hz, centre, sd, low, high, strict=True)
     )
 
 
-def _regions(evidence: Evidence, estimates: Estimates, curve: tuple[CurvePoint, ...]) -> tuple[Region, ...]:
-    """Stretches where the simultaneous band leaves zero and at least two harmonics were measured.
+def _known_side(estimates: Estimates) -> NDArray[np.int64]:
+    """1 where the curve is certain to lie above zero, -1 below, else 0; shape (g,)."""
+    certain = np.abs(estimates.curve_db) > max(estimates.curve_significance, _Z95) * estimates.curve_sd_db
+    return np.where(certain, np.sign(estimates.curve_db), 0.0).astype(np.int64)
+
+
+def _regions(evidence: Evidence, estimates: Estimates, hz: Array) -> tuple[Region, ...]:
+    """Stretches where the simultaneous band keeps to one side of zero and at least two harmonics were measured.
 
     What a single harmonic shows is said of that harmonic, and is no matter of the body.
 
@@ -244,12 +283,9 @@ def _regions(evidence: Evidence, estimates: Estimates, curve: tuple[CurvePoint, 
     over the whole stretch would call every peak smaller than it is, the farthest point alone greater: of all points it
     is the one that chance has helped most.
     """
-    low = np.array([point.simultaneous_low_db for point in curve])
-    high = np.array([point.simultaneous_high_db for point in curve])
-    hz = np.array([point.freq_hz for point in curve])
     half_step = np.sqrt(hz[1] / hz[0])
     found = []
-    for stretch in body_curve.stretches(low, high):
+    for stretch in body_curve.stretches(_known_side(estimates)):
         inside = slice(stretch.first, stretch.last + 1)
         bounds = hz[stretch.first] / half_step, hz[stretch.last] * half_step
         members = (evidence.freq_hz >= bounds[0]) & (evidence.freq_hz <= bounds[1])

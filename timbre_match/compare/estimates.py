@@ -13,6 +13,9 @@ from timbre_match.compare.model import Row, Solution
 
 Array = NDArray[np.float64]
 
+FALSE_CURVE_RATE = 0.05
+"""How often a curve is said to differ somewhere where nothing does, at the most."""
+
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
 class Estimates:
@@ -23,20 +26,28 @@ class Estimates:
     harmonic_db, harmonic_sd_db : arrays, shape (n,)
         Body curve plus the harmonic's own deviation, shrunk as far as its evidence is weak.
     curve_db, curve_sd_db : arrays, shape (g,)
+    curve_significance : float
+        How many of its standard deviations a curve must be off zero somewhere to differ from none at all: the playing
+        alone reaches that in one comparison of twenty.
     harmonic_draws_db, curve_draws_db : arrays, shape (n_draws, n) and (n_draws, g)
         Joint draws of both.
-    scatter_variance, own_variance, shared_variance : arrays, shape (n,)
-        Variance of the harmonic's scatter, of its own deviation before the data, and what curve, gains and tilts
-        add to the uncertainty of its estimate; dB^2.
+    curve_at_harmonics_db : array, shape (n_draws, n)
+        The same draws of the curve, at the harmonics' frequencies.
+    scatter_variance, scatter_scale, own_variance, shared_variance : arrays, shape (n,)
+        Variance of the harmonic's scatter, the squared scale of its distribution, variance of its own deviation before
+        the data, and what curve, gains and tilts add to the uncertainty of its estimate; dB^2.
     """
 
     harmonic_db: Array
     harmonic_sd_db: Array
     curve_db: Array
     curve_sd_db: Array
+    curve_significance: float
     harmonic_draws_db: Array
     curve_draws_db: Array
+    curve_at_harmonics_db: Array
     scatter_variance: Array
+    scatter_scale: Array
     own_variance: Array
     shared_variance: Array
 
@@ -73,24 +84,34 @@ def estimate(
     """
     curve_part = slice(row.shared.curve_first, row.shared.curve_last)
     grid = np.column_stack([grid_octave, grid_smooth])
-    draws, curve_draws = [], []
+    reached = row.shared.matrix[:harmonics, curve_part]
+    draws, curve_draws, reached_draws, played_curves = [], [], [], []
     for solution in solutions:
         shared = _shared_draws(solution, rng, draws_per_solution)
         curve = shared[:, curve_part] @ grid.T
         level = reference_level(curve, grid_loudness)[:, None]
         curve_draws.append(curve - level)
+        reached_draws.append(shared[:, curve_part] @ reached.T - level)
         draws.append(_harmonic_draws(solution, row, shared, rng)[:, :harmonics] - level)
+        played = _played_effects(solution, row, rng, draws_per_solution)[:, curve_part] @ grid.T
+        played_curves.append(played - reference_level(played, grid_loudness)[:, None])
     harmonic, curve = np.concatenate(draws), np.concatenate(curve_draws)
+    curve_sd_db = np.std(curve, axis=0)
+    farthest = np.max(np.abs(np.concatenate(played_curves)) / curve_sd_db, axis=1)
     mine = slice(harmonics)
     own_part = np.mean([(solution.shrinkage * solution.noise_variance)[mine] for solution in solutions], axis=0)
     return Estimates(
         harmonic_db=np.mean(harmonic, axis=0),
         harmonic_sd_db=np.std(harmonic, axis=0),
         curve_db=np.mean(curve, axis=0),
-        curve_sd_db=np.std(curve, axis=0),
+        curve_sd_db=curve_sd_db,
+        curve_significance=float(np.quantile(farthest, 1.0 - FALSE_CURVE_RATE)),
         harmonic_draws_db=harmonic,
         curve_draws_db=curve,
+        curve_at_harmonics_db=np.concatenate(reached_draws),
         scatter_variance=np.mean([solution.noise_variance[mine] for solution in solutions], axis=0),
+        # Precisions are gamma distributed about that of the scale.
+        scatter_scale=1.0 / np.mean([1.0 / solution.noise_variance[mine] for solution in solutions], axis=0),
         own_variance=np.mean([solution.own_variance[mine] for solution in solutions], axis=0),
         shared_variance=np.maximum(np.var(harmonic, axis=0) - own_part, 0.0),
     )
@@ -99,6 +120,22 @@ def estimate(
 def _shared_draws(solution: Solution, rng: np.random.Generator, count: int) -> Array:
     root = np.linalg.cholesky(solution.shared_cov)
     return np.asarray(solution.shared + rng.standard_normal((count, solution.shared.size)) @ root.T)
+
+
+def _played_effects(solution: Solution, row: Row, rng: np.random.Generator, count: int) -> Array:
+    """What the shared effects are estimated to be, shape (count, p), where there is playing and no body curve.
+
+    With information F = C^-1 - V^-1 (C the posterior covariance, V the prior variances) the estimate is C r, and r has
+    the covariance F + F V0 F, V0 being V without the curve's part (Robinson 1991, *Statistical Science* 6).
+    """
+    covariance, variance = solution.shared_cov, solution.shared_variance
+    information = np.linalg.inv(covariance) - np.diag(1.0 / variance)
+    played = variance.copy()
+    played[row.shared.curve_first : row.shared.curve_last] = 0.0
+    spread = covariance @ (information + information @ (played[:, None] * information)) @ covariance
+    values, vectors = np.linalg.eigh(0.5 * (spread + spread.T))
+    root = vectors * np.sqrt(np.maximum(values, 0.0))
+    return np.asarray(rng.standard_normal((count, values.size)) @ root.T)
 
 
 def _harmonic_draws(solution: Solution, row: Row, shared: Array, rng: np.random.Generator) -> Array:

@@ -8,9 +8,12 @@ from numpy.typing import NDArray
 
 from timbre_match.compare import body_curve, colour, model
 from timbre_match.compare.alignment import SET_ASIDE_WEIGHT, AlignedTakes, Pairing, align_takes, pair
+from timbre_match.compare.few_takes import claim_factor
 from timbre_match.compare.repeatability import ScatterPrior, fit_variance_prior, moderated_variance, scatter_prior
+from timbre_match.compare.same_recordings import refuse_shared_control
+from timbre_match.compare.sessions import control_remark
 from timbre_match.compare.target import Target
-from timbre_match.errors import ComparisonError
+from timbre_match.errors import ComparisonError, ControlError
 from timbre_match.measure.profile import Profile
 
 Array = NDArray[np.float64]
@@ -48,6 +51,8 @@ class Evidence:
     prior : model.Prior
     takes : float
         Takes a side, harmonic mean of the two sides.
+    claim_factor : float
+        What the differences' scatter is over what `differences` says of it (:mod:`timbre_match.compare.few_takes`).
     span : (low, high)
         Ends of the curve's spline in octaves from `origin_hz`.
     origin_hz : float
@@ -65,6 +70,7 @@ class Evidence:
     repeats: tuple[model.Row, ...]
     prior: model.Prior
     takes: float
+    claim_factor: float
     span: tuple[float, float]
     origin_hz: float
     remarks: tuple[str, ...]
@@ -111,15 +117,21 @@ def gather(profile: Profile, target: Target, control: tuple[Profile, Profile] | 
     Raises
     ------
     ComparisonError
-        If the two have nothing in common, or the controls have not, or these are two instruments.
+        If the two have nothing in common, or the controls have not.
+    ControlError
+        If the controls are two instruments, or have recordings in common with each other, the instrument or the target.
     """
+    if control is not None:
+        refuse_shared_control(profile, target, control)
     paired = pair(profile, target.members)
     origin = math.exp(float(np.mean(np.log(paired.freq_hz))))
     main = _difference(paired, profile.family or target.members[0].family, origin)
     parts, remarks = [main], paired.remarks
     if control is not None:
         parts.append(_control_difference(*control, origin))
-        remarks += _control_remarks(parts[1].paired, control[0])
+        paired_control = parts[1].paired
+        evidence = f"{paired_control.k.size} harmonics of {len(paired_control.notes)} notes"
+        remarks = (control_remark(profile, target, control, evidence), *remarks)
     octave = np.concatenate([part.octave for part in parts])
     span = float(np.min(octave)), float(np.max(octave))
     return Evidence(
@@ -134,6 +146,7 @@ def gather(profile: Profile, target: Target, control: tuple[Profile, Profile] | 
         repeats=tuple(row for part in parts for one in part.aligned for row in _repeat_rows(one, part, span)),
         prior=_model_prior(main.prior),
         takes=2.0 / main.playing,
+        claim_factor=claim_factor(main.prior, main.take_counts, float(np.median(main.scatter_df))),
         span=span,
         origin_hz=origin,
         remarks=remarks + _scatter_remarks(main.prior, main.take_counts) + _set_aside(paired, main.aligned),
@@ -167,7 +180,7 @@ def _difference(paired: Pairing, family: str, origin_hz: float) -> _Difference:
 
 def _control_difference(now: Profile, then: Profile, origin_hz: float) -> _Difference:
     if now.instrument and then.instrument and now.instrument != then.instrument:
-        raise ComparisonError(
+        raise ControlError(
             f"the controls are two instruments: {now.instrument} now, {then.instrument} then",
             cause="a control is one instrument that has not changed, recorded in both sessions",
             remedy="name profiles of the same instrument",
@@ -294,14 +307,6 @@ def _model_prior(prior: ScatterPrior) -> model.Prior:
         # A log-normal standard deviation about this centre has the value's square as its mean variance.
         centre[place], sd[place] = math.log(max(value, _LEAST_DB)) - log_sd**2, log_sd
     return model.Prior(centre=centre, precision=np.diag(1.0 / sd**2))
-
-
-def _control_remarks(paired: Pairing, control: Profile) -> tuple[str, ...]:
-    return (
-        f"what the control ({control.instrument or 'unnamed'}) seems to have changed by between the sessions "
-        f"is subtracted, as a curve from {paired.k.size} harmonics of {len(paired.notes)} notes; "
-        "its uncertainty is in the intervals",
-    )
 
 
 def _scatter_remarks(prior: ScatterPrior, take_counts: tuple[int, ...]) -> tuple[str, ...]:

@@ -13,47 +13,61 @@ _LISTED = 3
 _LONGEST = 40
 
 
-def session_remarks(
-    profile: Profile, target: Target, control: tuple[Profile, Profile] | None = None
-) -> tuple[str, ...]:
-    """Say where the instrument, the target and the control were recorded in sessions that differ.
+def session_remarks(profile: Profile, target: Target) -> tuple[str, ...]:
+    """Say what differs between the sessions of the instrument and of the target, where there is no control."""
+    others = _elsewhere(profile.session, target.members)
+    if not others:
+        return ()
+    return (
+        f"recorded in another session than {_which(others, target)} ({_apart(profile.session, others)}): microphone, "
+        "room and player are in the difference; an instrument that has not changed, recorded in both sessions, takes "
+        "them out (--control-now, --control-then)",
+    )
+
+
+def control_remark(profile: Profile, target: Target, control: tuple[Profile, Profile], evidence: str) -> str:
+    """Say what a control does, and where it was not recorded in the sessions that it stands for.
 
     Parameters
     ----------
     profile : Profile
     target : Target
-    control : (now, then), optional
+    control : (now, then)
         An instrument that has not changed, recorded with the instrument and with the target.
-
-    Returns
-    -------
-    tuple of str
-        Without a control, what differs between the sessions of instrument and target; with one, which of its
-        profiles was not recorded in the session that it stands for.
+    evidence : str
+        What the control's change was found from, such as "38 harmonics of 4 notes".
     """
-    members = [member.session for member in target.members]
-    if control is not None:
-        now, then = (one.session for one in control)
-        return _misplaced("now", now, [profile.session], "instrument") + _misplaced("then", then, members, "target")
-    others = [session for session in members if _differing(profile.session, session)]
-    if not others:
-        return ()
-    which = "the target" if len(others) == len(members) else f"{len(others)} of the target's {len(members)} members"
+    now, then = control
+    name = now.instrument or then.instrument or "unnamed"
+    misplaced = []
+    if _elsewhere(now.session, (profile,)):
+        apart = _apart(now.session, [profile.session])
+        misplaced.append(f"the control now was not recorded in the instrument's session ({apart})")
+    if others := _elsewhere(then.session, target.members):
+        misplaced.append(
+            f"the control then was recorded in another session than {_which(others, target)} "
+            f"({_apart(then.session, others)})"
+        )
+    if not misplaced:
+        return (
+            f"what the control ({name}) seems to have changed by between the sessions is subtracted, as a curve from "
+            f"{evidence}; its uncertainty is in the intervals"
+        )
     return (
-        f"recorded in another session than {which} ({_apart(profile.session, others)}): microphone, room and player "
-        "are in the difference; an instrument that has not changed, recorded in both sessions, takes them out "
-        "(--control-now, --control-then)",
+        f"{'; '.join(misplaced)}: what the control ({name}) seems to have changed by is subtracted all the same, as a "
+        f"curve from {evidence}, but there it is not the change of microphone, room and player that is in the "
+        "difference; take a control from those sessions, or compare without one"
     )
 
 
-def _misplaced(which: str, control: Session, sessions: Sequence[Session], side: str) -> tuple[str, ...]:
-    """Say that a control was recorded in none of the sessions that it stands for."""
-    if not all(_differing(control, session) for session in sessions):
-        return ()
-    return (
-        f"control {which}: not recorded in the {side}'s session ({_apart(control, sessions)}), so it cannot tell what "
-        "microphone, room and player did there",
-    )
+def _elsewhere(session: Session, profiles: Sequence[Profile]) -> list[Session]:
+    """Sessions of the profiles that are noted otherwise."""
+    return [one.session for one in profiles if _differing(session, one.session)]
+
+
+def _which(others: Sequence[Session], target: Target) -> str:
+    count = len(target.members)
+    return "the target" if len(others) == count else f"{len(others)} of the target's {count} members"
 
 
 def _differing(one: Session, other: Session) -> tuple[str, ...]:

@@ -7,10 +7,8 @@ from numpy.typing import NDArray
 
 from timbre_match.intake.notes import HeldNote
 from timbre_match.intake.recording import Recording
-from timbre_match.intake.spectrum import BandLimited, Spectrum, points_per_cycle
+from timbre_match.intake.spectrum import BandLimited, points_per_cycle
 from timbre_match.intake.warp import Clock
-
-_MARGIN_S = 0.05
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
@@ -53,14 +51,13 @@ def cut_cycles(recording: Recording, note: HeldNote) -> Cycles:
         As many whole cycles as fit between `note.start_s` and `note.end_s`.
     """
     rate = recording.sample_rate_hz
-    first = max(0, int((note.start_s - _MARGIN_S) * rate))
-    last = min(len(recording.samples), int((note.end_s + _MARGIN_S) * rate) + 1)
     edge_hz = rate / 2 if recording.low_pass_hz is None else min(rate / 2, recording.low_pass_hz)
-    signal = BandLimited(Spectrum(recording.samples[first:last], rate), edge_hz)
+    signal = BandLimited(recording.spectrum, edge_hz, between_s=(note.start_s, note.end_s))
     clock = Clock(note.track_s, note.track_hz)
     instants = clock.instants_s(points_per_cycle(float(note.track_hz.min()), edge_hz))
     # The Nyquist frequency needs room for vibrato; at the edge of a codec's band the level falls before it is gone.
     highest_hz = 0.98 * rate / 2 * note.f0_hz / max(note.f0_hz, float(note.track_hz.max()))
     if recording.low_pass_hz is not None:
         highest_hz = min(highest_hz, 0.97 * recording.low_pass_hz)
-    return Cycles(samples=signal.at(instants - first / rate), start_s=instants[:, 0], highest_hz=highest_hz)
+    samples = signal.at(instants).astype(np.float64)
+    return Cycles(samples=samples, start_s=instants[:, 0], highest_hz=highest_hz)

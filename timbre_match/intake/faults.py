@@ -9,6 +9,7 @@ from dataclasses import dataclass
 
 import numpy as np
 import scipy.fft
+import scipy.ndimage
 from numpy.typing import NDArray
 
 from timbre_match.intake.spectral_faults import find_low_pass, find_mains_hum, long_term_spectrum
@@ -223,8 +224,7 @@ def decay_times_s(levels_db: NDArray[np.float64], loud_db: float) -> list[float]
         return []
     power = np.convolve(10.0 ** (levels_db / 10.0), np.full(_SMOOTH_HOPS, 1.0 / _SMOOTH_HOPS), mode="same")
     smooth_db = 10.0 * np.log10(np.maximum(power, 1e-40))
-    held_before_db = np.median(np.lib.stride_tricks.sliding_window_view(smooth_db, _HELD_HOPS), axis=1)
-    held_before_db = held_before_db[: len(smooth_db) - lead]
+    held_before_db = scipy.ndimage.median_filter(smooth_db, _HELD_HOPS)[_HELD_HOPS // 2 :][: len(smooth_db) - lead]
     # Looked at with a lag, or else the reference would follow a slow fall down.
     below = (smooth_db[lead:] < held_before_db - 5.0) & (held_before_db > loud_db - 12.0)
     starts = lead + np.flatnonzero(below & ~np.concatenate([[False], below[:-1]]))
@@ -234,21 +234,27 @@ def decay_times_s(levels_db: NDArray[np.float64], loud_db: float) -> list[float]
         if start < done:
             continue
         held = smooth_db[start - lead : start - _LAG_HOPS]
-        deep = np.flatnonzero(smooth_db[start:] < np.median(held) - 35.0)
+        if np.ptp(held) >= 8.0:
+            continue
+        held_db = float(np.median(held))
+        deep = np.flatnonzero(smooth_db[start:] < held_db - 35.0)
         if not len(deep) or deep[0] < 2 * _SMOOTH_HOPS:
             continue
         fall = smooth_db[start : start + int(deep[0])]
         slope, unevenness_db = _straight_line(fall)
+        # The line must set out from where the note stopped, or this is a soft note that follows a loud one.
+        sets_out = float(fall.mean()) - 0.5 * slope * _HOP_S * len(fall) > held_db - 13.0
+        # One note's fall in a room is uneven by a few dB.
+        if not sets_out or unevenness_db >= 3.5:
+            continue
         half = len(fall) // 2
         early, late = _straight_line(fall[:half])[0], _straight_line(fall[half:])[0]
-        # The line must set out from where the note stopped, or this is a soft note that follows a loud one.
-        sets_out = float(fall.mean()) - 0.5 * slope * _HOP_S * len(fall) > np.median(held) - 13.0
         # A room goes on falling as it began; a stroke that dies and then stops falls off a cliff.
         expected_hops = -10.0 / slope / _HOP_S if slope < 0.0 else np.inf
         cliff = bool(np.any(smooth_db[start + len(fall) :][: int(min(0.5 * expected_hops, 1e6))] < fall[-1] - 10.0))
-        was_held = abs(_straight_line(held)[0]) < 0.25 * abs(slope) and np.ptp(held) < 8.0
-        # One note's fall in a room is uneven by a few dB; a fade of any usual shape is 4 times as steep at its end.
-        if was_held and sets_out and not cliff and unevenness_db < 3.5 and 1.9 * early < late < 0.4 * early:
+        was_held = abs(_straight_line(held)[0]) < 0.25 * abs(slope)
+        # A fade of any usual shape is 4 times as steep at its end.
+        if was_held and not cliff and 1.9 * early < late < 0.4 * early:
             decays_s.append(-60.0 / slope)
             done = start + len(fall)
     return decays_s

@@ -22,8 +22,9 @@ from timbre_match.intake.locking import spread_of_harmonics
 from timbre_match.intake.octave import settle_octave
 from timbre_match.intake.pitch import HOP_S, PitchTrack, track_pitch, without_rumble
 from timbre_match.intake.recording import Recording
-from timbre_match.intake.spectrum import BandLimited, Spectrum
+from timbre_match.intake.spectrum import BandLimited
 from timbre_match.intake.warp import Clock, refine_clock
+from timbre_match.threads import single_threaded
 
 NoteKind = Literal["held", "ringing"]
 
@@ -88,6 +89,7 @@ class HeldNote:
             object.__setattr__(self, name, array)
 
 
+@single_threaded
 def held_notes(
     recording: Recording,
     *,
@@ -118,12 +120,11 @@ def held_notes(
     NoHeldNoteError
         If no note is steady for long enough, or none of `notes` is there.
     """
-    spectrum = Spectrum(recording.samples, recording.sample_rate_hz)
-    samples, rate = spectrum.reduced()
+    samples, rate = recording.spectrum.reduced()
     calm = without_rumble(samples, rate)
     track = track_pitch(calm, rate)
     envelope = level_envelope(calm, rate)
-    signal = BandLimited(spectrum, _CLOCK_BAND_HZ, density=_CLOCK_DENSITY)
+    signal = BandLimited(recording.spectrum, _CLOCK_BAND_HZ, density=_CLOCK_DENSITY)
     wanted_hz = None if notes is None else [units.note_to_hz(name, a4_hz) for name in notes]
     settled = []
     for first, last in _segments(track, envelope):

@@ -6,6 +6,7 @@ import os
 import re
 import stat
 from dataclasses import dataclass
+from functools import cached_property
 from pathlib import Path
 
 import numpy as np
@@ -14,6 +15,8 @@ from numpy.typing import NDArray
 
 from timbre_match.errors import RecordingError
 from timbre_match.intake.faults import find_faults, sounding_seconds
+from timbre_match.intake.spectrum import Spectrum
+from timbre_match.threads import single_threaded
 
 LOWEST_RATE_HZ = 22_050
 HIGHEST_RATE_HZ = 192_000
@@ -29,7 +32,7 @@ _SIZE_UNKNOWN = 0x7FFF_FF00
 """Recorders that stream write a size near 2^31 or 2^32 because they do not know it yet; that promises nothing."""
 
 
-@dataclass(frozen=True, kw_only=True, slots=True, eq=False)
+@dataclass(frozen=True, kw_only=True, eq=False)
 class Recording:
     """One channel of a recording.
 
@@ -65,7 +68,13 @@ class Recording:
         samples.setflags(write=False)
         object.__setattr__(self, "samples", samples)
 
+    @cached_property
+    def spectrum(self) -> Spectrum:
+        """The spectrum of `samples`, for other rates and for reading between them: taken once, when first asked for."""
+        return Spectrum(self.samples, self.sample_rate_hz)
 
+
+@single_threaded
 def read_recording(path: str | Path, *, channel: int | None = None) -> Recording:
     """Read one channel of a recording and say what is wrong with it.
 

@@ -1,5 +1,6 @@
 """Faults that show in the long-term spectrum: mains hum, and the edge at which a lossy codec has cut the sound off."""
 
+import functools
 from dataclasses import dataclass
 
 import numpy as np
@@ -59,13 +60,18 @@ def long_term_spectrum(samples: NDArray[np.float64], sample_rate_hz: int) -> Lon
     """
     size = min(1 << round(np.log2(_FRAME_S * sample_rate_hz)), len(samples))
     starts = np.linspace(0, len(samples) - size, min(_FRAMES, max(1, 2 * len(samples) // size - 1))).astype(np.int64)
-    window = get_window("nuttall", size).astype(np.float32)
+    window = _nuttall(size)
     frames = np.lib.stride_tricks.sliding_window_view(samples, size)[starts].astype(np.float32)
     frames *= window
     spectra = scipy.fft.rfft(frames, axis=1)
     power = (spectra.real**2 + spectra.imag**2).sum(axis=0, dtype=np.float64)
     power *= 2.0 / (len(starts) * float(window.sum()) ** 2)
     return LongTermSpectrum(power=power, step_hz=sample_rate_hz / size)
+
+
+@functools.cache
+def _nuttall(size: int) -> NDArray[np.float32]:
+    return np.asarray(get_window("nuttall", size), dtype=np.float32)
 
 
 def find_low_pass(spectrum: LongTermSpectrum) -> float | None:

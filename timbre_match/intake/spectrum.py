@@ -79,9 +79,14 @@ class Spectrum:
         return padded
 
     def at_rate(
-        self, lowest_rate_hz: float, edge_hz: float, *, spline_order: int = 0
+        self,
+        lowest_rate_hz: float,
+        edge_hz: float,
+        *,
+        between_s: tuple[float, float] | None = None,
+        spline_order: int = 0,
     ) -> tuple[NDArray[np.float32], float, int]:
-        """The recording at another rate, band-limited.
+        """The recording, or a part of it, at another rate, band-limited.
 
         Parameters
         ----------
@@ -89,6 +94,8 @@ class Spectrum:
             The rate is this, or the next above it that the FFT likes.
         edge_hz : float
             What lies above fades out within a twentieth.
+        between_s : pair of float, optional
+            The part that is wanted, in seconds; somewhat more is given.
         spline_order : int
             Made to be the coefficients of a B-spline of this order; 0 for samples.
 
@@ -97,7 +104,7 @@ class Spectrum:
         samples : float32 array, shape (m,)
         rate_hz : float
         origin : int
-            Which of them stands for time 0.
+            Which of them stands for time 0; negative where the part begins later.
         """
         unit = round(1.0 / _MARGIN)
         wanted = lowest_rate_hz / self.sample_rate_hz * self.block
@@ -108,9 +115,18 @@ class Spectrum:
         gain = size / self.block * (0.5 + 0.5 * np.cos(np.pi * fade))
         if spline_order:
             gain *= np.sinc(place / size) ** -(spline_order + 1)
-        blocks = scipy.fft.irfft(self._bins[:, : len(place)] * gain.astype(np.float32), size, axis=1)
+        first, last = (0, len(self._bins)) if between_s is None else self._blocks_between(*between_s)
+        blocks = scipy.fft.irfft(self._bins[first:last, : len(place)] * gain.astype(np.float32), size, axis=1)
         margin = size // unit
-        return blocks[:, margin:-margin].ravel(), self.sample_rate_hz * size / self.block, margin
+        origin = margin - first * (size - 2 * margin)
+        return blocks[:, margin:-margin].ravel(), self.sample_rate_hz * size / self.block, origin
+
+    def _blocks_between(self, start_s: float, end_s: float) -> tuple[int, int]:
+        """First and last (exclusive) of the blocks that hold a part and a margin on either side."""
+        hop = self.block - 2 * self.margin
+        first = int(start_s * self.sample_rate_hz) // hop
+        last = int(end_s * self.sample_rate_hz + 2 * self.margin) // hop + 1
+        return max(0, first), min(len(self._bins), last)
 
     def reduced(self) -> tuple[NDArray[np.float64], float]:
         """The recording at a lower rate that holds every fundamental and its first harmonics.
@@ -141,20 +157,29 @@ class BandLimited:
         Edge of the band that is wanted, Hz: at most half the sample rate. What lies above fades out within a twentieth.
     density : float
         The multiple.
+    between_s : pair of float, optional
+        The part that will be read, in seconds; without it, all.
     """
 
-    def __init__(self, spectrum: Spectrum, highest_hz: float, *, density: float = 2.0) -> None:
+    def __init__(
+        self,
+        spectrum: Spectrum,
+        highest_hz: float,
+        *,
+        density: float = 2.0,
+        between_s: tuple[float, float] | None = None,
+    ) -> None:
         order = len(_SPLINE_PIECES) - 1
         self._coefficients, self._rate_hz, origin = spectrum.at_rate(
-            2.0 * density * highest_hz, highest_hz, spline_order=order
+            2.0 * density * highest_hz, highest_hz, between_s=between_s, spline_order=order
         )
         # Counted from the first of the six coefficients around a place.
         self._origin = origin - 2
         self.highest_hz = highest_hz
 
-    def at(self, time_s: NDArray[np.float64]) -> NDArray[np.float64]:
+    def at(self, time_s: NDArray[np.float64]) -> NDArray[np.float32]:
         """The signal at any times in seconds, same shape."""
-        values = np.empty(time_s.size)
+        values = np.empty(time_s.size, dtype=np.float32)
         taps = len(_SPLINE_PIECES)
         around, polynomial = np.empty((2, taps, min(_CHUNK, time_s.size)), dtype=np.float32)
         for start in range(0, time_s.size, _CHUNK):
@@ -165,11 +190,12 @@ class BandLimited:
             for tap in range(taps):
                 around[tap, :count] = self._coefficients[tap:].take(whole, mode="clip")
             np.matmul(_SPLINE_PIECES, around[:, :count], out=polynomial[:, :count])
-            value = polynomial[-1, :count]
-            for power in polynomial[-2::-1, :count]:
-                value *= fraction
+            value = values[start : start + count]
+            np.multiply(polynomial[-1, :count], fraction, out=value)
+            for power in polynomial[-2:0:-1, :count]:
                 value += power
-            values[start : start + count] = value
+                value *= fraction
+            value += polynomial[0, :count]
         return values.reshape(time_s.shape)
 
 

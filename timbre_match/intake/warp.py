@@ -20,6 +20,7 @@ _STEP_S = 0.01
 _SMOOTH_STEPS = 19
 _SMOOTH_S = 0.07
 _FEWEST_FOR_RIGID = 12
+_LOW_FIRST = (4, 16)
 _MOST_HARMONICS = 40
 
 
@@ -181,22 +182,24 @@ def _without_jitter(clock: Clock) -> Clock:
     return Clock(time_s, scipy.ndimage.convolve1d(raw, weight / weight.sum(), mode="nearest"))
 
 
-def _common_turn(coefficients: NDArray[np.complex128]) -> NDArray[np.float64]:
+def _common_turn(coefficients: NDArray[np.complexfloating]) -> NDArray[np.float64]:
     """Phase in radians by which the fundamental turns from each row of harmonics to the next, shape (rows - 1,)."""
     step = coefficients[1:] * coefficients[:-1].conj()
     k = np.arange(1, step.shape[1] + 1)
     turn = np.zeros(len(step))
-    weight = k * np.abs(step)
+    knows = k**2 * np.abs(step)
     # Low harmonics first: theirs cannot wrap while the clock is still far off.
-    for highest in (4, 16, _MOST_HARMONICS):
-        rest = np.einsum("ij,ij->i", weight[:, :highest], np.angle(turned_back(step[:, :highest], turn)))
-        turn += rest / (weight[:, :highest] @ k[:highest] + 1e-300)
-        if highest >= step.shape[1]:
-            break
+    for highest in _LOW_FIRST:
+        told = np.angle(turned_back(step[:, :highest], turn)) / k[:highest]
+        weight = knows[:, :highest]
+        turn += np.einsum("ij,ij->i", weight, told) / (weight.sum(axis=1) + 1e-300)
+    if step.shape[1] > _LOW_FIRST[-1]:
+        # What is left is small: the sine will do, which the score of a phase in white noise has in its place.
+        turn += turned_back(step, turn).imag @ k / (knows.sum(axis=1) + 1e-300)
     return turn
 
 
-def turned_back(harmonics: NDArray[np.complex128], turn: NDArray[np.float64]) -> NDArray[np.complex128]:
+def turned_back(harmonics: NDArray[np.complexfloating], turn: NDArray[np.float64]) -> NDArray[np.complexfloating]:
     """Harmonics 1, 2, ... (columns), each row turned back by the fundamental's `turn` in radians, shape (rows,)."""
     # Powers of one phasor cost a fifth of as many phasors.
     return harmonics * np.cumprod(np.broadcast_to(np.exp(-1j * turn)[:, None], harmonics.shape), axis=1)

@@ -38,7 +38,7 @@ class Blocks:
     square_gain: float
 
 
-def analyse_blocks(cycles: NDArray[np.float64], count: int, f0_hz: float) -> Blocks:
+def analyse_blocks(cycles: NDArray[np.floating], count: int, f0_hz: float) -> Blocks:
     """Coefficients of blocks of cycles by the analysis equation.
 
     Blocks last about 0.1 s under a Hann window and overlap by half; a note of few cycles is cut into rectangular
@@ -47,6 +47,7 @@ def analyse_blocks(cycles: NDArray[np.float64], count: int, f0_hz: float) -> Blo
     Parameters
     ----------
     cycles : array, shape (cycles, points)
+        The transform keeps their precision.
     count : int
         Number of harmonics wanted, below points / 2.
     f0_hz : float
@@ -59,7 +60,8 @@ def analyse_blocks(cycles: NDArray[np.float64], count: int, f0_hz: float) -> Blo
     length = len(window)
     hop = (max(1, per_block // 2) if per_block >= _FEWEST_FOR_HANN else per_block) * cycles.shape[1]
     frames = np.lib.stride_tricks.sliding_window_view(cycles.ravel(), length)[::hop]
-    spectra = scipy.fft.rfft(frames * (window / window.sum()), axis=1)[:, : (count + 1) * per_block]
+    weight = (window / window.sum()).astype(cycles.dtype)
+    spectra = scipy.fft.rfft(frames * weight, axis=1)[:, : (count + 1) * per_block]
     harmonics = spectra[:, per_block : count * per_block + 1 : per_block]
     total = (harmonics.real**2 + harmonics.imag**2).sum(axis=1)
     usual = total > np.median(total) * 10.0 ** (-_DIP_DB / 10.0)
@@ -67,11 +69,12 @@ def analyse_blocks(cycles: NDArray[np.float64], count: int, f0_hz: float) -> Blo
         usual[:] = True
     blocks = int(usual.sum())
     linear_gain, square_gain = _overlap_gains(window, hop, blocks)
-    parts = spectra.view(np.float64)
-    power = np.einsum("b,bk,bk->k", usual / blocks, parts, parts).reshape(-1, 2).sum(axis=1)
+    parts = spectra.view(cycles.dtype)
+    each = (usual / blocks).astype(cycles.dtype)
+    power = np.einsum("b,bk,bk->k", each, parts, parts).reshape(-1, 2).sum(axis=1, dtype=np.float64)
     floor_power, freedom = _floor(power, per_block, count, 1.0 / square_gain)
     return Blocks(
-        harmonics=harmonics[usual],
+        harmonics=harmonics[usual].astype(np.complex128),
         floor_power=floor_power,
         floor_freedom=freedom,
         linear_gain=linear_gain,
