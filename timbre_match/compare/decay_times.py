@@ -104,7 +104,7 @@ def gather_decays(profile: Profile, target: Target) -> DecayTimes | None:
             instrument=own.shape_of(place),
             target=other.shape_of(place),
         )
-        for place in np.flatnonzero(heard & ~usable)
+        for place in np.flatnonzero(heard & ~usable).tolist()
     )
     kept = np.flatnonzero(usable)
     if not kept.size:
@@ -239,9 +239,7 @@ def _curve_columns(octave: Array, span: tuple[float, float]) -> Array:
     return np.column_stack([np.ones(octave.size), octave, smooth])
 
 
-def _rows(
-    sides: list[_Side], note: IntArray, octave: Array, span: tuple[float, float]
-) -> tuple[Rows, slice, Array]:
+def _rows(sides: list[_Side], note: IntArray, octave: Array, span: tuple[float, float]) -> tuple[Rows, slice, Array]:
     """Rows of the model, where the curve's columns stand, and the degrees of freedom of each scatter, shape (n,)."""
     weights = _weights(sides)
     log_t60 = np.concatenate([one.log_t60 for one in sides])
@@ -252,10 +250,8 @@ def _rows(
     of_note = np.eye(notes)[note]
     # Columns: curve, notes, takes, and the notes of each take.
     matrix = np.column_stack([curve, of_note, *_hand_columns(weights, note, of_note)])
-    group = np.concatenate(
-        [[FIXED, FIXED], np.full(curve.shape[1] - 2, SMOOTH), np.full(notes, NOTE), np.full(take_count, TAKE)]
-        + [np.full(take_count * notes, TAKE_NOTE)]
-    )
+    sizes = {FIXED: 2, SMOOTH: curve.shape[1] - 2, NOTE: notes, TAKE: take_count, TAKE_NOTE: take_count * notes}
+    group = np.repeat(np.array(list(sizes), dtype=np.int64), list(sizes.values()))
     units = np.ones(group.size)
     units[:2] = _MEAN**2, _SLOPE**2
     contrasts, contrast_weights, places = _contrasts(sides, log_t60)
@@ -272,7 +268,7 @@ def _rows(
         contrast_matrix=contrast_matrix,
         # A harmonic's takes have one scatter, or the contrasts would not be independent of the mean.
         contrast_scatter=np.sum(contrast_weights**2 * unit[:, places], axis=0) if contrasts.size else np.ones(0),
-        group=group.astype(np.int64),
+        group=group,
         unit=units,
         instrument=np.arange(matrix.shape[1]) < ours,
     )
