@@ -1,8 +1,9 @@
 """Decay times of ringing notes, paired and laid out for the model of :mod:`timbre_match.compare.sustain_model`.
 
-A decay time counts where one number tells it: of plain decays, and of two-stage ones the time as a whole. What beats,
-or decays unclearly, is listed apart: its time hangs on where in the beat the note began, and two such times may differ
-by much with nothing changed. Times are natural logarithms of seconds; the scatter of a take is one of these.
+A single number tells a decay that is plain, and of a two-stage one the time as a whole. What beats or decays unclearly
+has a time that hangs on where in the beat the note began, and two such times may differ with nothing changed: it is
+listed apart, gets no verdict of its own, and bears on the notes and the curve with a larger error, as one of many.
+Times are natural logarithms of seconds; the scatter of a take is one of these.
 """
 
 from dataclasses import dataclass
@@ -26,6 +27,11 @@ SCATTER = 0.2
 """Scatter of a single log decay time from take to take, before any take is heard; measurement errors are set against
 it. No published figure for repeated plucks is known here: it is chosen wide, and learned where takes are repeated."""
 
+_UNEVEN = 0.3
+"""By how much a decay that beats or is unclear is more uncertain, as a standard deviation of its logarithm. In the
+recordings that were looked at, such times lay about a smooth course over frequency with 0.35 to 0.4, others with 0.3;
+where takes are repeated, their own scatter counts too."""
+
 _TAIL_DF = 6.0
 _MOST_DF = 1e3
 _LEAST_VARIANCES = 12
@@ -33,17 +39,21 @@ _LEAST_RATIO = 1e-4
 _MEAN, _SLOPE = 1.0, 0.2
 """Standard deviations of the shift of all decay times, and of their slope per octave: hardly a bound."""
 
-_USABLE: frozenset[DecayShape] = frozenset({"plain", "two-stage"})
+_SINGLE: frozenset[DecayShape] = frozenset({"plain", "two-stage"})
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
 class DecayTimes:
     """Paired decay times, (n,), and the rows that the model is fitted to.
 
+    All of them bear on the notes and the curve; those that are `single` get a verdict of their own.
+
     Attributes
     ----------
     notes : tuple of str
     note_index, k, freq_hz : arrays, shape (n,)
+    single : bool array, shape (n,)
+        Whether one number tells the decay, in at least half of each side's takes.
     scatter_df : array, shape (n,)
         Degrees of freedom with which each harmonic's scatter is known.
     rows : Rows
@@ -60,6 +70,7 @@ class DecayTimes:
     note_index: IntArray
     k: IntArray
     freq_hz: Array
+    single: NDArray[np.bool_]
     scatter_df: Array
     rows: Rows
     curve: slice
@@ -74,14 +85,14 @@ class DecayTimes:
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
 class _Side:
-    """One profile's takes over the paired harmonics, shape (takes, n); NaN where there is no usable time."""
+    """One profile's takes over the paired harmonics, shape (takes, n); NaN where there is no time."""
 
     log_t60: Array
     error: Array
 
 
 def gather_decays(profile: Profile, target: Target) -> DecayTimes | None:
-    """Pair the decay times of both sides; None where no harmonic has a usable one on both."""
+    """Pair the decay times of both sides; None where no harmonic is heard on both."""
     profiles = (profile, *target.members)
     takes = [[_notes_of_take(take) for take in one.takes] for one in profiles]
     sides = [set().union(*(set(take) for take in side)) for side in takes]
@@ -93,9 +104,9 @@ def gather_decays(profile: Profile, target: Target) -> DecayTimes | None:
     k = np.concatenate([np.arange(1, size[name] + 1) for name in names])
     stacks = [_stacked(side, names, size) for side in takes]
     own, other = stacks[0], _joined(stacks[1:])
-    usable = own.usable & other.usable
+    single = own.single & other.single
     freq_hz = np.sqrt(own.freq_hz * other.freq_hz)
-    heard = own.heard & other.heard
+    timed = own.timed & other.timed
     apart = tuple(
         SetApart(
             note=names[note[place]],
@@ -104,9 +115,9 @@ def gather_decays(profile: Profile, target: Target) -> DecayTimes | None:
             instrument=own.shape_of(place),
             target=other.shape_of(place),
         )
-        for place in np.flatnonzero(heard & ~usable).tolist()
+        for place in np.flatnonzero(timed & ~single).tolist()
     )
-    kept = np.flatnonzero(usable)
+    kept = np.flatnonzero(timed)
     if not kept.size:
         return None
     used, note_index = np.unique(note[kept], return_inverse=True)
@@ -119,6 +130,7 @@ def gather_decays(profile: Profile, target: Target) -> DecayTimes | None:
         note_index=note_index,
         k=k[kept],
         freq_hz=freq_hz[kept],
+        single=single[kept],
         scatter_df=df,
         rows=rows,
         curve=curve,
@@ -148,14 +160,15 @@ class _Stack:
     shapes: tuple[tuple[DecayShape | None, ...], ...]
 
     @property
-    def heard(self) -> NDArray[np.bool_]:
-        return np.asarray(np.isfinite(self.all_freq_hz).any(axis=0))
+    def timed(self) -> NDArray[np.bool_]:
+        """Where a decay time is known."""
+        return np.asarray(np.isfinite(self.log_t60).any(axis=0))
 
     @property
-    def usable(self) -> NDArray[np.bool_]:
-        """Where at least half of the takes that hear a harmonic have a time for it."""
-        count = np.isfinite(self.log_t60).sum(axis=0)
-        return np.asarray((count > 0) & (2 * count >= np.isfinite(self.all_freq_hz).sum(axis=0)))
+    def single(self) -> NDArray[np.bool_]:
+        """Where one number tells the decay, in at least half of the takes that have one."""
+        good = np.sum([[one in _SINGLE for one in row] for row in self.shapes], axis=0)
+        return np.asarray((good > 0) & (2 * good >= np.isfinite(self.log_t60).sum(axis=0)))
 
     @property
     def freq_hz(self) -> Array:
@@ -164,9 +177,9 @@ class _Stack:
         return np.asarray(np.where(count > 0, np.nansum(self.all_freq_hz, axis=0) / np.maximum(count, 1), 1.0))
 
     def shape_of(self, place: int) -> DecayShape:
-        """The shape that most takes show, the less usable one in a draw."""
+        """The shape that most takes show, the uneven one in a draw."""
         found: list[DecayShape] = [one for row in self.shapes if (one := row[place]) is not None]
-        return max(sorted(set(found), key=lambda one: one in _USABLE), key=found.count)
+        return max(sorted(set(found), key=lambda one: one in _SINGLE), key=found.count)
 
 
 def _joined(stacks: list[_Stack]) -> _Stack:
@@ -179,7 +192,7 @@ def _joined(stacks: list[_Stack]) -> _Stack:
 
 
 def _notes_of_take(take: Take) -> dict[str, _NoteDecays]:
-    """Decays by note name; of a note that was played more than once the mean of those that are usable."""
+    """Decays by note name; the mean of a note that was played more than once."""
     ringing: dict[str, list[Recipe]] = {}
     for recipe in take.notes:
         if recipe.ringing is not None:
@@ -197,20 +210,19 @@ def _mean_decays(recipes: list[Recipe]) -> _NoteDecays:
         for place, shape in enumerate(recipe.ringing.decay):
             if shape is None:
                 continue
-            freq[row, place] = recipe.freq_hz[place]
             t60_s, se_s = float(recipe.ringing.t60_s[place]), float(recipe.ringing.t60_se_s[place])
-            good = shape in _USABLE and np.isfinite(t60_s) and np.isfinite(se_s) and t60_s > 0
-            if good:
-                log_t60[row, place], error[row, place] = np.log(t60_s), se_s / t60_s
-            if shapes[place] is None or good:
+            if not (np.isfinite(se_s) and t60_s > 0):
+                continue
+            freq[row, place], log_t60[row, place] = recipe.freq_hz[place], np.log(t60_s)
+            error[row, place] = np.hypot(se_s / t60_s, 0.0 if shape in _SINGLE else _UNEVEN)
+            if shapes[place] in (None, *_SINGLE):
                 shapes[place] = shape
     count = np.maximum(np.isfinite(log_t60).sum(axis=0), 1)
-    heard = np.maximum(np.isfinite(freq).sum(axis=0), 1)
-    any_time, any_heard = np.isfinite(log_t60).any(axis=0), np.isfinite(freq).any(axis=0)
+    known = np.isfinite(log_t60).any(axis=0)
     return _NoteDecays(
-        freq_hz=np.where(any_heard, np.nansum(freq, axis=0) / heard, np.nan),
-        log_t60=np.where(any_time, np.nansum(log_t60, axis=0) / count, np.nan),
-        error=np.where(any_time, np.sqrt(np.nansum(error**2, axis=0)) / count, np.nan),
+        freq_hz=np.where(known, np.nansum(freq, axis=0) / count, np.nan),
+        log_t60=np.where(known, np.nansum(log_t60, axis=0) / count, np.nan),
+        error=np.where(known, np.sqrt(np.nansum(error**2, axis=0)) / count, np.nan),
         shapes=tuple(shapes),
     )
 

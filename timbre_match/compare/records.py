@@ -95,7 +95,7 @@ class SustainHarmonic:
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class SustainNote:
-    """Decay time of a ringing note as a whole: the mean over its compared harmonics, instrument over target."""
+    """Decay time of a ringing note as a whole: the mean over all its harmonics, instrument over target."""
 
     note: str
     ratio: Interval
@@ -116,7 +116,7 @@ class SustainPoint:
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class SustainRegion:
-    """A stretch of frequency where partials die sooner or later than the target's."""
+    """A stretch of frequency where partials die sooner or later than the target's, those set apart included."""
 
     low_hz: float
     high_hz: float

@@ -63,7 +63,7 @@ def compare_sustain(
     Returns
     -------
     sustain : Sustain or None
-        None where no harmonic has a decay time on both sides.
+        None where no harmonic rings on both sides.
     remarks : tuple of str
         What a reader of the result has to know.
     """
@@ -114,21 +114,23 @@ def _verdicts(value: Array, sd: Array, df: Array) -> tuple[Array, list[SustainVe
 
 
 def _harmonics(times: DecayTimes, fit: Fit) -> tuple[SustainHarmonic, ...]:
+    here = np.flatnonzero(times.single)
+    value, sd = fit.mean[here], fit.sd[here]
     # Only the scatter's share of the variance is known with few degrees of freedom (Satterthwaite 1946, *Biometrics
     # Bulletin* 2).
-    df = times.scatter_df / np.maximum(fit.scatter_share, 1e-3) ** 2
-    p, found = _verdicts(fit.mean, fit.sd, df)
+    df = times.scatter_df[here] / np.maximum(fit.scatter_share[here], 1e-3) ** 2
+    p, found = _verdicts(value, sd, df)
     reach = stats.t.ppf(0.975, df)
     return tuple(
         SustainHarmonic(
             note=times.notes[times.note_index[place]],
             k=int(times.k[place]),
             freq_hz=float(times.freq_hz[place]),
-            ratio=_ratio(float(fit.mean[place]), float(fit.sd[place]), float(reach[place])),
-            p=float(p[place]),
-            verdict=verdict,
+            ratio=_ratio(float(value[row]), float(sd[row]), float(reach[row])),
+            p=float(p[row]),
+            verdict=found[row],
         )
-        for place, verdict in enumerate(found)
+        for row, place in enumerate(here)
     )
 
 
@@ -185,13 +187,14 @@ def _remarks(sustain: Sustain) -> tuple[str, ...]:
     if sustain.source == "prior":
         remarks.append(
             "sustain, one take a side: how far decay times move from pluck to pluck is not measured here, and no "
-            f"published figure is known; a fifth for a single partial ({SCATTER:.0%}) is allowed for, and half or "
-            "twice that is held possible; two more takes a side would show this player's own"
+            f"published figure is known; {100 * SCATTER:.0f} % for a single partial are allowed for, and half or twice "
+            "that is held possible; two more takes a side would show this player's own"
         )
     if sustain.apart:
         every = len(sustain.apart) + len(sustain.harmonics)
         remarks.append(
             f"sustain: {len(sustain.apart)} of {every} partials beat or die unclearly on one side at least; they have "
-            "no single decay time, are listed apart, and are not called different"
+            "no single decay time, are listed apart and not called different, and bear on notes and regions with a "
+            "larger error"
         )
     return tuple(remarks)

@@ -10,7 +10,7 @@ from contextlib import contextmanager
 from functools import lru_cache
 from typing import TYPE_CHECKING, Any, Final, Literal
 
-from timbre_match.compare.records import Verdict
+from timbre_match.compare.records import SustainVerdict, Verdict
 from timbre_match.show.marks import plain
 from timbre_match.units import note_name, note_to_hz
 
@@ -26,9 +26,11 @@ QUIET: Final = "#8a8279"
 BAND: Final = "#d3cdc4"
 RANGE: Final = "#bdb4a8"
 PAPER: Final = "#fffdf8"
-VERDICT_COLOUR: Final[dict[Verdict, str]] = {
+VERDICT_COLOUR: Final[dict[Verdict | SustainVerdict, str]] = {
     "stronger": "#d2640f",
     "weaker": "#0f4c8a",
+    "longer": "#d2640f",
+    "shorter": "#0f4c8a",
     "alike": "#5f7d5c",
     "unsettled": "#857b71",
 }
@@ -133,17 +135,17 @@ def mark(label: str, **style: Any) -> "Line2D":
 
 
 @lru_cache(maxsize=len(VERDICT_COLOUR))
-def verdict_marker(verdict: Verdict) -> "Path | str":
+def verdict_marker(verdict: Verdict | SustainVerdict) -> "Path | str":
     """Return the shape of a verdict as a marker; the equals sign with room between its strokes, as no font has it."""
     from matplotlib.path import Path
 
     if verdict != "alike":
-        return {"stronger": "^", "weaker": "v", "unsettled": "$?$"}[verdict]
+        return {"stronger": "^", "weaker": "v", "longer": ">", "shorter": "<", "unsettled": "$?$"}[verdict]
     strokes = [[(-0.5, low), (0.5, low), (0.5, low + 0.2), (-0.5, low + 0.2), (-0.5, low)] for low in (-0.4, 0.2)]
     return Path.make_compound_path(*(Path(stroke, closed=True) for stroke in strokes))
 
 
-def verdict_mark(verdict: Verdict, label: str) -> "Line2D":
+def verdict_mark(verdict: Verdict | SustainVerdict, label: str) -> "Line2D":
     """Return the legend entry of a verdict, in its shape and colour."""
     return mark(
         label, marker=verdict_marker(verdict), color=VERDICT_COLOUR[verdict], markersize=10, markeredgewidth=0.4

@@ -16,13 +16,14 @@ from timbre_match.show import drawing
 from timbre_match.show.drawing import BAND, INK, QUIET, STEM, VERDICT_COLOUR, render
 from timbre_match.show.marks import SIGN, VERDICTS
 from timbre_match.show.recipes import recipe_figure
+from timbre_match.show.sustain import sustain_figure
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
     from matplotlib.lines import Line2D
 
-__all__ = ["body_curve_figure", "differences_figure", "recipe_figure", "render"]
+__all__ = ["body_curve_figure", "differences_figure", "recipe_figure", "render", "sustain_figure"]
 
 _LARGEST_SHOWN_DB: Final = 20.0
 _FULL_SIZE_DB: Final = 12.0
