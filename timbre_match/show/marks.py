@@ -5,14 +5,8 @@ from typing import Final
 
 from timbre_match.compare.records import Interval, SustainVerdict, Verdict
 
-SIGN: Final[dict[Verdict | SustainVerdict, str]] = {
-    "stronger": "▲",
-    "weaker": "▼",
-    "longer": "▶",
-    "shorter": "◀",
-    "alike": "=",
-    "unsettled": "?",
-}
+SIGN: Final[dict[Verdict, str]] = {"stronger": "▲", "weaker": "▼", "alike": "=", "unsettled": "?"}
+SUSTAIN_SIGN: Final[dict[SustainVerdict, str]] = {"longer": "▶", "shorter": "◀", "alike": "=", "unsettled": "?"}
 """The shape of a verdict as a character; every sign is in the font that matplotlib brings along."""
 
 VERDICTS: Final[tuple[Verdict, ...]] = ("stronger", "weaker", "alike", "unsettled")

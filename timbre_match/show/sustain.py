@@ -12,15 +12,14 @@ from typing import TYPE_CHECKING, Final
 import numpy as np
 from numpy.typing import NDArray
 
-from timbre_match.advise.wording import hertz
-from timbre_match.compare.records import Comparison, Sustain, SustainRegion
+from timbre_match.compare.records import Comparison, Sustain
 from timbre_match.compare.sustain import INAUDIBLE
 from timbre_match.compare.target import Target
 from timbre_match.measure.profile import Profile
 from timbre_match.measure.records import Ringing
 from timbre_match.show import drawing
-from timbre_match.show.drawing import BAND, INK, QUIET, STEM, VERDICT_COLOUR
-from timbre_match.show.marks import SIGN, SUSTAIN_VERDICTS
+from timbre_match.show.drawing import BAND, INK, QUIET, RANGE, STEM, SUSTAIN_COLOUR
+from timbre_match.show.marks import SUSTAIN_SIGN, SUSTAIN_VERDICTS
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -32,8 +31,6 @@ Array = NDArray[np.float64]
 _TIME_TICKS_S: Final = (0.05, 0.1, 0.2, 0.5, 1.0, 2.0, 5.0, 10.0, 20.0, 50.0)
 _RATIO_TICKS: Final = (0.1, 0.2, 0.33, 0.5, 0.75, 1.0, 1.4, 2.0, 3.0, 5.0, 10.0)
 _LEAST_REACH, _LARGEST_REACH = math.log(2.0), math.log(8.0)
-_LABEL_STEPS: Final = 3
-_LABEL_ROOM: Final = 2.0
 _SIGN_RISE: Final = 1.45
 """Factor of time by which a sign stands over the upper of its two decay times."""
 
@@ -88,8 +85,12 @@ def sustain_figure(profile: Profile, target: Target, comparison: Comparison) -> 
         drawing.frequency_axis(lower, *limits, labelled=True)
         for region in sustain.regions:
             for panel in panels:
-                panel.axvspan(region.low_hz, region.high_hz, color=VERDICT_COLOUR[region.verdict], alpha=0.12, zorder=0)
-        _name_regions(lower, sustain.regions)
+                panel.axvspan(region.low_hz, region.high_hz, color=SUSTAIN_COLOUR[region.verdict], alpha=0.12, zorder=0)
+        for region, height in zip(sustain.regions, drawing.label_heights(sustain.regions), strict=True):
+            drawing.region_label(
+                lower, region.low_hz, region.high_hz, height,
+                f"{SUSTAIN_SIGN[region.verdict]} × {region.ratio.value:.2f}", SUSTAIN_COLOUR[region.verdict],
+            )  # fmt: skip
         drawing.level_axis(figure, panels[:-1], "Time to fall by 60 dB (s)" if len(notes) > 1 else "60 dB (s)")
         drawing.title(
             figure,
@@ -126,7 +127,7 @@ def _draw_note(panel: "Axes", ours: _Decays, theirs: _Decays, note: str, sustain
     single = [one for one in sustain.harmonics if one.note == note]
     apart = [one.k - 1 for one in sustain.apart if one.note == note]
     clear = [one.k - 1 for one in single]
-    for places, ink, dot in ((apart, BAND, BAND), (clear, INK, STEM)):
+    for places, ink, dot in ((apart, RANGE, RANGE), (clear, INK, STEM)):
         both = [place for place in places if place < min(ours.t60_s.size, theirs.t60_s.size)]
         panel.vlines(
             ours.freq_hz[both],
@@ -150,7 +151,7 @@ def _draw_note(panel: "Axes", ours: _Decays, theirs: _Decays, note: str, sustain
         over_s = np.fmax(ours.t60_s[chosen], theirs.t60_s[chosen]) * _SIGN_RISE
         panel.scatter(
             ours.freq_hz[chosen], over_s, marker=drawing.verdict_marker(verdict), s=46,
-            color=VERDICT_COLOUR[verdict], linewidths=0, zorder=4, label=verdict,
+            color=SUSTAIN_COLOUR[verdict], linewidths=0, zorder=4, label=verdict,
         )  # fmt: skip
 
 
@@ -183,7 +184,7 @@ def _draw_curve(panel: "Axes", sustain: Sustain) -> None:
         panel.scatter(
             [one.freq_hz for one in chosen],
             np.clip([one.ratio.value for one in chosen], math.exp(-reach), math.exp(reach)),
-            marker=drawing.verdict_marker(verdict), s=34, color=VERDICT_COLOUR[verdict],
+            marker=drawing.verdict_marker(verdict), s=34, color=SUSTAIN_COLOUR[verdict],
             linewidths=0.3 if verdict == "unsettled" else 0.0, zorder=2.6, label=verdict,
         )  # fmt: skip
     panel.plot(freq_hz, [point.ratio.value for point in sustain.curve], color=INK, linewidth=3, zorder=3, label="curve")
@@ -197,21 +198,6 @@ def _draw_curve(panel: "Axes", sustain: Sustain) -> None:
     panel.set_yticks(ticks, [f"{tick:g}" for tick in ticks])
     panel.set_yticks([], minor=True)
     panel.set_ylabel("← shorter   × target   longer →")
-
-
-def _name_regions(panel: "Axes", regions: Sequence[SustainRegion]) -> None:
-    """Write size and stretch over each region, lower by a step where the label before it would be touched."""
-    step, last_middle_hz = 0, 0.0
-    for region in sorted(regions, key=lambda region: region.low_hz):
-        middle_hz = math.sqrt(region.low_hz * region.high_hz)
-        step = (step + 1) % _LABEL_STEPS if middle_hz < last_middle_hz * _LABEL_ROOM else 0
-        last_middle_hz = middle_hz
-        panel.text(
-            middle_hz, 0.985 - 0.115 * step,
-            f"{SIGN[region.verdict]} × {region.ratio.value:.2f}\n{hertz(region.low_hz)}–{hertz(region.high_hz)} Hz",
-            transform=panel.get_xaxis_transform(), ha="center", va="top", fontsize=11, fontweight="bold",
-            color=VERDICT_COLOUR[region.verdict], linespacing=1.15, zorder=5, label="region",
-        )  # fmt: skip
 
 
 def _reach(sustain: Sustain) -> float:
@@ -230,6 +216,7 @@ def _handles(sustain: Sustain) -> list["Line2D"]:
         *(drawing.verdict_mark(verdict, f"{verdict} ({counts[verdict]})") for verdict in SUSTAIN_VERDICTS),
         drawing.mark("instrument", marker="o", color=STEM, markersize=6),
         drawing.mark("target", marker="_", markersize=11, markeredgewidth=2.2),
-        drawing.mark(f"no single time ({len(sustain.apart)})", marker="o", color=BAND, markersize=6),
-        drawing.mark("curve, 95 % sure", linestyle="-", linewidth=3),
+        drawing.mark(f"no single time ({len(sustain.apart)})", marker="o", color=RANGE, markersize=6),
+        drawing.mark("95 % sure at each frequency", marker="s", markersize=12, color=QUIET, alpha=0.6),
+        drawing.mark("95 % sure for the whole curve", marker="s", markersize=12, color=BAND),
     ]

@@ -23,11 +23,18 @@ from timbre_match.intake.notes import HeldNote
 from timbre_match.intake.recording import Recording
 from timbre_match.measure.profile import Profile
 from timbre_match.measure.recipe import Recipe
-from timbre_match.show.marks import SIGN, SUSTAIN_VERDICTS, VERDICTS, plain, ratio_interval, signed_interval
+from timbre_match.show.marks import (
+    SIGN,
+    SUSTAIN_SIGN,
+    SUSTAIN_VERDICTS,
+    VERDICTS,
+    plain,
+    ratio_interval,
+    signed_interval,
+)
 
-_COLOUR: Final[dict[Verdict | SustainVerdict, str]] = {
-    "stronger": "yellow",
-    "weaker": "cyan",
+_COLOUR: Final[dict[Verdict, str]] = {"stronger": "yellow", "weaker": "cyan", "alike": "green", "unsettled": "default"}
+_SUSTAIN_COLOUR: Final[dict[SustainVerdict, str]] = {
     "longer": "yellow",
     "shorter": "cyan",
     "alike": "green",
@@ -250,7 +257,7 @@ def _sustain(sustain: Sustain | None) -> list[RenderableType]:
         return []
     parts: list[RenderableType] = [Text(), Text("Sustain: how long partials ring, against the target", "bold")]
     for region in sorted(sustain.regions, key=lambda region: region.low_hz):
-        parts.append(Text.assemble(_sign(region.verdict), f" {sustain_in_words(region)}."))
+        parts.append(Text.assemble(_sustain_sign(region.verdict), f" {sustain_in_words(region)}."))
     if not sustain.regions:
         parts.append(Text("No stretch of frequency is known to ring longer or shorter."))
     counts = Counter(one.verdict for one in sustain.harmonics)
@@ -258,7 +265,9 @@ def _sustain(sustain: Sustain | None) -> list[RenderableType]:
     parts.append(Text(f"{counted(len(sustain.harmonics), 'single partial')}: {told}. {_INAUDIBLE}"))
     table = _table("", "note", "decay time, times the target's", "partials", left=("", "note"))
     for note in sustain.notes:
-        table.add_row(_sign(note.verdict), Text(plain(note.note, 8)), ratio_interval(note.ratio), str(note.harmonics))
+        table.add_row(
+            _sustain_sign(note.verdict), Text(plain(note.note, 8)), ratio_interval(note.ratio), str(note.harmonics)
+        )
     return [*parts, Text(), Text("Sustain of each note", "bold"), table]
 
 
@@ -286,8 +295,12 @@ def _heading(name: str, detail: str) -> Text:
     return Text.assemble((name, "bold"), f"  {detail}" if detail else "")
 
 
-def _sign(verdict: Verdict | SustainVerdict) -> Text:
+def _sign(verdict: Verdict) -> Text:
     return Text(SIGN[verdict], _COLOUR[verdict])
+
+
+def _sustain_sign(verdict: SustainVerdict) -> Text:
+    return Text(SUSTAIN_SIGN[verdict], _SUSTAIN_COLOUR[verdict])
 
 
 def _table(*columns: str, left: tuple[str, ...]) -> Table:
