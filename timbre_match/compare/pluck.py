@@ -41,6 +41,7 @@ _BETTER = 2.0
 """Taking combs out must make the takes' recipes likelier to be one by this much (natural logarithm)."""
 _NULL = 0.03
 """Share of its full power at which a harmonic is too near to a null: 15 dB down."""
+_NO_FLOOR_DB = 300.0
 _SEED = 1
 _LISTED = 6
 
@@ -231,7 +232,7 @@ def _masked(recipe: Recipe, nulls: NDArray[np.bool_]) -> Recipe:
         level_db=np.where(away, np.nan, recipe.level_db),
         se_db=np.where(away, np.nan, recipe.se_db),
         phase_rad=np.where(away, np.nan, recipe.phase_rad),
-        floor_db=np.where(away, np.inf, recipe.floor_db),
+        floor_db=np.where(away, _NO_FLOOR_DB, recipe.floor_db),
     )
 
 
