@@ -18,7 +18,7 @@ from timbre_match.compare.records import Comparison, Interval, SustainRegion
 from timbre_match.compare.target import as_target
 from timbre_match.show.figures import render, sustain_figure
 from timbre_match.show.marks import SUSTAIN_VERDICTS, ratio_interval
-from timbre_match.show.tables import as_text, comparison_summary
+from timbre_match.show.tables import as_text, comparison_summary, profile_summary
 
 USED = NOTES[:4]
 INSTRUMENT = plucked(1, decay=bell(400.0, -0.8, 0.8), notes=USED, uneven=0.2)
@@ -75,13 +75,12 @@ def test_the_table_fits_its_window(found: Comparison, width: int) -> None:
 def test_every_partial_is_drawn_once_with_the_takes_mean(found: Comparison) -> None:
     sustain = found.sustain
     assert sustain is not None
+    names = [one.note for one in sustain.harmonics] + [one.note for one in sustain.apart]
     *panels, lower = sustain_figure(INSTRUMENT, TARGET, found).axes
     assert len(panels) == len(USED)
     for panel, note in zip(panels, reversed(sustain.notes), strict=True):
         drawn = points(panel, "instrument")
-        assert len(drawn) == [*(one.note for one in sustain.harmonics), *(one.note for one in sustain.apart)].count(
-            note.note
-        )
+        assert len(drawn) == names.count(note.note)
         recipes = [recipe for take in INSTRUMENT.takes for recipe in take.notes if recipe.note == note.note]
         times = [recipe.ringing.t60_s for recipe in recipes if recipe.ringing is not None]
         assert sorted(drawn[:, 1]) == pytest.approx(sorted(np.exp(np.mean(np.log(times), axis=0))))
@@ -110,3 +109,14 @@ def test_files_are_valid_and_the_same_every_time(found: Comparison) -> None:
 def test_a_comparison_of_held_notes_has_no_such_picture() -> None:
     with pytest.raises(ValueError, match="no ringing notes"):
         sustain_figure(invented.profile(), invented.target(), invented.comparison())
+
+
+def test_the_table_of_a_profile_tells_decay_and_inharmonicity_of_ringing_notes_alone() -> None:
+    text = as_text([profile_summary(INSTRUMENT)], 100)
+    note = INSTRUMENT.takes[0].notes[0]
+    assert note.ringing is not None
+    strongest = int(np.argmax(note.level_db))
+    row = next(line for line in text.splitlines() if line.startswith(note.note))
+    assert row.split()[-2:] == [f"{note.ringing.t60_s[strongest]:.1f}", f"{1e6 * note.ringing.inharmonicity_b:.0f}"]
+    assert "rings" in text
+    assert "rings" not in as_text([profile_summary(invented.profile())], 100)

@@ -45,6 +45,10 @@ Array = NDArray[np.float64]
 
 DEFAULT_MARGIN_DB = 3.0
 
+_WITHOUT_CONTROL = (
+    "sustain, pluck points and inharmonicity are compared without the control: microphone and room hardly change them, "
+    "other strings do",
+)
 _SEED = 20261
 _Z95 = 1.959963984540054
 
@@ -135,7 +139,8 @@ def compare(
         + _remarks(harmonics)
         + string_remarks
         + plucks.remarks
-        + sustain_remarks,
+        + sustain_remarks
+        + (_WITHOUT_CONTROL if control is not None and sustain is not None else ()),
         sustain=sustain,
         pluck=plucks.notes,
         strings=strings,

@@ -106,7 +106,9 @@ def profile_summary(profile: Profile, warnings: Sequence[str] = ()) -> Renderabl
         files = ", ".join(plain(source.file, 40) for source in take.recordings[:3])
         more = f" and {len(take.recordings) - 3} more" if len(take.recordings) > 3 else ""
         parts.append(_heading(f"Take {number}", files + more))
-        table = _table("note", "Hz", "cents", "cycles", "heard", "error dB", left=("note",))
+        rings = any(recipe.ringing is not None for recipe in take.notes)
+        ringing = ("rings s", "B") if rings else ()
+        table = _table("note", "Hz", "cents", "cycles", "heard", "error dB", *ringing, left=("note",))
         for recipe in take.notes:
             table.add_row(
                 Text(plain(recipe.note, 8)),
@@ -115,9 +117,13 @@ def profile_summary(profile: Profile, warnings: Sequence[str] = ()) -> Renderabl
                 str(recipe.cycles),
                 f"{int(recipe.heard.sum())} of {recipe.k.size}",
                 _typical_error(recipe),
+                *(_ringing_cells(recipe) if rings else ()),
             )
         parts.append(table)
-    parts.append(Text("heard: harmonics above the noise. error: the middle standard error of their levels.", "dim"))
+    legend = "heard: harmonics above the noise. error: the middle standard error of their levels."
+    if any(recipe.ringing is not None for take in profile.takes for recipe in take.notes):
+        legend += " rings: time in which the strongest partial falls by 60 dB. B: inharmonicity, in millionths."
+    parts.append(Text(legend, "dim"))
     return Group(*parts, *_remarks(warnings))
 
 
@@ -275,6 +281,15 @@ def _typical_error(recipe: Recipe) -> str:
     errors = recipe.se_db[recipe.heard]
     middle = float(np.median(errors)) if errors.size else math.nan
     return f"{middle:.2f}" if math.isfinite(middle) else "·"
+
+
+def _ringing_cells(recipe: Recipe) -> tuple[str, str]:
+    """Decay time of the strongest partial, and inharmonicity; dots where there is none."""
+    ringing = recipe.ringing
+    if ringing is None or not recipe.heard.any():
+        return "·", "·"
+    time_s = float(ringing.t60_s[int(np.nanargmax(recipe.level_db))])
+    return f"{time_s:.1f}" if math.isfinite(time_s) else "·", f"{1e6 * ringing.inharmonicity_b:.0f}"
 
 
 def _cautions_once(suggestions: Sequence[Suggestion]) -> list[str]:
