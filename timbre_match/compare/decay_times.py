@@ -32,6 +32,10 @@ _UNEVEN = 0.3
 recordings that were looked at, such times lay about a smooth course over frequency with 0.35 to 0.4, others with 0.3;
 where takes are repeated, their own scatter counts too."""
 
+_HEARD_HZ, _HEARD_S = (10.0, 40_000.0), (1e-3, 1e3)
+_LARGEST_ERROR = 3.0
+"""A time beyond these comes from no measurement; an error of a factor of 20 says nothing, and more says no less."""
+
 _TAIL_DF = 6.0
 _MOST_DF = 1e3
 _LEAST_VARIANCES = 12
@@ -210,11 +214,14 @@ def _mean_decays(recipes: list[Recipe]) -> _NoteDecays:
         for place, shape in enumerate(recipe.ringing.decay):
             if shape is None:
                 continue
-            t60_s, se_s = float(recipe.ringing.t60_s[place]), float(recipe.ringing.t60_se_s[place])
-            if not (np.isfinite(se_s) and t60_s > 0):
+            freq_hz, t60_s = float(recipe.freq_hz[place]), float(recipe.ringing.t60_s[place])
+            se_s = float(recipe.ringing.t60_se_s[place])
+            inside = _HEARD_HZ[0] < freq_hz < _HEARD_HZ[1] and _HEARD_S[0] < t60_s < _HEARD_S[1]
+            if not (inside and np.isfinite(se_s)):
                 continue
-            freq[row, place], log_t60[row, place] = recipe.freq_hz[place], np.log(t60_s)
-            error[row, place] = np.hypot(se_s / t60_s, 0.0 if shape in _SINGLE else _UNEVEN)
+            freq[row, place], log_t60[row, place] = freq_hz, np.log(t60_s)
+            relative = min(se_s / t60_s, _LARGEST_ERROR)
+            error[row, place] = np.hypot(relative, 0.0 if shape in _SINGLE else _UNEVEN)
             if shapes[place] in (None, *_SINGLE):
                 shapes[place] = shape
     count = np.maximum(np.isfinite(log_t60).sum(axis=0), 1)

@@ -110,14 +110,19 @@ class _Sums:
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
 class _Solution:
+    """Predictions at given variances; `factor` is the lower Cholesky factor of the effects' precision."""
+
     effect: Array
-    root: Array
-    covariance: Array
+    factor: Array
     effect_variance: Array
     own: float
     noise: Array
     log_density: float
-    slope: Array
+
+    @property
+    def root(self) -> Array:
+        """A matrix whose product with its transpose is the covariance of the effects."""
+        return np.asarray(linalg.solve_triangular(self.factor, np.eye(len(self.factor)), lower=True).T)
 
 
 def fit(rows: Rows, prior: Prior, rng: np.random.Generator, *, draws_each: int = 12) -> Fit:
@@ -132,27 +137,30 @@ def fit(rows: Rows, prior: Prior, rng: np.random.Generator, *, draws_each: int =
         Draws of the effects at each draw of the variances.
     """
     sums = _summed(rows)
-    solutions = [_solve(rows, sums, prior, theta) for theta in _draw_parameters(rows, sums, prior, rng)]
     reach = rows.matrix * rows.instrument
-    means, variances, shares, effects, harmonics = [], [], [], [], []
-    for one in solutions:
+    means, variances, shares, counts, effects, harmonics = [], [], [], [], [], []
+    for theta, count in _draw_parameters(rows, sums, prior, rng):
+        one = _solve(rows, sums, prior, theta)
+        root = one.root
         rho = one.own / (one.own + one.noise)
         # The own deviation takes its share of what the effects leave: instrument part + rho (value - everything).
         through = reach - rho[:, None] * rows.matrix
         lone = rho * one.noise
-        spread = through @ one.root
+        spread = through @ root
+        counts.append(count)
         means.append(through @ one.effect + rho * rows.value)
         variances.append(np.einsum("np,np->n", spread, spread) + lone)
         shares.append(rho**2 * one.noise / np.maximum(variances[-1], 1e-300))
-        drawn = one.effect + rng.standard_normal((draws_each, one.effect.size)) @ one.root.T
+        size = count * draws_each
+        drawn = one.effect + rng.standard_normal((size, one.effect.size)) @ root.T
         effects.append(drawn)
-        lone_draws = np.sqrt(lone) * rng.standard_normal((draws_each, lone.size))
-        harmonics.append(drawn @ through.T + rho * rows.value + lone_draws)
-    mean = np.mean(means, axis=0)
+        harmonics.append(drawn @ through.T + rho * rows.value + np.sqrt(lone) * rng.standard_normal((size, lone.size)))
+    mean = np.average(means, axis=0, weights=counts)
+    between = np.average((np.array(means) - mean) ** 2, axis=0, weights=counts)
     return Fit(
         mean=mean,
-        sd=np.sqrt(np.mean(variances, axis=0) + np.var(means, axis=0)),
-        scatter_share=np.clip(np.mean(shares, axis=0), 0.0, 1.0),
+        sd=np.sqrt(np.average(variances, axis=0, weights=counts) + between),
+        scatter_share=np.clip(np.average(shares, axis=0, weights=counts), 0.0, 1.0),
         effects=np.concatenate(effects),
         harmonics=np.concatenate(harmonics),
     )
@@ -179,55 +187,64 @@ def _summed(rows: Rows) -> _Sums:
 
 
 def _solve(rows: Rows, sums: _Sums, prior: Prior, theta: Array) -> _Solution:
-    """Predictions, log posterior density and its slope at the log standard deviations `theta`."""
+    """Predictions and log posterior density at the log standard deviations `theta`."""
     variance = np.exp(2.0 * theta)
     own, common = float(variance[OWN]), float(variance[SCATTER])
     noise = common * rows.scatter
     total = own + noise
     effect_variance = np.where(rows.group == FIXED, 1.0, variance[rows.group]) * rows.unit
     pulled = rows.matrix / total[:, None]
-    system = pulled.T @ rows.matrix + sums.square / common + np.diag(1.0 / effect_variance)
-    factor = np.linalg.cholesky(system)
-    root = linalg.solve_triangular(factor, np.eye(len(system)), lower=True).T
-    covariance = root @ root.T
+    factor: Array = np.linalg.cholesky(pulled.T @ rows.matrix + sums.square / common + np.diag(1.0 / effect_variance))
     right = pulled.T @ rows.value + sums.cross / common
-    effect = covariance @ right
-    count = rows.contrast.size
+    effect = linalg.cho_solve((factor, True), right, check_finite=False)
     log_det = (
         np.sum(np.log(total))
-        + count * np.log(common)
+        + rows.contrast.size * np.log(common)
         + sums.log_scatter
         + 2.0 * np.sum(np.log(np.diag(factor)))
         + np.sum(np.log(effect_variance))
     )
     square = float(np.sum(rows.value**2 / total)) + sums.value / common - float(right @ effect)
     away = (theta - prior.centre) / prior.sd
-    left = (rows.value - rows.matrix @ effect) ** 2 + np.einsum("np,np->n", rows.matrix @ covariance, rows.matrix)
-    tension = (left / total - 1.0) / total
-    excess = (effect**2 + np.diag(covariance)) / effect_variance - 1.0
-    slope = np.array([np.sum(excess[rows.group == place]) for place in range(6)])
-    slope[OWN] = own * np.sum(tension)
-    contrasts = sums.value - 2.0 * effect @ sums.cross + effect @ sums.square @ effect
-    contrasts += np.sum(sums.square * covariance)
-    slope[SCATTER] = np.sum(tension * noise) + contrasts / common - count
     return _Solution(
         effect=effect,
-        root=root,
-        covariance=covariance,
+        factor=factor,
         effect_variance=effect_variance,
         own=own,
         noise=noise,
         log_density=-0.5 * (float(log_det) + square + float(away @ away)),
-        slope=slope - away / prior.sd,
     )
 
 
-def _draw_parameters(rows: Rows, sums: _Sums, prior: Prior, rng: np.random.Generator) -> Array:
-    """Draws of the log standard deviations, shape (draws, 6): a normal about the maximum, weighted and drawn anew."""
+def _slope(rows: Rows, sums: _Sums, prior: Prior, theta: Array, one: _Solution) -> Array:
+    """Return the derivative of the log posterior density by each log standard deviation, shape (6,).
+
+    For a group of p independent effects u with variance v it is (u'u + tr C) / v - p; C is their posterior covariance.
+    """
+    root, effect = one.root, one.effect
+    total = one.own + one.noise
+    spread = rows.matrix @ root
+    left = (rows.value - rows.matrix @ effect) ** 2 + np.einsum("np,np->n", spread, spread)
+    tension = (left / total - 1.0) / total
+    covariance = root @ root.T
+    excess = (effect**2 + np.diag(covariance)) / one.effect_variance - 1.0
+    slope = np.array([np.sum(excess[rows.group == place]) for place in range(6)])
+    slope[OWN] = one.own * np.sum(tension)
+    contrasts = sums.value - 2.0 * effect @ sums.cross + effect @ sums.square @ effect
+    contrasts += np.sum(sums.square * covariance)
+    slope[SCATTER] = np.sum(tension * one.noise) + contrasts / np.exp(2.0 * theta[SCATTER]) - rows.contrast.size
+    return np.asarray(slope - (theta - prior.centre) / prior.sd**2)
+
+
+def _draw_parameters(rows: Rows, sums: _Sums, prior: Prior, rng: np.random.Generator) -> list[tuple[Array, int]]:
+    """Draws of the log standard deviations, shape (6,), each with how often it was drawn.
+
+    From a normal distribution about the maximum, weighted by what the density is over that, and drawn anew.
+    """
 
     def objective(theta: Array) -> tuple[float, Array]:
         one = _solve(rows, sums, prior, theta)
-        return -one.log_density, -one.slope
+        return -one.log_density, -_slope(rows, sums, prior, theta, one)
 
     reach = 4.0 * prior.sd
     found = optimize.minimize(
@@ -248,8 +265,10 @@ def _draw_parameters(rows: Rows, sums: _Sums, prior: Prior, rng: np.random.Gener
     spread = vectors * (_WIDER / np.sqrt(np.maximum(values, 1.0 / np.max(prior.sd) ** 2)))
     steps = rng.standard_normal((_DRAWS, centre.size))
     tried = centre + steps @ spread.T
-    weight = np.array([-objective(theta)[0] for theta in tried]) + 0.5 * np.sum(steps**2, axis=1)
+    weight = np.array([_solve(rows, sums, prior, theta).log_density for theta in tried])
+    weight += 0.5 * np.sum(steps**2, axis=1)
     share = np.cumsum(np.exp(weight - np.max(weight)))
     # Systematic resampling: as even as draws can be.
     places = np.searchsorted(share, share[-1] * (np.arange(_DRAWS) + rng.uniform()) / _DRAWS)
-    return np.asarray(tried[np.minimum(places, _DRAWS - 1)])
+    kept, counts = np.unique(np.minimum(places, _DRAWS - 1), return_counts=True)
+    return [(tried[place], int(count)) for place, count in zip(kept, counts, strict=True)]
