@@ -130,14 +130,20 @@ def test_a_dead_note_is_found_as_a_note() -> None:
 
 
 def test_a_shift_of_one_take_is_the_hand_and_not_the_instrument() -> None:
-    # One of three takes dies in half the time, all of it: that is no evidence about single partials.
-    whole = plucked(7)
-    damped = replace(whole, takes=(plucked(8, decay=lambda f: nothing(f) - 0.7, takes=1).takes[0], *whole.takes[1:]))
-    found = sustain_of(damped, plucked(9))
-    assert found.regions == ()
-    wide = found.curve[0].ratio
-    calm = sustain_of(whole, plucked(9)).curve[0].ratio
-    assert math.log(wide.high / wide.low) > 1.3 * math.log(calm.high / calm.low)
+    # One of three takes dies in half the time, all of it: that is no evidence about the instrument.
+    regions, widths, calm_widths = 0, [], []
+    for seed in range(8):
+        whole = plucked(700 + seed, notes=NOTES[:6])
+        (muted,) = plucked(800 + seed, decay=lambda f: nothing(f) - 0.7, takes=1, notes=NOTES[:6]).takes
+        target = plucked(900 + seed, notes=NOTES[:6])
+        found = sustain_of(replace(whole, takes=(muted, *whole.takes[1:])), target)
+        regions += bool(found.regions)
+        for one, kept in ((found, widths), (sustain_of(whole, target), calm_widths)):
+            middle = one.curve[len(one.curve) // 2].ratio
+            kept.append(math.log(middle.high / middle.low))
+    # At 5 % a comparison, two or more of eight happen in one of 17 such tests.
+    assert regions <= 1
+    assert np.mean(widths) > 1.3 * np.mean(calm_widths)
 
 
 def test_beating_partials_stand_apart_and_have_no_verdict() -> None:

@@ -45,13 +45,14 @@ def _prior() -> sustain_model.Prior:
     centre, sd = np.zeros(6), np.zeros(6)
     for place, value, log_sd in (
         (sustain_model.SCATTER, SCATTER, 0.6),
-        (TAKE_NOTE, 0.12, 0.7),
+        (TAKE_NOTE, 0.12, 0.6),
         (TAKE, 0.1, 0.6),
-        (NOTE, 0.15, 0.8),
-        (SMOOTH, 0.2, 0.7),
-        (OWN, 0.12, 0.8),
+        (NOTE, 0.2, 0.7),
+        (SMOOTH, 0.35, 0.6),
+        (OWN, 0.15, 0.7),
     ):
-        centre[place], sd[place] = math.log(value), log_sd
+        # A log-normal standard deviation about this centre has the value's square as its mean variance.
+        centre[place], sd[place] = math.log(value) - log_sd**2, log_sd
     return sustain_model.Prior(centre=centre, sd=sd)
 
 

@@ -194,7 +194,8 @@ def _solve(rows: Rows, sums: _Sums, prior: Prior, theta: Array) -> _Solution:
     total = own + noise
     effect_variance = np.where(rows.group == FIXED, 1.0, variance[rows.group]) * rows.unit
     pulled = rows.matrix / total[:, None]
-    factor: Array = np.linalg.cholesky(pulled.T @ rows.matrix + sums.square / common + np.diag(1.0 / effect_variance))
+    system: Array = pulled.T @ rows.matrix + sums.square / common + np.diag(1.0 / effect_variance)
+    factor = np.asarray(np.linalg.cholesky(system), dtype=np.float64)
     right = pulled.T @ rows.value + sums.cross / common
     effect = linalg.cho_solve((factor, True), right, check_finite=False)
     log_det = (
