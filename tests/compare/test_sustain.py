@@ -131,7 +131,9 @@ def test_a_dead_note_is_found_as_a_note() -> None:
 
 def test_a_shift_of_one_take_is_the_hand_and_not_the_instrument() -> None:
     # One of three takes dies in half the time, all of it: that is no evidence about the instrument.
-    regions, widths, calm_widths = 0, [], []
+    regions = 0
+    widths: list[float] = []
+    calm_widths: list[float] = []
     for seed in range(8):
         whole = plucked(700 + seed, notes=NOTES[:6])
         (muted,) = plucked(800 + seed, decay=lambda f: nothing(f) - 0.7, takes=1, notes=NOTES[:6]).takes

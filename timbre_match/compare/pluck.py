@@ -282,8 +282,8 @@ def _remarks(notes: list[PluckNote]) -> tuple[str, ...]:
         )
     if untold:
         remarks.append(
-            f"where the string was plucked cannot be told from the recipes of {len(untold)} of {len(notes)} notes; "
-            "nothing is taken out there, so keep to one pluck point on both sides"
+            f"where the string was plucked cannot be told on both sides of {len(untold)} of {len(notes)} notes; "
+            "nothing is taken out there, so keep to one pluck point"
         )
     return tuple(remarks)
 
