@@ -11,15 +11,12 @@ from timbre_match.demo.body import Body
 from timbre_match.demo.bowed_string import bridge_force, harmonic_sum
 from timbre_match.demo.draws import Draws
 from timbre_match.demo.player import Stroke, TakeHabit, draw_note_offsets_db, draw_stroke, draw_take_habit
-from timbre_match.demo.room import heard_in_room, microphone_noise, quantise, room_response
+from timbre_match.demo.room import SAMPLE_RATE_HZ, heard_in_room, microphone_noise, quantise, workshop_room
 from timbre_match.demo.workshop import NOTES, STAGES, TAKES, Stage, WrittenNote, body_of, file_name
 from timbre_match.errors import OutputError
 from timbre_match.units import note_to_hz
 
-SAMPLE_RATE_HZ = 44_100
-
 _SEED = 1
-_ROOM_KEY = 100
 _HIGHEST_SHARE_OF_RATE = 0.45
 _CONTROL_STEP = 128
 _BOW_NOISE_DB = -50.0
@@ -86,8 +83,7 @@ def render_take(stage: Stage, take: int) -> NDArray[np.int16]:
             pieces.append(np.zeros(round(pause_s * SAMPLE_RATE_HZ)))
         pieces.append(_played(written, habit, body, draws))
     pieces.append(np.zeros(round(_TAIL_S * SAMPLE_RATE_HZ)))
-    room = room_response(SAMPLE_RATE_HZ, Draws(_SEED, _ROOM_KEY))
-    sound = 10.0 ** (_MICROPHONE_GAIN_DB / 20.0) * heard_in_room(np.concatenate(pieces), room)
+    sound = 10.0 ** (_MICROPHONE_GAIN_DB / 20.0) * heard_in_room(np.concatenate(pieces), workshop_room())
     sound += microphone_noise(len(sound), SAMPLE_RATE_HZ, draws)
     return quantise(sound, draws)
 
