@@ -9,6 +9,12 @@ import pytest
 
 from tests.cli.outputs import assert_comparison_keys, assert_figures, content
 from tests.command_line import Ended, run_process
+from timbre_match.demo.plucked_workshop import (
+    FINCH_AFTER_THE_WINTER,
+    PLUCKED_NOTES,
+    PLUCKED_STAGES,
+    PLUCKED_TAKES,
+)
 from timbre_match.demo.workshop import NOTES, STAGES, WREN_IN_THE_WHITE, Stage, true_difference_db
 from timbre_match.keep.files import load_comparison, load_profile
 
@@ -25,8 +31,13 @@ def test_demo_writes_everything(demo: tuple[Ended, Path]) -> None:
     ended, folder = demo
     assert (ended.code, ended.err) == (0, "")
     assert str(folder) in ended.out
-    assert sorted(path.name for path in folder.iterdir()) == ["wren_in_the_white", "wren_varnished"]
-    for place in folder.iterdir():
+    assert sorted(path.name for path in folder.iterdir()) == [
+        "finch_after_the_winter",
+        "finch_strung_up",
+        "wren_in_the_white",
+        "wren_varnished",
+    ]
+    for place in folder.glob("wren_*"):
         assert_figures(place)
         assert_comparison_keys(content(place / "comparison.json"))
         measured = load_profile(place / "profile.json")
@@ -70,3 +81,29 @@ def test_demo_finds_what_was_put_into_the_instrument(demo: tuple[Ended, Path], c
 def test_demo_finds_nothing_else(demo: tuple[Ended, Path]) -> None:
     comparison, _ = load_comparison(demo[1] / "wren_in_the_white" / "comparison.json")
     assert len(comparison.regions) == len(WREN_IN_THE_WHITE.changes)
+
+
+def test_demo_measures_the_plucked_instrument_and_compares_its_stages(demo: tuple[Ended, Path]) -> None:
+    ended, folder = demo
+    for stage in PLUCKED_STAGES:
+        measured = load_profile(folder / stage.file_stem / "profile.json")
+        assert (measured.instrument, measured.stage) == (stage.instrument, stage.name)
+        assert [[recipe.note for recipe in take.notes] for take in measured.takes] == [
+            [written.note for written in PLUCKED_NOTES]
+        ] * PLUCKED_TAKES
+        assert all(recipe.kind == "ringing" for take in measured.takes for recipe in take.notes)
+        assert (folder / stage.file_stem / "profile.csv").stat().st_size > 0
+    earlier, later = (folder / stage.file_stem for stage in PLUCKED_STAGES)
+    assert not (earlier / "comparison.json").exists()
+    assert_figures(later)
+    assert_comparison_keys(content(later / "comparison.json"))
+    assert "Finch, after the winter" in ended.out
+
+
+def test_demo_finds_no_change_of_level_in_the_plucked_instrument(demo: tuple[Ended, Path]) -> None:
+    # the winter changed how long its partials last, not how strong they begin
+    comparison, suggestions = load_comparison(demo[1] / FINCH_AFTER_THE_WINTER.file_stem / "comparison.json")
+    assert comparison.regions == ()
+    assert suggestions == ()
+    assert all(point.simultaneous_low_db <= 0.0 <= point.simultaneous_high_db for point in comparison.body_curve)
+    assert not any(harmonic.verdict in ("stronger", "weaker") for harmonic in comparison.harmonics)

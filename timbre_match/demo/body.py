@@ -34,9 +34,7 @@ _BRIDGE_HZ = 2450.0
 _BRIDGE_Q = 2.6
 
 
-def share_of_stretch(
-    freq_hz: ArrayLike, low_hz: float, high_hz: float, edge_octaves: float
-) -> NDArray[np.float64]:
+def share_of_stretch(freq_hz: ArrayLike, low_hz: float, high_hz: float, edge_octaves: float) -> NDArray[np.float64]:
     """How much of a change each frequency has, 0 to 1; same shape as `freq_hz`.
 
     All of it from `low_hz` to `high_hz`; outside it dies away over `edge_octaves`, a quarter wave of a squared cosine

@@ -41,7 +41,7 @@ def ringing_string(moved: Vibrations, length_s: float, sample_rate_hz: int = SAM
 
 
 def attack(body: Body, draws: Draws, sample_rate_hz: int = SAMPLE_RATE_HZ) -> NDArray[np.float64]:
-    """Noise of the pluck and knock on the body: a push and a scrape at the bridge, heard through the body; shape (n,)."""
+    """Noise of the pluck and knock on the body: a push and a scrape at the bridge, through the body; shape (n,)."""
     length = round(_ATTACK_LENGTH_S * sample_rate_hz)
     time_s = np.arange(length) / sample_rate_hz
     push = _KNOCK * np.sin(np.pi * np.clip(time_s / _KNOCK_S, 0.0, 1.0)) ** 2

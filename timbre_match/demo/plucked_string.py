@@ -69,9 +69,7 @@ def _plain_nylon(open_note: str, diameter_m: float, both_ways: tuple[int, ...]) 
     )
 
 
-def _wound(
-    open_note: str, density_kg_m: float, bending_n_m2: float, both_ways: tuple[int, ...]
-) -> PluckedString:
+def _wound(open_note: str, density_kg_m: float, bending_n_m2: float, both_ways: tuple[int, ...]) -> PluckedString:
     return PluckedString(
         open_note=open_note,
         density_kg_m=density_kg_m,
@@ -114,7 +112,8 @@ def string_loss(k: ArrayLike, f0_hz: float, string: PluckedString) -> NDArray[np
 
     .. math:: \eta_k = \frac{\eta_F + \eta_A / \omega_k + \eta_B B k^2}{1 + B k^2}
 
-    of friction, air and bending (Woodhouse 2004, Acta Acustica united with Acustica 90:945, after Valette; from memory).
+    of friction, air and bending (Woodhouse 2004, Acta Acustica united with Acustica 90:945, after Valette; from
+    memory).
     """
     number = np.asarray(k, dtype=np.float64)
     b = string.inharmonicity(f0_hz)
@@ -127,9 +126,10 @@ def string_loss(k: ArrayLike, f0_hz: float, string: PluckedString) -> NDArray[np
 def bridge_loss(f0_hz: float, impedance_kg_s: float, conductance_s_kg: ArrayLike) -> NDArray[np.float64]:
     """Rate at which the bridge takes the amplitude of a partial, 1/s: 2 f0 Z G.
 
-    A wave of the string comes back from a bridge of the conductance G (real part of its admittance), small beside 1 / Z,
-    weaker by the share 2 Z G, and meets it f0 times a second (Gough 1981, Acustica 49:124; from memory). What the body
-    does to the frequencies, a few cents near its resonances, is left out: the partials lie where stiffness puts them.
+    A wave of the string comes back from a bridge of the conductance G (real part of its admittance), small beside
+    1 / Z, weaker by the share 2 Z G, and meets it f0 times a second (Gough 1981, Acustica 49:124; from memory). What
+    the body does to the frequencies, a few cents near its resonances, is left out: the partials lie where stiffness
+    puts them.
     """
     return np.asarray(2.0 * f0_hz * impedance_kg_s * np.asarray(conductance_s_kg, dtype=np.float64))
 

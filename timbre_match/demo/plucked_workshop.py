@@ -72,8 +72,16 @@ class SustainChange:
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class PluckedStage:
-    """The plucked instrument in one state: `instrument`, the maker's `name` for it, how its takes' files are called, and
-    how its sustain differs from the first stage (`changes`): the truth that a comparison should find.
+    """The plucked instrument in one state.
+
+    Attributes
+    ----------
+    instrument, name : str
+        The instrument and the maker's name for the stage.
+    file_stem : str
+        What the files of its takes are called.
+    changes : tuple of SustainChange
+        How its sustain differs from that of the first stage: the truth that a comparison should find.
     """
 
     instrument: str
@@ -127,9 +135,9 @@ class TruePartials:
         Of f_k = k f0 sqrt(1 + B k^2).
     k : int64 array, shape (K,)
     freq_hz, level_db, t60_s : float64 arrays, shape (K,)
-        Frequency; level at the onset, as a share of the note's partials; and the time to fall by 60 dB, three times that
-        in which the energy still to come falls by 20 dB. A partial that dies within twice the room's reverberation has
-        no level of its own at the microphone, and no time: NaN.
+        Frequency; level at the onset, as a share of the note's partials; and the time to fall by 60 dB, three times
+        that in which the energy still to come falls by 20 dB. A partial that dies within twice the room's reverberation
+        has no level of its own at the microphone, and no time: NaN.
     both_ways : bool array, shape (K,)
         Whether the motion along the top is heard as well.
     """
@@ -194,9 +202,10 @@ def true_sustain_factor(stage: PluckedStage, freq_hz: ArrayLike) -> NDArray[np.f
 def true_partials(stage: PluckedStage, pluck: Pluck) -> TruePartials:
     """What a measurement of a pluck should find.
 
-    Of :func:`meant_pluck` this is the truth about the stage; of one of :func:`plucks_of_take` it is the truth about that
-    recording. The room answers a vibration c exp(s t) that has gone on for longer than its own tail with c H(s) exp(s t),
-    H being the z-transform of its response; the level at the onset is that of this vibration carried back to the pluck.
+    Of :func:`meant_pluck` this is the truth about the stage; of one of :func:`plucks_of_take` it is the truth about
+    that recording. The room answers a vibration c exp(s t) that has gone on for longer than its own tail with
+    c H(s) exp(s t), H being the z-transform of its response; the level at the onset is that of this vibration carried
+    back to the pluck.
     """
     moved = vibrations(stage, pluck)
     room = workshop_room()
@@ -220,7 +229,7 @@ def true_partials(stage: PluckedStage, pluck: Pluck) -> TruePartials:
 
 
 def _tuned_hz(written: WrittenPluck) -> float:
-    return note_to_hz(written.note) * 2.0 ** (written.tuning_cents / 1200.0)
+    return float(note_to_hz(written.note) * 2.0 ** (written.tuning_cents / 1200.0))
 
 
 def _along_the_top(string: PluckedString, count: int) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
@@ -236,7 +245,8 @@ def _along_the_top(string: PluckedString, count: int) -> tuple[NDArray[np.float6
 def _t60_s(s: NDArray[np.complex128], c: NDArray[np.complex128]) -> float:
     """Three times the time in which the energy that is still to come of sum c exp(s t) falls to a hundredth.
 
-    The integral of |sum c_i exp(s_i t)|^2 from t on is the sum over i, j of c_i c_j* exp((s_i + s_j*) t) / -(s_i + s_j*).
+    The integral of |sum c_i exp(s_i t)|^2 from t on is the sum over i, j of
+    c_i c_j* exp((s_i + s_j*) t) / -(s_i + s_j*).
     """
     if c[1] == 0.0:
         return float(np.log(1000.0) / -s[0].real)

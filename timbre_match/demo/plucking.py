@@ -19,8 +19,8 @@ PLUCK_TO_BRIDGE_M = 0.098
 HIGHEST_HZ = 10_000.0
 """Partials above are left out: on nylon they are gone within hundredths of a second."""
 
-_TAKE_PLACE_SD_M = 0.002
-_NOTE_PLACE_SD_M = 0.002
+_TAKE_PLACE_SD_M = 0.0015
+_NOTE_PLACE_SD_M = 0.0015
 _ROUNDING_S = 45e-6
 _ROUNDING_SD = 0.08
 _LEVEL_SD_DB = 1.2

@@ -1,6 +1,7 @@
 """Render the workshop's recordings: ``python -m timbre_match.demo.render --out FOLDER``."""
 
 import argparse
+from collections.abc import Iterator
 from pathlib import Path
 
 import numpy as np
@@ -11,6 +12,8 @@ from timbre_match.demo.body import Body
 from timbre_match.demo.bowed_string import bridge_force, harmonic_sum
 from timbre_match.demo.draws import Draws
 from timbre_match.demo.player import Stroke, TakeHabit, draw_note_offsets_db, draw_stroke, draw_take_habit
+from timbre_match.demo.plucked_render import render_plucked_take
+from timbre_match.demo.plucked_workshop import PLUCKED_STAGES, PLUCKED_TAKES, plucked_file_name
 from timbre_match.demo.room import SAMPLE_RATE_HZ, heard_in_room, microphone_noise, quantise, workshop_room
 from timbre_match.demo.workshop import NOTES, STAGES, TAKES, Stage, WrittenNote, body_of, file_name
 from timbre_match.errors import OutputError
@@ -113,11 +116,9 @@ def render_workshop(folder: Path) -> tuple[Path, ...]:
     written = []
     try:
         folder.mkdir(parents=True, exist_ok=True)
-        for stage in STAGES:
-            for take in range(1, TAKES + 1):
-                path = folder / file_name(stage, take)
-                soundfile.write(path, render_take(stage, take), SAMPLE_RATE_HZ, subtype="PCM_16", format="FLAC")
-                written.append(path)
+        for name, samples in _recordings():
+            written.append(folder / name)
+            soundfile.write(written[-1], samples, SAMPLE_RATE_HZ, subtype="PCM_16", format="FLAC")
     except (OSError, soundfile.SoundFileError) as error:
         raise OutputError(
             f"the demo recordings cannot be written ({error})",
@@ -125,6 +126,16 @@ def render_workshop(folder: Path) -> tuple[Path, ...]:
             remedy="choose a folder that you may write to",
         ) from error
     return tuple(written)
+
+
+def _recordings() -> Iterator[tuple[str, NDArray[np.int16]]]:
+    """File name and samples of every take in the workshop."""
+    for stage in STAGES:
+        for take in range(1, TAKES + 1):
+            yield file_name(stage, take), render_take(stage, take)
+    for plucked in PLUCKED_STAGES:
+        for take in range(1, PLUCKED_TAKES + 1):
+            yield plucked_file_name(plucked, take), render_plucked_take(plucked, take)
 
 
 def main() -> None:
