@@ -138,8 +138,8 @@ class TruePartials:
         Frequency; level at the onset, as a share of the note's partials; and the time to fall by 60 dB, three times
         that in which the energy still to come falls by 20 dB. A partial that dies within twice the room's reverberation
         has no level of its own at the microphone, and no time: NaN.
-    both_ways : bool array, shape (K,)
-        Whether the motion along the top is heard as well.
+    beat_hz : float64 array, shape (K,)
+        How much higher the motion along the top sounds, where it is heard as well; NaN where it is not.
     """
 
     f0_hz: float
@@ -148,7 +148,12 @@ class TruePartials:
     freq_hz: NDArray[np.float64]
     level_db: NDArray[np.float64]
     t60_s: NDArray[np.float64]
-    both_ways: NDArray[np.bool_]
+    beat_hz: NDArray[np.float64]
+
+    @property
+    def both_ways(self) -> NDArray[np.bool_]:
+        """Whether the motion along the top is heard as well, shape (K,)."""
+        return np.isfinite(self.beat_hz)
 
 
 def plucked_file_name(stage: PluckedStage, take: int) -> str:
@@ -210,6 +215,7 @@ def true_partials(stage: PluckedStage, pluck: Pluck) -> TruePartials:
     moved = vibrations(stage, pluck)
     room = workshop_room()
     since_s = np.arange(len(room)) / SAMPLE_RATE_HZ
+    square_hz, along_hz = moved.s.imag.T / (2.0 * np.pi)
     lasting = np.flatnonzero(-np.log(1000.0) / moved.s[:, 0].real > 2.0 * REVERBERATION_S)
     power, t60_s = np.full((2, len(moved.s)), np.nan)
     for index in lasting:
@@ -221,10 +227,10 @@ def true_partials(stage: PluckedStage, pluck: Pluck) -> TruePartials:
         f0_hz=pluck.f0_hz,
         inharmonicity_b=pluck.string.inharmonicity(pluck.f0_hz),
         k=np.arange(1, len(power) + 1),
-        freq_hz=moved.s[:, 0].imag / (2.0 * np.pi),
+        freq_hz=square_hz,
         level_db=10.0 * np.log10(power / np.nansum(power)),
         t60_s=t60_s,
-        both_ways=moved.c[:, 1] != 0.0,
+        beat_hz=np.where(moved.c[:, 1] != 0.0, along_hz - square_hz, np.nan),
     )
 
 
