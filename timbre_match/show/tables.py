@@ -17,19 +17,36 @@ from rich.table import Table
 from rich.text import Text
 
 from timbre_match.advise.suggestions import Suggestion
-from timbre_match.advise.wording import counted, hertz
-from timbre_match.compare.records import Comparison, Verdict
+from timbre_match.advise.wording import counted, hertz, sustain_in_words
+from timbre_match.compare.records import Comparison, Sustain, SustainVerdict, Verdict
 from timbre_match.intake.notes import HeldNote
 from timbre_match.intake.recording import Recording
 from timbre_match.measure.profile import Profile
 from timbre_match.measure.recipe import Recipe
-from timbre_match.show.marks import SIGN, VERDICTS, plain, signed_interval
+from timbre_match.show.marks import (
+    SIGN,
+    SUSTAIN_SIGN,
+    SUSTAIN_VERDICTS,
+    VERDICTS,
+    plain,
+    ratio_interval,
+    signed_interval,
+)
 
 _COLOUR: Final[dict[Verdict, str]] = {"stronger": "yellow", "weaker": "cyan", "alike": "green", "unsettled": "default"}
+_SUSTAIN_COLOUR: Final[dict[SustainVerdict, str]] = {
+    "longer": "yellow",
+    "shorter": "cyan",
+    "alike": "green",
+    "unsettled": "default",
+}
 _LISTED_HARMONICS: Final = 12
 _RELATIVE: Final = (
     "All differences are relative: zero is the level on which most of what is heard agrees. Where much of the range "
     "differs, what the zero is becomes unsure, and the intervals say so."
+)
+_INAUDIBLE: Final = (
+    "Alike means no more than 25 % shorter or 40 % longer, which listeners did not hear in a published test."
 )
 _SOURCE_WORDS: Final = {
     "takes": "the takes themselves",
@@ -117,6 +134,7 @@ def comparison_summary(comparison: Comparison) -> RenderableType:
         *_regions(comparison),
         *_differing_harmonics(comparison),
         *_verdict_counts(comparison),
+        *_sustain(comparison.sustain),
     ]
     return Group(*parts, *_remarks(comparison.remarks))
 
@@ -233,6 +251,26 @@ def _verdict_counts(comparison: Comparison) -> list[RenderableType]:
     return [Text(), Text("Harmonics of each note, instrument against target", "bold"), table]
 
 
+def _sustain(sustain: Sustain | None) -> list[RenderableType]:
+    """Say in words where notes ring longer or shorter, then show it note by note."""
+    if sustain is None:
+        return []
+    parts: list[RenderableType] = [Text(), Text("Sustain: how long partials ring, against the target", "bold")]
+    for region in sorted(sustain.regions, key=lambda region: region.low_hz):
+        parts.append(Text.assemble(_sustain_sign(region.verdict), f" {sustain_in_words(region)}."))
+    if not sustain.regions:
+        parts.append(Text("No stretch of frequency is known to ring longer or shorter."))
+    counts = Counter(one.verdict for one in sustain.harmonics)
+    told = ", ".join(f"{counts[verdict]} {verdict}" for verdict in SUSTAIN_VERDICTS)
+    parts.append(Text(f"{counted(len(sustain.harmonics), 'single partial')}: {told}. {_INAUDIBLE}"))
+    table = _table("", "note", "decay time, times the target's", "partials", left=("", "note"))
+    for note in sustain.notes:
+        table.add_row(
+            _sustain_sign(note.verdict), Text(plain(note.note, 8)), ratio_interval(note.ratio), str(note.harmonics)
+        )
+    return [*parts, Text(), Text("Sustain of each note", "bold"), table]
+
+
 def _typical_error(recipe: Recipe) -> str:
     errors = recipe.se_db[recipe.heard]
     middle = float(np.median(errors)) if errors.size else math.nan
@@ -259,6 +297,10 @@ def _heading(name: str, detail: str) -> Text:
 
 def _sign(verdict: Verdict) -> Text:
     return Text(SIGN[verdict], _COLOUR[verdict])
+
+
+def _sustain_sign(verdict: SustainVerdict) -> Text:
+    return Text(SUSTAIN_SIGN[verdict], _SUSTAIN_COLOUR[verdict])
 
 
 def _table(*columns: str, left: tuple[str, ...]) -> Table:
