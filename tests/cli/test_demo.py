@@ -14,6 +14,7 @@ from timbre_match.demo.plucked_workshop import (
     PLUCKED_NOTES,
     PLUCKED_STAGES,
     PLUCKED_TAKES,
+    true_sustain_factor,
 )
 from timbre_match.demo.workshop import NOTES, STAGES, WREN_IN_THE_WHITE, Stage, true_difference_db
 from timbre_match.keep.files import load_comparison, load_profile
@@ -107,3 +108,28 @@ def test_demo_finds_no_change_of_level_in_the_plucked_instrument(demo: tuple[End
     assert all(suggestion.region is None for suggestion in suggestions)
     assert all(point.simultaneous_low_db <= 0.0 <= point.simultaneous_high_db for point in comparison.body_curve)
     assert not any(harmonic.verdict in ("stronger", "weaker") for harmonic in comparison.harmonics)
+
+
+def test_demo_finds_the_sustain_that_the_winter_took(demo: tuple[Ended, Path]) -> None:
+    comparison, suggestions = load_comparison(demo[1] / FINCH_AFTER_THE_WINTER.file_stem / "comparison.json")
+    assert comparison.sustain is not None
+    (change,) = FINCH_AFTER_THE_WINTER.changes
+    (region,) = comparison.sustain.regions
+    assert region.verdict == "shorter"
+    assert region.ratio.low <= change.t60_factor <= region.ratio.high
+    # each end within the sixth of an octave over which the change dies away
+    for found_hz, true_hz in ((region.low_hz, change.low_hz), (region.high_hz, change.high_hz)):
+        assert abs(math.log2(found_hz / true_hz)) < change.edge_octaves
+    for partial in comparison.sustain.harmonics:
+        if partial.verdict in ("longer", "shorter"):
+            assert partial.verdict == "shorter"
+            assert true_sustain_factor(FINCH_AFTER_THE_WINTER, partial.freq_hz) < 0.8
+    low, high = (
+        np.array([getattr(point, name) for point in comparison.sustain.curve])
+        for name in ("simultaneous_low", "simultaneous_high")
+    )
+    hz = np.array([point.freq_hz for point in comparison.sustain.curve])
+    near = hz[:, None] * 2.0 ** np.linspace(-1.0 / 12.0, 1.0 / 12.0, 21)
+    truth = np.exp(np.mean(np.log(true_sustain_factor(FINCH_AFTER_THE_WINTER, near)), axis=1))
+    assert np.all((low <= truth) & (truth <= high))
+    assert any("Partials between" in suggestion.evidence for suggestion in suggestions)
