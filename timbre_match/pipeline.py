@@ -125,43 +125,64 @@ def write_figures(folder: Path, profile: Profile, target: Target, comparison: Co
 def run_demo(folder: Path, *, progress: Progress | None = None) -> Iterator["RenderableType"]:
     """Do the main job on the invented workshop's recordings; yields what to show as it goes.
 
-    Each stage of the new instrument gets a folder of its own with its profile, the comparison with the target, the
-    tables as text and CSV, and the figures.
+    The stages of the new violin are compared with the target, the later stage of the plucked instrument with the
+    earlier. Each stage gets a folder of its own with its profile and, where it is compared, the comparison, the tables
+    as text and CSV, and the figures.
 
     Raises
     ------
     TimbreMatchError
         If the recordings cannot be found, or a result cannot be written.
     """
-    from timbre_match.demo.tones import takes, target_file
+    from timbre_match.demo.plucked_workshop import PLUCKED_FAMILY
+    from timbre_match.demo.tones import plucked_takes, takes, target_file
     from timbre_match.demo.workshop import FAMILY
-    from timbre_match.keep.export import export_csv
-    from timbre_match.keep.files import load_target, save_comparison, save_profile
-    from timbre_match.keep.writing import make_folder, write_whole
-    from timbre_match.show.tables import as_text, comparison_summary, suggestions_list
+    from timbre_match.keep.files import load_target
 
     wanted = load_target(target_file())
     for stage, recordings in takes().items():
         if stage.instrument == wanted.members[0].instrument:
             continue
         place = folder / stage.file_stem
-        make_folder(place)
-        measured = measure_takes(
-            recordings,
-            Listening(),
-            instrument=stage.instrument,
-            stage=stage.name,
-            family=FAMILY,
-            progress=progress,
-        )
-        if measured.failures:
-            raise measured.failures[0]
-        profile = measured.profile
-        comparison, suggestions = compare_and_advise(profile, wanted)
-        save_profile(profile, place / "profile.json")
-        export_csv(profile, place / "profile.csv")
-        save_comparison(comparison, suggestions, place / "comparison.json")
-        shown = [comparison_summary(comparison), suggestions_list(suggestions)]
-        write_whole(place / "comparison.txt", as_text(shown).encode())
-        write_figures(place, profile, wanted, comparison)
-        yield from shown
+        profile = _demo_profile(place, recordings, stage.instrument, stage.name, FAMILY, progress)
+        yield from _demo_comparison(place, profile, wanted)
+    before: Profile | None = None
+    for plucked, recordings in plucked_takes().items():
+        place = folder / plucked.file_stem
+        profile = _demo_profile(place, recordings, plucked.instrument, plucked.name, PLUCKED_FAMILY, progress)
+        if before is not None:
+            yield from _demo_comparison(place, profile, as_target(before))
+        before = profile
+
+
+def _demo_profile(
+    place: Path, recordings: Sequence[Path], instrument: str, stage: str, family: str, progress: Progress | None
+) -> Profile:
+    """Measure one stage and write its profile into its folder."""
+    from timbre_match.keep.export import export_csv
+    from timbre_match.keep.files import save_profile
+    from timbre_match.keep.writing import make_folder
+
+    make_folder(place)
+    measured = measure_takes(
+        recordings, Listening(), instrument=instrument, stage=stage, family=family, progress=progress
+    )
+    if measured.failures:
+        raise measured.failures[0]
+    save_profile(measured.profile, place / "profile.json")
+    export_csv(measured.profile, place / "profile.csv")
+    return measured.profile
+
+
+def _demo_comparison(place: Path, profile: Profile, wanted: Target) -> Iterator["RenderableType"]:
+    """Compare a stage, write the comparison into its folder, and show it."""
+    from timbre_match.keep.files import save_comparison
+    from timbre_match.keep.writing import write_whole
+    from timbre_match.show.tables import as_text, comparison_summary, suggestions_list
+
+    comparison, suggestions = compare_and_advise(profile, wanted)
+    save_comparison(comparison, suggestions, place / "comparison.json")
+    shown = [comparison_summary(comparison), suggestions_list(suggestions)]
+    write_whole(place / "comparison.txt", as_text(shown).encode())
+    write_figures(place, profile, wanted, comparison)
+    yield from shown

@@ -9,6 +9,13 @@ import pytest
 
 from tests.cli.outputs import assert_comparison_keys, assert_figures, content
 from tests.command_line import Ended, run_process
+from timbre_match.demo.plucked_workshop import (
+    FINCH_AFTER_THE_WINTER,
+    PLUCKED_NOTES,
+    PLUCKED_STAGES,
+    PLUCKED_TAKES,
+    true_sustain_factor,
+)
 from timbre_match.demo.workshop import NOTES, STAGES, WREN_IN_THE_WHITE, Stage, true_difference_db
 from timbre_match.keep.files import load_comparison, load_profile
 
@@ -25,8 +32,13 @@ def test_demo_writes_everything(demo: tuple[Ended, Path]) -> None:
     ended, folder = demo
     assert (ended.code, ended.err) == (0, "")
     assert str(folder) in ended.out
-    assert sorted(path.name for path in folder.iterdir()) == ["wren_in_the_white", "wren_varnished"]
-    for place in folder.iterdir():
+    assert sorted(path.name for path in folder.iterdir()) == [
+        "finch_after_the_winter",
+        "finch_strung_up",
+        "wren_in_the_white",
+        "wren_varnished",
+    ]
+    for place in folder.glob("wren_*"):
         assert_figures(place)
         assert_comparison_keys(content(place / "comparison.json"))
         measured = load_profile(place / "profile.json")
@@ -70,3 +82,54 @@ def test_demo_finds_what_was_put_into_the_instrument(demo: tuple[Ended, Path], c
 def test_demo_finds_nothing_else(demo: tuple[Ended, Path]) -> None:
     comparison, _ = load_comparison(demo[1] / "wren_in_the_white" / "comparison.json")
     assert len(comparison.regions) == len(WREN_IN_THE_WHITE.changes)
+
+
+def test_demo_measures_the_plucked_instrument_and_compares_its_stages(demo: tuple[Ended, Path]) -> None:
+    ended, folder = demo
+    for stage in PLUCKED_STAGES:
+        measured = load_profile(folder / stage.file_stem / "profile.json")
+        assert (measured.instrument, measured.stage) == (stage.instrument, stage.name)
+        assert [[recipe.note for recipe in take.notes] for take in measured.takes] == [
+            [written.note for written in PLUCKED_NOTES]
+        ] * PLUCKED_TAKES
+        assert all(recipe.kind == "ringing" for take in measured.takes for recipe in take.notes)
+        assert (folder / stage.file_stem / "profile.csv").stat().st_size > 0
+    earlier, later = (folder / stage.file_stem for stage in PLUCKED_STAGES)
+    assert not (earlier / "comparison.json").exists()
+    assert_figures(later)
+    assert_comparison_keys(content(later / "comparison.json"))
+    assert "Finch, after the winter" in ended.out
+
+
+def test_demo_finds_no_change_of_level_in_the_plucked_instrument(demo: tuple[Ended, Path]) -> None:
+    # the winter changed how long its partials last, not how strong they begin
+    comparison, suggestions = load_comparison(demo[1] / FINCH_AFTER_THE_WINTER.file_stem / "comparison.json")
+    assert comparison.regions == ()
+    assert all(suggestion.region is None for suggestion in suggestions)
+    assert all(point.simultaneous_low_db <= 0.0 <= point.simultaneous_high_db for point in comparison.body_curve)
+    assert not any(harmonic.verdict in ("stronger", "weaker") for harmonic in comparison.harmonics)
+
+
+def test_demo_finds_the_sustain_that_the_winter_took(demo: tuple[Ended, Path]) -> None:
+    comparison, suggestions = load_comparison(demo[1] / FINCH_AFTER_THE_WINTER.file_stem / "comparison.json")
+    assert comparison.sustain is not None
+    (change,) = FINCH_AFTER_THE_WINTER.changes
+    (region,) = comparison.sustain.regions
+    assert region.verdict == "shorter"
+    assert region.ratio.low <= change.t60_factor <= region.ratio.high
+    # each end within the sixth of an octave over which the change dies away
+    for found_hz, true_hz in ((region.low_hz, change.low_hz), (region.high_hz, change.high_hz)):
+        assert abs(math.log2(found_hz / true_hz)) < change.edge_octaves
+    for partial in comparison.sustain.harmonics:
+        if partial.verdict in ("longer", "shorter"):
+            assert partial.verdict == "shorter"
+            assert true_sustain_factor(FINCH_AFTER_THE_WINTER, partial.freq_hz) < 0.8
+    low, high = (
+        np.array([getattr(point, name) for point in comparison.sustain.curve])
+        for name in ("simultaneous_low", "simultaneous_high")
+    )
+    hz = np.array([point.freq_hz for point in comparison.sustain.curve])
+    near = hz[:, None] * 2.0 ** np.linspace(-1.0 / 12.0, 1.0 / 12.0, 21)
+    truth = np.exp(np.mean(np.log(true_sustain_factor(FINCH_AFTER_THE_WINTER, near)), axis=1))
+    assert np.all((low <= truth) & (truth <= high))
+    assert any("Partials between" in suggestion.evidence for suggestion in suggestions)

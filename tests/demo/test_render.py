@@ -11,11 +11,12 @@ from timbre_match.demo import render
 from timbre_match.demo.body import violin_body
 from timbre_match.demo.bowed_string import bridge_force
 from timbre_match.demo.player import Stroke
-from timbre_match.demo.tones import takes, tones_folder
+from timbre_match.demo.plucked_render import render_plucked_take
+from timbre_match.demo.plucked_workshop import FINCH_AFTER_THE_WINTER, PLUCKED_STAGES, plucked_file_name
+from timbre_match.demo.room import SAMPLE_RATE_HZ as RATE
+from timbre_match.demo.tones import plucked_takes, takes, tones_folder
 from timbre_match.demo.workshop import HERON, NOTES, STAGES, WREN_VARNISHED, Stage, file_name
 from timbre_match.errors import OutputError
-
-RATE = render.SAMPLE_RATE_HZ
 
 
 def _steady(f0_hz: float, *, length_s: float = 1.4, vibrato_cents: float = 0.0) -> Stroke:
@@ -78,7 +79,8 @@ def test_kept_take_is_what_the_workshop_renders(stage: Stage, take: int) -> None
 
 def test_every_kept_take_is_sixteen_bit_mono_with_headroom() -> None:
     files = [path for paths in takes().values() for path in paths]
-    assert {path.name for path in tones_folder().glob("*.flac")} == {path.name for path in files}
+    plucked = [path for paths in plucked_takes().values() for path in paths]
+    assert {path.name for path in tones_folder().glob("*.flac")} == {path.name for path in files + plucked}
     for path in files:
         info = soundfile.info(path)
         assert (info.samplerate, info.channels, info.subtype, info.format) == (RATE, 1, "PCM_16", "FLAC")
@@ -86,17 +88,22 @@ def test_every_kept_take_is_sixteen_bit_mono_with_headroom() -> None:
         assert info.duration > 1.25 * len(NOTES)
         samples, _ = soundfile.read(path)
         assert -15.0 < 20.0 * np.log10(np.abs(samples).max()) < -3.0
-    assert sum(path.stat().st_size for path in files) < 12e6
+    assert sum(path.stat().st_size for path in tones_folder().iterdir()) < 12e6
 
 
 def test_command_writes_the_same_take_each_time(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(render, "TAKES", 1)
     monkeypatch.setattr(render, "STAGES", STAGES[:1])
+    monkeypatch.setattr(render, "PLUCKED_TAKES", 1)
+    monkeypatch.setattr(render, "PLUCKED_STAGES", PLUCKED_STAGES[1:])
     monkeypatch.setattr("sys.argv", ["render", "--out", str(tmp_path / "tones")])
     render.main()
-    (written,) = (tmp_path / "tones").iterdir()
-    assert written.name == file_name(HERON, 1)
-    np.testing.assert_array_equal(soundfile.read(written, dtype="int16")[0], render.render_take(HERON, 1))
+    plucked, bowed = sorted((tmp_path / "tones").iterdir())
+    assert bowed.name == file_name(HERON, 1)
+    np.testing.assert_array_equal(soundfile.read(bowed, dtype="int16")[0], render.render_take(HERON, 1))
+    assert plucked.name == plucked_file_name(FINCH_AFTER_THE_WINTER, 1)
+    again = render_plucked_take(FINCH_AFTER_THE_WINTER, 1)
+    np.testing.assert_array_equal(soundfile.read(plucked, dtype="int16")[0], again)
 
 
 def test_folder_that_cannot_be_made_is_an_output_error(tmp_path: Path) -> None:

@@ -34,6 +34,17 @@ _BRIDGE_HZ = 2450.0
 _BRIDGE_Q = 2.6
 
 
+def share_of_stretch(freq_hz: ArrayLike, low_hz: float, high_hz: float, edge_octaves: float) -> NDArray[np.float64]:
+    """How much of a change each frequency has, 0 to 1; same shape as `freq_hz`.
+
+    All of it from `low_hz` to `high_hz`; outside it dies away over `edge_octaves`, a quarter wave of a squared cosine
+    over log frequency.
+    """
+    octaves = np.log2(np.asarray(freq_hz, dtype=np.float64))
+    outside = np.maximum(np.log2(low_hz) - octaves, octaves - np.log2(high_hz))
+    return np.asarray(np.cos(0.5 * np.pi * np.clip(outside / edge_octaves, 0.0, 1.0)) ** 2)
+
+
 @dataclass(frozen=True, kw_only=True, slots=True)
 class Change:
     """A stretch of frequency in which one body radiates more or less than another.
@@ -45,7 +56,7 @@ class Change:
     gain_db : float
         The change, dB; negative is weaker.
     edge_octaves : float
-        Width of each edge, a quarter wave of a squared cosine over log frequency.
+        Width of each edge, as in :func:`share_of_stretch`.
     """
 
     low_hz: float
@@ -55,10 +66,7 @@ class Change:
 
     def difference_db(self, freq_hz: ArrayLike) -> NDArray[np.float64]:
         """Change in dB at each frequency; same shape as `freq_hz`."""
-        octaves = np.log2(np.asarray(freq_hz, dtype=np.float64))
-        outside = np.maximum(np.log2(self.low_hz) - octaves, octaves - np.log2(self.high_hz))
-        share = np.clip(outside / self.edge_octaves, 0.0, 1.0)
-        return np.asarray(self.gain_db * np.cos(0.5 * np.pi * share) ** 2)
+        return self.gain_db * share_of_stretch(freq_hz, self.low_hz, self.high_hz, self.edge_octaves)
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)

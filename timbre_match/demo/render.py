@@ -1,6 +1,7 @@
 """Render the workshop's recordings: ``python -m timbre_match.demo.render --out FOLDER``."""
 
 import argparse
+from collections.abc import Iterator
 from pathlib import Path
 
 import numpy as np
@@ -11,15 +12,14 @@ from timbre_match.demo.body import Body
 from timbre_match.demo.bowed_string import bridge_force, harmonic_sum
 from timbre_match.demo.draws import Draws
 from timbre_match.demo.player import Stroke, TakeHabit, draw_note_offsets_db, draw_stroke, draw_take_habit
-from timbre_match.demo.room import heard_in_room, microphone_noise, quantise, room_response
+from timbre_match.demo.plucked_render import render_plucked_take
+from timbre_match.demo.plucked_workshop import PLUCKED_STAGES, PLUCKED_TAKES, plucked_file_name
+from timbre_match.demo.room import SAMPLE_RATE_HZ, heard_in_room, microphone_noise, quantise, workshop_room
 from timbre_match.demo.workshop import NOTES, STAGES, TAKES, Stage, WrittenNote, body_of, file_name
 from timbre_match.errors import OutputError
 from timbre_match.units import note_to_hz
 
-SAMPLE_RATE_HZ = 44_100
-
 _SEED = 1
-_ROOM_KEY = 100
 _HIGHEST_SHARE_OF_RATE = 0.45
 _CONTROL_STEP = 128
 _BOW_NOISE_DB = -50.0
@@ -86,8 +86,7 @@ def render_take(stage: Stage, take: int) -> NDArray[np.int16]:
             pieces.append(np.zeros(round(pause_s * SAMPLE_RATE_HZ)))
         pieces.append(_played(written, habit, body, draws))
     pieces.append(np.zeros(round(_TAIL_S * SAMPLE_RATE_HZ)))
-    room = room_response(SAMPLE_RATE_HZ, Draws(_SEED, _ROOM_KEY))
-    sound = 10.0 ** (_MICROPHONE_GAIN_DB / 20.0) * heard_in_room(np.concatenate(pieces), room)
+    sound = 10.0 ** (_MICROPHONE_GAIN_DB / 20.0) * heard_in_room(np.concatenate(pieces), workshop_room())
     sound += microphone_noise(len(sound), SAMPLE_RATE_HZ, draws)
     return quantise(sound, draws)
 
@@ -117,11 +116,9 @@ def render_workshop(folder: Path) -> tuple[Path, ...]:
     written = []
     try:
         folder.mkdir(parents=True, exist_ok=True)
-        for stage in STAGES:
-            for take in range(1, TAKES + 1):
-                path = folder / file_name(stage, take)
-                soundfile.write(path, render_take(stage, take), SAMPLE_RATE_HZ, subtype="PCM_16", format="FLAC")
-                written.append(path)
+        for name, samples in _recordings():
+            written.append(folder / name)
+            soundfile.write(written[-1], samples, SAMPLE_RATE_HZ, subtype="PCM_16", format="FLAC")
     except (OSError, soundfile.SoundFileError) as error:
         raise OutputError(
             f"the demo recordings cannot be written ({error})",
@@ -129,6 +126,16 @@ def render_workshop(folder: Path) -> tuple[Path, ...]:
             remedy="choose a folder that you may write to",
         ) from error
     return tuple(written)
+
+
+def _recordings() -> Iterator[tuple[str, NDArray[np.int16]]]:
+    """File name and samples of every take in the workshop."""
+    for stage in STAGES:
+        for take in range(1, TAKES + 1):
+            yield file_name(stage, take), render_take(stage, take)
+    for plucked in PLUCKED_STAGES:
+        for take in range(1, PLUCKED_TAKES + 1):
+            yield plucked_file_name(plucked, take), render_plucked_take(plucked, take)
 
 
 def main() -> None:

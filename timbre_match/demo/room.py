@@ -9,6 +9,9 @@ from numpy.typing import NDArray
 
 from timbre_match.demo.draws import Draws
 
+SAMPLE_RATE_HZ = 44_100
+"""Of every recording in the workshop."""
+
 REVERBERATION_S = 0.25
 """Time in which the room's tail falls by 60 dB: a small furnished workshop."""
 
@@ -25,6 +28,7 @@ RUMBLE_CORNER_HZ = 60.0
 
 _PREDELAY_S = 0.004
 _TAIL_LENGTH = 1.2
+_WORKSHOP_KEY = (1, 100)
 
 
 def room_response(sample_rate_hz: int, draws: Draws) -> NDArray[np.float64]:
@@ -48,6 +52,11 @@ def room_response(sample_rate_hz: int, draws: Draws) -> NDArray[np.float64]:
     response = np.concatenate([np.zeros(round(_PREDELAY_S * sample_rate_hz)), tail])
     response[0] = 1.0
     return response
+
+
+def workshop_room() -> NDArray[np.float64]:
+    """Impulse response, at `SAMPLE_RATE_HZ`, of the room that every recording was made in; shape (n,)."""
+    return room_response(SAMPLE_RATE_HZ, Draws(*_WORKSHOP_KEY))
 
 
 def heard_in_room(sound: NDArray[np.float64], response: NDArray[np.float64]) -> NDArray[np.float64]:

@@ -2,6 +2,7 @@
 
 from pathlib import Path
 
+from timbre_match.demo.plucked_workshop import PLUCKED_STAGES, PLUCKED_TAKES, PluckedStage, plucked_file_name
 from timbre_match.demo.workshop import STAGES, TAKES, Stage, file_name
 from timbre_match.errors import TimbreMatchError
 
@@ -20,6 +21,7 @@ def tones_folder() -> Path:
         If neither place has all of them.
     """
     names = [file_name(stage, take) for stage in STAGES for take in range(1, TAKES + 1)]
+    names += [plucked_file_name(stage, take) for stage in PLUCKED_STAGES for take in range(1, PLUCKED_TAKES + 1)]
     for place in _PLACES:
         if all((place / name).is_file() for name in names):
             return place
@@ -46,7 +48,7 @@ def target_file() -> Path:
 
 
 def takes() -> dict[Stage, tuple[Path, ...]]:
-    """Files of each stage's takes, in order; the target first, then the build stages of the new instrument.
+    """Files of each stage's takes of the violins, in order; the target first, then the stages of the new instrument.
 
     Raises
     ------
@@ -55,3 +57,18 @@ def takes() -> dict[Stage, tuple[Path, ...]]:
     """
     folder = tones_folder()
     return {stage: tuple(folder / file_name(stage, take) for take in range(1, TAKES + 1)) for stage in STAGES}
+
+
+def plucked_takes() -> dict[PluckedStage, tuple[Path, ...]]:
+    """Files of each stage's takes of the plucked instrument, in the order of the stages.
+
+    Raises
+    ------
+    TimbreMatchError
+        If the recordings cannot be found.
+    """
+    folder = tones_folder()
+    return {
+        stage: tuple(folder / plucked_file_name(stage, take) for take in range(1, PLUCKED_TAKES + 1))
+        for stage in PLUCKED_STAGES
+    }

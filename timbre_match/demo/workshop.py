@@ -2,7 +2,7 @@
 
 Two violins stand on the bench. The Heron is the fine one that came in for care; the Wren is new, and is meant to
 sound like it. The Wren was recorded in the white and again when it was varnished. Names, instruments and recordings
-are invented.
+are invented. The small guitar beside them has a page of its own, :mod:`timbre_match.demo.plucked_workshop`.
 """
 
 from dataclasses import dataclass
