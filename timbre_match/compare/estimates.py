@@ -112,7 +112,8 @@ def estimate(
         curve_at_harmonics_db=np.concatenate(reached_draws),
         scatter_variance=np.mean([solution.noise_variance[mine] for solution in solutions], axis=0),
         # Precisions are gamma distributed about that of the scale.
-        scatter_scale=1.0 / np.mean([1.0 / solution.noise_variance[mine] for solution in solutions], axis=0),
+        scatter_scale=1.0
+        / np.mean([1.0 / (solution.noise_variance - row.error_variance)[mine] for solution in solutions], axis=0),
         own_variance=np.mean([solution.own_variance[mine] for solution in solutions], axis=0),
         shared_variance=np.maximum(np.var(harmonic, axis=0) - own_part, 0.0),
     )

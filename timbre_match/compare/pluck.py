@@ -42,6 +42,10 @@ _BETTER = 2.0
 _NULL = 0.03
 """Share of its full power at which a harmonic is too near to a null: 15 dB down."""
 _NO_FLOOR_DB = 300.0
+_HAND = 0.003
+"""How far a hand that means to pluck at one point strays, as a share of the string: some 2 mm of a guitar's (common
+practice, no source)."""
+_HAND_STEPS = np.array([-1.5, -1.0, -0.5, 0.5, 1.0, 1.5])
 _SEED = 1
 _LISTED = 6
 
@@ -121,7 +125,8 @@ def compare_plucks(profile: Profile, target: Target) -> Plucks:
     That is done note by note, where every take's pluck point can be told, two of them differ beyond their errors and by
     enough to matter, and the recipes of all takes come closer to each other by it. Levels near a null are set aside on
     both sides; others get the uncertainty of their comb on top of their error. Where a pluck point cannot be told,
-    nothing is taken out.
+    nothing is taken out. Recipes from which nothing is taken get on top of their error what the comb changes by when
+    the hand moves as hands do.
     """
     sides = _plucked_notes((profile,)), _plucked_notes(target.members)
     names = sorted(sides[0].keys() & sides[1].keys(), key=note_number)
@@ -133,9 +138,10 @@ def compare_plucks(profile: Profile, target: Target) -> Plucks:
         differs = _differ(points, [*ours, *theirs])
         set_aside: tuple[int, ...] = ()
         cleaned = _without_combs([*ours, *theirs], points) if differs else None
+        recipes = _hedged([*ours, *theirs], points)
         if cleaned is not None:
             set_aside, recipes = cleaned
-            combs.update({id(old): new for old, new in zip((*ours, *theirs), recipes, strict=True)})
+        combs.update({id(old): new for old, new in zip((*ours, *theirs), recipes, strict=True)})
         notes.append(
             PluckNote(
                 note=name,
@@ -206,6 +212,20 @@ def _without_combs(
         return None
     heard = np.any([_padded(recipe.heard.astype(np.float64), highest) > 0 for recipe in recipes], axis=0)
     return tuple((np.flatnonzero(nulls & heard) + 1).tolist()), cleaned
+
+
+def _hedged(recipes: list[Recipe], points: list[PluckPoint | None]) -> list[Recipe]:
+    """The recipes with the error that an unsteady hand adds: much near a null, and the more the higher the harmonic."""
+    places = np.array([point.beta for point in points if point is not None])
+    if places.size == 0:
+        places = _GRID
+    moved = places[:, None, None] + _HAND * _HAND_STEPS[:, None]
+    hedged = []
+    for recipe in recipes:
+        change = comb_db(recipe.k, moved, _DEPTH) - comb_db(recipe.k, places[:, None, None], _DEPTH)
+        error_db = np.sqrt(np.mean(change**2, axis=(0, 1)))
+        hedged.append(replace(recipe, se_db=np.hypot(recipe.se_db, error_db)))
+    return hedged
 
 
 def _without_comb(recipe: Recipe, point: PluckPoint, nulls: NDArray[np.bool_]) -> Recipe:
