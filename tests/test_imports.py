@@ -35,6 +35,7 @@ HOMES = {
     "json": {"keep", "cli"},
     "matplotlib": {"show"},
     "pickle": set[str](),
+    "platformdirs": {"keep"},
     "pydantic": {"keep"},
     "random": set[str](),
     "rich": {"show", "cli"},

@@ -1,25 +1,14 @@
 """How a verdict and a user's text look, the same in tables and figures."""
 
-import unicodedata
 from typing import Final
 
+from timbre_match.advise.wording import plain as plain
 from timbre_match.compare.records import Interval, Verdict
 
 SIGN: Final[dict[Verdict, str]] = {"stronger": "▲", "weaker": "▼", "alike": "=", "unsettled": "?"}
 """The shape of a verdict as a character; every sign is in the font that matplotlib brings along."""
 
 VERDICTS: Final[tuple[Verdict, ...]] = ("stronger", "weaker", "alike", "unsettled")
-
-
-def plain(text: str, longest: int = 60) -> str:
-    """Return text from outside as one safe line of at most `longest` characters.
-
-    Control characters, line breaks and the invisible signs that turn the direction of writing become spaces, so that a
-    name can neither steer a terminal nor reorder the words around it.
-    """
-    spaced = "".join(" " if unicodedata.category(sign)[0] in "CZ" else sign for sign in text)
-    line = " ".join(spaced.split())
-    return line if len(line) <= longest else line[: longest - 1] + "…"
 
 
 def signed(difference_db: float) -> str:
