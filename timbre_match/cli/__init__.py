@@ -5,12 +5,13 @@ Heavy rooms are imported inside the commands, so that ``--help`` answers at once
 
 import io
 import sys
+from collections.abc import Callable
 from typing import Annotated
 
 import typer
 from typer.core import TyperGroup
 
-from timbre_match.cli import comparing, measuring
+from timbre_match.cli import book, book_safety, comparing, measuring
 from timbre_match.cli.speaking import EXIT_ERROR, EXIT_INTERRUPTED, complain, say_interrupted
 from timbre_match.errors import TimbreMatchError
 
@@ -72,3 +73,27 @@ for command in (
     comparing.demo,
 ):
     app.command()(command)
+
+_book = typer.Typer(
+    help="The bench book: instruments through their build stages, what was measured when, and how.",
+    no_args_is_help=True,
+)
+app.add_typer(_book, name="book")
+_of_book: dict[str, Callable[..., None]] = {
+    "add": book.add,
+    "log": book.log,
+    "list": book.list_instruments,
+    "show": book.show_instrument,
+    "notes": book.notes_to_play,
+    "rename": book.rename,
+    "aside": book.aside,
+    "remeasure": book.remeasure,
+    "profile": book_safety.profile,
+    "check": book_safety.check,
+    "backup": book_safety.backup,
+    "restore": book_safety.restore,
+    "export": book_safety.export,
+    "import": book_safety.take_in,
+}
+for name, work in _of_book.items():
+    _book.command(name)(work)

@@ -1,10 +1,13 @@
 """What the commands share: options, what they print and where, and how they end."""
 
+import dataclasses
 import json
 import sys
+import unicodedata
 from collections.abc import Iterable, Iterator, Sequence
 from contextlib import AbstractContextManager, nullcontext
-from typing import TYPE_CHECKING, Annotated
+from pathlib import Path
+from typing import TYPE_CHECKING, Annotated, TypeVar
 
 import typer
 
@@ -13,7 +16,9 @@ from timbre_match.errors import TimbreMatchError, UnknownNameError
 if TYPE_CHECKING:
     from rich.console import RenderableType
 
-    from timbre_match.measure.takes import Heard, Listening
+    from timbre_match.measure.takes import Listening
+
+_Thing = TypeVar("_Thing")
 
 EXIT_ERROR = 1
 EXIT_PART = 3
@@ -32,13 +37,18 @@ AsJson = Annotated[bool, typer.Option("--json", help="Print JSON and nothing els
 def listening_for(notes: str | None, a4_hz: float, channel: int | None) -> "Listening":
     """Turn options into how recordings are to be read; a note that does not exist is wrong usage."""
     from timbre_match.measure.takes import Listening
+
+    return Listening(notes=notes_played(notes), a4_hz=a4_hz, channel=channel)
+
+
+def notes_played(notes: str | None) -> tuple[str, ...] | None:
+    """Turn the option into names; a note that does not exist is wrong usage."""
     from timbre_match.units import parse_notes
 
     try:
-        names = None if notes is None else parse_notes(notes)
+        return None if notes is None else parse_notes(notes)
     except UnknownNameError as error:
         raise typer.BadParameter(str(error), param_hint="--notes") from error
-    return Listening(notes=names, a4_hz=a4_hz, channel=channel)
 
 
 def family_warning(family: str) -> tuple[str, ...]:
@@ -54,7 +64,16 @@ def family_warning(family: str) -> tuple[str, ...]:
 
 def print_json(content: object) -> None:
     """Print JSON, and nothing else on standard output."""
-    typer.echo(json.dumps(content, indent=1, allow_nan=False))
+    typer.echo(json.dumps(content, indent=1, allow_nan=False, default=_as_json))
+
+
+def _as_json(thing: object) -> object:
+    """Records as groups of keys, and paths as text."""
+    if dataclasses.is_dataclass(thing) and not isinstance(thing, type):
+        return {field.name: getattr(thing, field.name) for field in dataclasses.fields(thing)}
+    if isinstance(thing, Path):
+        return str(thing)
+    raise TypeError(f"{type(thing).__name__} is nothing that JSON knows")
 
 
 def show(content: "RenderableType") -> None:
@@ -64,7 +83,7 @@ def show(content: "RenderableType") -> None:
     Console(highlight=False, markup=False, emoji=False).print(content)
 
 
-def progress(results: "Iterable[Heard]", count: int) -> "Iterator[Heard]":
+def progress(results: Iterable[_Thing], count: int) -> Iterator[_Thing]:
     """Show how many recordings are done, on standard error and only where a person watches."""
     if not sys.stderr.isatty():
         yield from results
@@ -92,7 +111,14 @@ def say_interrupted() -> None:
 
 def complain(error: TimbreMatchError) -> None:
     """Print an error to standard error."""
-    typer.echo(f"timbre-match: {error}", err=True)
+    typer.echo(f"timbre-match: {inert(str(error))}", err=True)
+
+
+def inert(text: str) -> str:
+    """Text of several lines without the signs that steer a terminal or turn the direction of writing."""
+    return "".join(
+        " " if sign != "\n" and unicodedata.category(sign) in ("Cc", "Cf", "Zl", "Zp") else sign for sign in text
+    )
 
 
 def exit_for(failures: Sequence[TimbreMatchError], *, usable: bool) -> None:

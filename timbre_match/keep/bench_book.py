@@ -116,7 +116,7 @@ class BenchBook:
         self.close()
 
     @_plainly
-    def add(self, instrument: str, *, family: str, notes: str = "") -> None:
+    def add(self, instrument: str, *, family: str, remarks: str = "") -> None:
         """Add an instrument.
 
         Raises
@@ -127,11 +127,13 @@ class BenchBook:
             If the book has an instrument of this name, or cannot be written to.
         """
         name = name_of(instrument, "the instrument")
-        whole_characters(family + notes)
+        whole_characters(family + remarks)
         with self._store.writing("book add") as connection:
             _refuse_double(connection, name)
             instrument_id = book_writing.insert_instrument(connection, uuids=[book_writing.new_uuid()])
-            book_writing.insert_facts(connection, instrument_id, name=name, family=family, notes=notes, set_aside=False)
+            book_writing.insert_facts(
+                connection, instrument_id, name=name, family=family, remarks=remarks, set_aside=False
+            )
 
     @_plainly
     def rename(self, instrument: str, name: str) -> None:
@@ -481,6 +483,6 @@ def _write_facts(
         facts.instrument_id,
         name=facts.name if name is None else name,
         family=facts.family,
-        notes=facts.notes,
+        remarks=facts.remarks,
         set_aside=facts.set_aside if set_aside is None else set_aside,
     )

@@ -23,8 +23,8 @@ def damaged(place: Place, fault: str) -> BookDamagedError:
         cause="a drive that is failing or was pulled out, or another program that wrote into the file",
         remedy="copy the book as it is to a safe place and restore a back-up of your own with `book restore FILE`"
         if backup is None
-        else f"run `{restore_command(backup, place)}`: that is the last good back-up, and the damaged book is set aside "
-        "under another name, not deleted",
+        else f"run `{restore_command(backup, place)}`: that is the last good back-up, and the damaged book is set "
+        "aside under another name, not deleted",
     )
 
 

@@ -26,7 +26,7 @@ class FactsLayout(Layout):
     written_at: Time
     name: Name
     family: Text
-    notes: Text
+    remarks: Text
     set_aside: bool
 
 
@@ -78,7 +78,7 @@ class ConditionsLayout(Layout):
     temperature_c: FiniteFloat | None
     humidity_percent: FiniteFloat | None
     a4_hz: FiniteFloat | None
-    notes: Text
+    remarks: Text
 
 
 class BookedSessionLayout(Layout):

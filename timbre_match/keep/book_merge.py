@@ -145,7 +145,7 @@ class _Merging:
                     instrument_id,
                     name=name_of(facts.name, "the instrument"),
                     family=facts.family,
-                    notes=facts.notes,
+                    remarks=facts.remarks,
                     set_aside=facts.set_aside,
                     fact_uuid=facts.uuid,
                     written_at=facts.written_at,
@@ -176,7 +176,7 @@ class _Merging:
                 instrument_id,
                 name=name,
                 family=facts.family,
-                notes=facts.notes,
+                remarks=facts.remarks,
                 set_aside=facts.set_aside,
             )
             self._renamed.append((facts.name, name))
@@ -280,11 +280,11 @@ def _instrument_body(connection: sqlite3.Connection, instrument_id: int) -> Json
                 "written_at": written_at,
                 "name": name,
                 "family": family,
-                "notes": notes,
+                "remarks": remarks,
                 "set_aside": bool(set_aside),
             }
-            for uuid, written_at, name, family, notes, set_aside in connection.execute(
-                "SELECT uuid, written_at, name, family, notes, set_aside FROM instrument_facts "
+            for uuid, written_at, name, family, remarks, set_aside in connection.execute(
+                "SELECT uuid, written_at, name, family, remarks, set_aside FROM instrument_facts "
                 "WHERE instrument_id = ? ORDER BY written_at, uuid",
                 (instrument_id,),
             )

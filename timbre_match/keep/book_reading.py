@@ -24,7 +24,7 @@ from timbre_match.keep.book_records import (
 from timbre_match.keep.book_writing import CONDITION_COLUMNS, sha256_of
 
 _CURRENT_FACTS = """
-SELECT facts.instrument_id, facts.name, facts.family, facts.notes, facts.set_aside, facts.name_key
+SELECT facts.instrument_id, facts.name, facts.family, facts.remarks, facts.set_aside, facts.name_key
 FROM instrument_facts AS facts
 WHERE facts.id = (
     SELECT id FROM instrument_facts WHERE instrument_id = facts.instrument_id
@@ -44,7 +44,7 @@ class Facts:
     instrument_id: int
     name: str
     family: str
-    notes: str
+    remarks: str
     set_aside: bool
 
 
@@ -118,7 +118,7 @@ def instrument_lines(connection: sqlite3.Connection) -> tuple[InstrumentLine, ..
                 uuid=uuids[facts.instrument_id][0],
                 name=facts.name,
                 family=facts.family,
-                notes=facts.notes,
+                remarks=facts.remarks,
                 set_aside=facts.set_aside,
                 stage_count=len(stages[facts.instrument_id]),
                 session_count=len(days[facts.instrument_id]),
@@ -151,7 +151,7 @@ def read_instrument(connection: sqlite3.Connection, facts: Facts, recordings_fol
         name=facts.name,
         earlier_names=tuple(earlier),
         family=facts.family,
-        notes=facts.notes,
+        remarks=facts.remarks,
         set_aside=facts.set_aside,
         added_at=named[0][1],
         stages=tuple(stages),
@@ -236,7 +236,7 @@ def path_of(stored: str | bytes) -> Path:
 
 
 def _facts(row: tuple[int, str, str, str, int, str]) -> Facts:
-    return Facts(instrument_id=row[0], name=row[1], family=row[2], notes=row[3], set_aside=bool(row[4]))
+    return Facts(instrument_id=row[0], name=row[1], family=row[2], remarks=row[3], set_aside=bool(row[4]))
 
 
 def _instrument_uuids(connection: sqlite3.Connection) -> dict[int, list[str]]:

@@ -25,7 +25,7 @@ class Conditions:
     ----------
     date : str
         YYYY-MM-DD.
-    room, microphone, player, strings, notes : str
+    room, microphone, player, strings, remarks : str
         In the maker's own words.
     microphone_distance_m : float or None
         From the microphone to the instrument, metres.
@@ -52,7 +52,7 @@ class Conditions:
     temperature_c: float | None = None
     humidity_percent: float | None = None
     a4_hz: float | None = None
-    notes: str = ""
+    remarks: str = ""
 
     def __post_init__(self) -> None:
         for value, name, low, high, unit in (
@@ -67,7 +67,7 @@ class Conditions:
                     cause="a slip, or another unit",
                     remedy=f"{low:g} to {high:g}{unit}",
                 )
-        for text in (self.room, self.microphone, self.player, self.bow, self.strings, self.notes):
+        for text in (self.room, self.microphone, self.player, self.bow, self.strings, self.remarks):
             whole_characters(text)
         if self.date:
             # The record that profiles carry knows what a date is.
@@ -170,7 +170,7 @@ class InstrumentLine:
     uuid: str
     name: str
     family: str
-    notes: str
+    remarks: str
     set_aside: bool
     stage_count: int
     session_count: int
@@ -186,7 +186,7 @@ class BookedInstrument:
     name: str
     earlier_names: tuple[str, ...]
     family: str
-    notes: str
+    remarks: str
     set_aside: bool
     added_at: str
     stages: tuple[BookedStage, ...]

@@ -31,7 +31,7 @@ CREATE TABLE instrument_facts (
     name TEXT NOT NULL,
     name_key TEXT NOT NULL,
     family TEXT NOT NULL,
-    notes TEXT NOT NULL,
+    remarks TEXT NOT NULL,
     set_aside INTEGER NOT NULL CHECK (set_aside IN (0, 1))
 );
 CREATE INDEX instrument_facts_of ON instrument_facts (instrument_id, written_at, uuid);
@@ -58,7 +58,7 @@ CREATE TABLE sessions (
     temperature_c REAL,
     humidity_percent REAL,
     a4_hz REAL,
-    notes TEXT NOT NULL
+    remarks TEXT NOT NULL
 );
 CREATE INDEX sessions_of ON sessions (stage_id);
 CREATE TABLE session_marks (

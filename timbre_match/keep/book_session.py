@@ -176,16 +176,17 @@ def write_profile(
         noted = profile.session
         conditions = Conditions(date=noted.date, room=noted.room, microphone=noted.microphone, a4_hz=profile.a4_hz)
     # Made from what it says, so that the same profile taken in on two machines is the same session.
-    session_uuid = str(uuids.uuid5(uuids.NAMESPACE_OID, book_writing.sha256_of(profile_text(profile))))
+    sha256 = book_writing.sha256_of(profile_text(profile))
+    session_uuid = str(uuids.uuid5(uuids.NAMESPACE_OID, sha256))
     connection = store.connection
-    if connection.execute("SELECT 1 FROM sessions WHERE uuid = ?", (session_uuid,)).fetchone() is not None:
+    if connection.execute("SELECT 1 FROM measurements WHERE profile_sha256 = ?", (sha256,)).fetchone() is not None:
         return False
     key = name_key(name)
     if book_reading.instrument_by_key(connection, key) is None:
         with store.writing("book import") as writing:
             instrument_id = book_writing.insert_instrument(writing, uuids=[book_writing.new_uuid()])
             book_writing.insert_facts(
-                writing, instrument_id, name=name, family=profile.family, notes="", set_aside=False
+                writing, instrument_id, name=name, family=profile.family, remarks="", set_aside=False
             )
     facts = book_reading.find_instrument(connection, name)
     takes = tuple(

@@ -23,7 +23,7 @@ CONDITION_COLUMNS = (
     "temperature_c",
     "humidity_percent",
     "a4_hz",
-    "notes",
+    "remarks",
 )
 
 
@@ -56,7 +56,7 @@ def insert_facts(
     *,
     name: str,
     family: str,
-    notes: str,
+    remarks: str,
     set_aside: bool,
     fact_uuid: str | None = None,
     written_at: str | None = None,
@@ -68,9 +68,9 @@ def insert_facts(
         ).fetchone()[0]
         written_at = _after(latest)
     connection.execute(
-        "INSERT INTO instrument_facts (uuid, instrument_id, written_at, name, name_key, family, notes, set_aside) "
+        "INSERT INTO instrument_facts (uuid, instrument_id, written_at, name, name_key, family, remarks, set_aside) "
         "VALUES (?, ?, ?, ?, ?, ?, ?, ?)",
-        (fact_uuid or new_uuid(), instrument_id, written_at, name, name_key(name), family, notes, int(set_aside)),
+        (fact_uuid or new_uuid(), instrument_id, written_at, name, name_key(name), family, remarks, int(set_aside)),
     )
 
 
