@@ -1,6 +1,5 @@
 """Names as the book takes them: any script, any sign, but something that can be seen."""
 
-import difflib
 import unicodedata
 from collections.abc import Iterable
 
@@ -36,6 +35,8 @@ def name_key(name: str) -> str:
 
 def unknown(name: str, known: Iterable[str], *, what: str, remedy: str) -> UnknownNameError:
     """Make the error for a name that the book does not have, with those that are nearly like it."""
+    import difflib
+
     by_key = {name_key(other): other for other in known}
     near = [by_key[key] for key in difflib.get_close_matches(name_key(name), by_key, n=3, cutoff=0.6)]
     named = " or ".join(f'"{plain(other)}"' for other in near)

@@ -4,7 +4,6 @@ import dataclasses
 import uuid as uuids
 from collections.abc import Sequence
 from dataclasses import dataclass
-from importlib import metadata
 from pathlib import Path
 from typing import TYPE_CHECKING, TypedDict
 
@@ -218,6 +217,8 @@ def profile_about(profile: "Profile") -> About:
 
 def program_version() -> str:
     """Version of this program, for the record."""
+    from importlib import metadata
+
     try:
         return metadata.version("timbre-match")
     except metadata.PackageNotFoundError:
