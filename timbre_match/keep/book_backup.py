@@ -53,9 +53,9 @@ def back_up(store: Store, file: Path) -> dict[str, int]:
     if size_of(target.write_ahead):
         raise BookError("this book is open in another program", where=str(file), remedy="name another file")
     with plain_errors(target), _alone(store, "book backup") as lock:
-        counts = copy_database(store.connection, target.book, lock)
+        # The recordings first, so that where the book is, all that it keeps is.
         _copy_kept(store.connection, store.place, target, lock)
-    return counts
+        return copy_database(store.connection, target.book, lock)
 
 
 def back_up_of_itself(store: Store, lock: book_lock.Held) -> None:
@@ -103,39 +103,34 @@ def restore(file: Path, place: Place) -> tuple[dict[str, int], Path | None]:
             place.book.parent.mkdir(parents=True, exist_ok=True)
         check_file_place(place.book)
         with locked(place, "book restore") as lock:
-            replaced = _put_back(file, place, lock)
             source = open_read_only(file)
             try:
                 _copy_kept(source, Place(book=file), place, lock)
+                replaced = _put_back(source, place, lock)
             finally:
                 source.close()
-            lock.note_finished()
     return counts, replaced
 
 
-def _put_back(file: Path, place: Place, lock: book_lock.Held) -> Path | None:
-    source = open_read_only(file)
-    try:
-        replaced = dated(place.book.with_name(f"{place.book.stem}_replaced.sqlite"))
-        if not size_of(place.book):
-            _move_side_files(place.book, replaced)
-            copy_database(source, place.book, lock)
-            return None
-        present = _sound(place)
-        if present is None:
-            _set_aside(source, place, replaced, lock)
-            return replaced
-        try:
-            copy_database(present, replaced, lock)
-            # One transaction of the present book: whoever has it open sees the one or the other, as a whole.
-            source.backup(present)
-            if row_counts(present) != row_counts(source):
-                raise BookDamagedError("the restored book does not hold the same rows", where=str(place.book))
-        finally:
-            present.close()
+def _put_back(source: sqlite3.Connection, place: Place, lock: book_lock.Held) -> Path | None:
+    replaced = dated(place.book.with_name(f"{place.book.stem}_replaced.sqlite"))
+    if not size_of(place.book):
+        _move_side_files(place.book, replaced)
+        copy_database(source, place.book, lock)
+        return None
+    present = _sound(place)
+    if present is None:
+        _set_aside(source, place, replaced, lock)
         return replaced
+    try:
+        copy_database(present, replaced, lock)
+        # One transaction of the present book: whoever has it open sees the one or the other, as a whole.
+        source.backup(present)
+        if row_counts(present) != row_counts(source):
+            raise BookDamagedError("the restored book does not hold the same rows", where=str(place.book))
     finally:
-        source.close()
+        present.close()
+    return replaced
 
 
 def _sound(place: Place) -> sqlite3.Connection | None:
