@@ -7,7 +7,7 @@ from pathlib import Path
 
 import timbre_match as tm
 from tests.keep.examples import profile
-from timbre_match.keep.book_audio import AudioFile
+from timbre_match.keep.book_audio import audio_file
 from timbre_match.keep.book_copy import checked_counts
 from timbre_match.keep.book_place import place_of, size_of
 from timbre_match.keep.book_reading import find_instrument
@@ -41,21 +41,20 @@ def log_without_measuring(
     book: Path, instrument: str, stage: str, files: Sequence[Path], *, keep_audio: bool = False, room: str = ""
 ) -> str:
     """Write a session into a book from files with any content; returns its identifier."""
+    uuid, trouble = write_down(book, instrument, stage, files, keep_audio=keep_audio, room=room)
+    assert trouble == ()
+    return uuid
+
+
+def write_down(
+    book: Path, instrument: str, stage: str, files: Sequence[Path], *, keep_audio: bool = False, room: str = ""
+) -> tuple[str, tuple[str, ...]]:
+    """The same, with what went wrong with the back-up."""
     measured = profile_of(*(file.read_bytes() for file in files), instrument=instrument, stage=stage)
-    takes = tuple(
-        (
-            AudioFile(
-                name=file.name,
-                sha256=take.recordings[0].sha256,
-                size_bytes=file.stat().st_size,
-                path=file,
-            ),
-        )
-        for file, take in zip(files, measured.takes, strict=True)
-    )
+    takes = tuple((audio_file(file),) for file in files)
     store = Store(place_of(book), create=False)
     try:
-        uuid, trouble = write_session(
+        return write_session(
             store,
             find_instrument(store.connection, instrument),
             stage,
@@ -65,8 +64,6 @@ def log_without_measuring(
         )
     finally:
         store.close()
-    assert trouble == ()
-    return uuid
 
 
 def assert_whole(book: Path, promised: Sequence[str] = (), *, kept_for_others: bool = False) -> None:

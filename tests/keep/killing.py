@@ -1,7 +1,7 @@
 """Work on a bench book that is killed at a random moment, and what has to be true afterwards.
 
-Run as a program it is the work: ``python -m tests.keep.killing JOB FOLDER`` does one job over and over, and says on
-standard output what has returned.
+Run as a program it is the work: ``python -m tests.keep.killing JOB FOLDER [COUNT]`` does one job over and over, and
+says on standard output what has returned.
 """
 
 import os
@@ -51,6 +51,27 @@ def kill_at_random(job: str, folder: Path, chance: random.Random, *, longest_s: 
     said, err = worker.communicate(timeout=60)
     assert (first, worker.returncode) == (READY, -signal.SIGKILL), err
     return Killed(said=tuple(said.split()), after_s=after_s)
+
+
+def log_side_by_side(folder: Path, processes: int, count: int) -> list[str]:
+    """Let several processes log sessions into one book at once; returns the identifiers of all that returned."""
+    workers = [
+        subprocess.Popen(
+            [sys.executable, "-m", "tests.keep.killing", "logging", str(folder), str(count)],
+            stdout=subprocess.PIPE,
+            stderr=subprocess.PIPE,
+            text=True,
+            cwd=ROOT,
+            env={**os.environ, "OMP_NUM_THREADS": "1", "PYTHONPATH": str(ROOT)},
+        )
+        for _ in range(processes)
+    ]
+    said = []
+    for worker in workers:
+        out, err = worker.communicate(timeout=600)
+        assert (worker.returncode, err) == (0, "")
+        said += out.split()[1:]
+    return said
 
 
 def prepare(job: str, folder: Path) -> None:
@@ -157,7 +178,7 @@ def main() -> None:
     import timbre_match.measure.takes  # noqa: F401
 
     print(READY, flush=True)
-    for number in range(1_000_000):
+    for number in range(int(sys.argv[3]) if len(sys.argv) > 3 else 1_000_000):
         print(job(folder, number), flush=True)
 
 

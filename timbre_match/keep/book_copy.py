@@ -8,7 +8,7 @@ from datetime import UTC, datetime
 from pathlib import Path
 
 from timbre_match.errors import BookDamagedError, TimbreMatchError
-from timbre_match.keep.book_lock import WAIT_S, Held
+from timbre_match.keep import book_lock
 from timbre_match.keep.book_place import SIDE_FILES, Place, size_of
 from timbre_match.keep.book_schema import refuse_version, table_names, version_of
 from timbre_match.keep.writing import sync_folder, temporary_beside
@@ -19,7 +19,7 @@ _PAGE_SIZE = 4096
 def connected(path: Path, options: str) -> sqlite3.Connection:
     """Connect to a database that is there, and read from it once, so that a fault shows here."""
     connection = sqlite3.connect(
-        f"{path.absolute().as_uri()}?{options}", uri=True, timeout=WAIT_S, isolation_level=None
+        f"{path.absolute().as_uri()}?{options}", uri=True, timeout=book_lock.WAIT_S, isolation_level=None
     )
     try:
         connection.execute(f"PRAGMA page_size = {_PAGE_SIZE}")
@@ -39,7 +39,7 @@ def open_read_only(path: Path) -> sqlite3.Connection:
     return connected(path, "mode=ro" if size_of(beside) else "mode=ro&immutable=1")
 
 
-def copy_database(source: sqlite3.Connection, target: Path, lock: Held) -> dict[str, int]:
+def copy_database(source: sqlite3.Connection, target: Path, lock: book_lock.Held) -> dict[str, int]:
     """Copy a whole database to a file, which is there complete and checked, or not at all.
 
     Returns
@@ -79,7 +79,7 @@ def copy_database(source: sqlite3.Connection, target: Path, lock: Held) -> dict[
 
 
 @contextmanager
-def temporary_database(target: Path, lock: Held) -> Iterator[Path]:
+def temporary_database(target: Path, lock: book_lock.Held) -> Iterator[Path]:
     """Give a temporary name beside `target`, written down in the lock; what is there at the end is removed."""
     target.parent.mkdir(exist_ok=True)
     temporary = temporary_beside(target)

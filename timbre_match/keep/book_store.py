@@ -24,6 +24,7 @@ class Store:
         """Open the book; with `create`, begin a new one where there is none."""
         self.place = place
         self.read_only = False
+        self._no_room = False
         if not place.book.exists():
             _begin(place, create=create)
         with contextlib.ExitStack() as undo:
@@ -51,11 +52,17 @@ class Store:
             If the book can only be read, was exchanged for another meanwhile, or is being written to by another
             process for longer than :data:`~timbre_match.keep.book_lock.WAIT_S`.
         """
+        if self._no_room:
+            raise BookError(
+                "the disk is full, so the bench book can be read, but not written to; nothing was written",
+                where=str(self.place.book),
+                remedy="make room, then run the command again",
+            )
         if self.read_only:
             raise BookError(
                 "this bench book can be read, but not written to; nothing was written",
                 where=str(self.place.book),
-                cause="a drive or folder that is write-protected, or belongs to someone else, or is full",
+                cause="a drive or folder that is write-protected, or belongs to someone else",
                 remedy="copy the book to a folder of your own, and name it with --book",
             )
         with plain_errors(self.place), locked(self.place, doing) as lock:
@@ -101,6 +108,7 @@ class Store:
                 # On a full disk SQLite has no room for its own files beside the book, which reading can do without.
                 if not _lacks_room(error) or size_of(write_ahead):
                     raise
+                self._no_room = True
         self.read_only = True
         return connected(book, "mode=ro" if size_of(write_ahead) else "mode=ro&immutable=1")
 
