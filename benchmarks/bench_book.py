@@ -3,9 +3,9 @@
     python -m benchmarks.bench_book                       # 300 instruments, 5,000 sessions
     python -m benchmarks.bench_book --side-by-side 100    # two processes, 100 sessions each, nothing else
 
-The book is filled without measuring: every session has three takes and the profile of the demo's violin (14 notes), its
-numbers as they are. Times on the clock: of Python calls in this process, the middle of several; of commands in new processes, of
-which the start of the interpreter and of the libraries is a part, with that start by itself beside them.
+The book is filled without measuring: every session has three takes and the profile of the demo's violin (14 notes).
+Times on the clock, the middle of several: of calls in this process, and of commands in new processes, which have to
+start the interpreter and the libraries first (`--help` does little else).
 """
 
 import argparse

@@ -1,4 +1,7 @@
-"""The bench book: a maker's record of instruments, stages, sessions, takes and measurements, in one file."""
+"""The bench book: a maker's record of instruments, stages, sessions, takes and measurements, in one file.
+
+What measures, checks and moves is imported where it is used, so that a list of instruments is there at once.
+"""
 
 import sqlite3
 from collections.abc import Callable, Sequence
@@ -9,9 +12,7 @@ from typing import TYPE_CHECKING, ParamSpec, Self, TypeVar
 
 from timbre_match.advise.wording import plain
 from timbre_match.errors import BookError
-from timbre_match.keep import book_backup, book_reading, book_writing
-from timbre_match.keep.book_again import measure_sessions_again, measurement_of, session_of, stage_of
-from timbre_match.keep.book_checking import CheckProgress, check_book
+from timbre_match.keep import book_reading, book_writing
 from timbre_match.keep.book_errors import plain_errors
 from timbre_match.keep.book_names import name_key, name_of
 from timbre_match.keep.book_place import Place, place_of
@@ -29,11 +30,11 @@ from timbre_match.keep.book_records import (
     TargetLine,
     whole_characters,
 )
-from timbre_match.keep.book_session import listening_for, measure_session, write_profile, write_session
 from timbre_match.keep.book_store import Store
 
 if TYPE_CHECKING:
     from timbre_match.compare.target import Target
+    from timbre_match.keep.book_checking import CheckProgress
     from timbre_match.measure.profile import Profile
     from timbre_match.measure.takes import Progress
 
@@ -164,6 +165,8 @@ class BenchBook:
         BookError
             If the book cannot be written to.
         """
+        from timbre_match.keep.book_again import session_of
+
         with self._store.writing("book aside") as connection:
             facts = book_reading.find_instrument(connection, instrument)
             if session is None:
@@ -231,6 +234,8 @@ class BenchBook:
         BookError
             If the session cannot be written.
         """
+        from timbre_match.keep.book_session import listening_for, measure_session, write_session
+
         conditions = conditions or Conditions()
         stage, control_name = name_of(stage, "the stage"), name_of(control_name, "the control")
         with plain_errors(self.place):
@@ -288,6 +293,8 @@ class BenchBook:
         BookError
             If the book cannot be written to.
         """
+        from timbre_match.keep.book_again import measure_sessions_again, stage_of
+
         shown = self.show(instrument)
         stages = [stage_of(shown, stage)] if stage else list(shown.stages)
         return measure_sessions_again(
@@ -333,6 +340,7 @@ class BenchBook:
         BookDamagedError
             If the profile is not what was written.
         """
+        from timbre_match.keep.book_again import measurement_of
         from timbre_match.keep.files import profile_from_json
 
         shown = self.show(instrument)
@@ -362,6 +370,8 @@ class BenchBook:
         BookError
             If the book cannot be written to.
         """
+        from timbre_match.keep.book_session import write_profile
+
         return write_profile(self._store, profile, instrument=instrument, stage=stage, conditions=conditions)
 
     @_plainly
@@ -390,7 +400,7 @@ class BenchBook:
         return target_from_json(book_reading.target_text(self._store.connection, name), where=str(self.place.book))
 
     @_plainly
-    def check(self, *, look_in: Sequence[str | Path] = (), progress: CheckProgress | None = None) -> Checked:
+    def check(self, *, look_in: Sequence[str | Path] = (), progress: "CheckProgress | None" = None) -> Checked:
         """Read the whole book, and look whether every recording is where it was noted.
 
         Parameters
@@ -400,6 +410,8 @@ class BenchBook:
         progress : CheckProgress, optional
             Wraps the recordings as they are looked at.
         """
+        from timbre_match.keep.book_checking import check_book
+
         return check_book(self._store, [Path(folder) for folder in look_in], progress)
 
     def backup(self, file: str | Path) -> dict[str, int]:
@@ -408,7 +420,9 @@ class BenchBook:
         Returns the number of rows of each table. For the rest see
         :func:`timbre_match.keep.book_backup.back_up`.
         """
-        return book_backup.back_up(self._store, Path(file))
+        from timbre_match.keep.book_backup import back_up
+
+        return back_up(self._store, Path(file))
 
     @staticmethod
     def restore(file: str | Path, book: str | Path | None = None) -> tuple[dict[str, int], Path | None]:
@@ -417,7 +431,9 @@ class BenchBook:
         Returns the number of rows of each table, and where the book that was there lies now. For the rest see
         :func:`timbre_match.keep.book_backup.restore`.
         """
-        restored = book_backup.restore(Path(file), place_of(book))
+        from timbre_match.keep.book_backup import restore
+
+        restored = restore(Path(file), place_of(book))
         Store(place_of(book), create=False).close()
         return restored
 
