@@ -9,7 +9,7 @@ import pytest
 from tests.cli.outputs import PLAYED, content, parsed, short_note
 from tests.command_line import CommandLine, run_process
 from tests.intake.sounds import write
-from tests.keep.test_bench_book import NAMES
+from tests.keep.books import NAMES
 from timbre_match.units import note_to_hz
 
 CONDITIONS = {

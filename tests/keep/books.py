@@ -16,6 +16,22 @@ from timbre_match.keep.book_session import Part, write_session
 from timbre_match.keep.book_store import Store
 from timbre_match.measure.profile import Profile, Source
 
+NAMES = (
+    "Heron 7",
+    "Geige Nr. 3 „Häher“",
+    'O\'Brien "the loud one"',
+    "鷺七号",
+    "🎻 no. 7 👩‍🔧",
+    "كمان ٧",
+    "=cmd()",
+    "[red]varnish[/red]",
+    "<script>alert(1)</script>",
+    "x" * 500,
+    "'; DROP TABLE instruments; --",
+    "a\x1b[2Jb\nc",
+)
+"""Names as makers give them, and as someone might who means harm."""
+
 STEP_2 = """
 CREATE TABLE varnishes (id INTEGER PRIMARY KEY, uuid TEXT NOT NULL UNIQUE, name TEXT NOT NULL);
 INSERT INTO varnishes (uuid, name) SELECT uuid, 'none noted' FROM sessions;

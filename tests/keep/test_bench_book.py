@@ -9,28 +9,13 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 import timbre_match as tm
-from tests.keep.books import log_without_measuring, profile_of
+from tests.keep.books import NAMES, log_without_measuring, profile_of
 from tests.keep.examples import profile
 from timbre_match.compare.target import Target
 from timbre_match.errors import BookError, TimbreMatchError, UnknownNameError
 from timbre_match.keep.book_names import name_key
 from timbre_match.keep.book_place import place_of
 from timbre_match.keep.files import profile_to_json
-
-NAMES = (
-    "Heron 7",
-    "Geige Nr. 3 „Häher“",
-    'O\'Brien "the loud one"',
-    "鷺七号",
-    "🎻 no. 7 👩‍🔧",
-    "كمان ٧",
-    "=cmd()",
-    "[red]varnish[/red]",
-    "<script>alert(1)</script>",
-    "x" * 500,
-    "'; DROP TABLE instruments; --",
-    "a\x1b[2Jb\nc",
-)
 
 
 @pytest.fixture

@@ -3,18 +3,16 @@
 What measures, checks and moves is imported where it is used, so that a list of instruments is there at once.
 """
 
-import sqlite3
 from collections.abc import Callable, Sequence
 from functools import wraps
 from pathlib import Path
 from types import TracebackType
 from typing import TYPE_CHECKING, ParamSpec, Self, TypeVar
 
-from timbre_match.advise.wording import plain
-from timbre_match.errors import BookError
-from timbre_match.keep import book_reading, book_writing
+from timbre_match.keep import book_reading
 from timbre_match.keep.book_errors import plain_errors
-from timbre_match.keep.book_names import name_key, name_of
+from timbre_match.keep.book_instruments import add_instrument, rename_instrument, set_aside
+from timbre_match.keep.book_names import name_of
 from timbre_match.keep.book_place import Place, place_of
 from timbre_match.keep.book_reading import Facts
 from timbre_match.keep.book_records import (
@@ -28,7 +26,6 @@ from timbre_match.keep.book_records import (
     Merged,
     Role,
     TargetLine,
-    whole_characters,
 )
 from timbre_match.keep.book_store import Store
 
@@ -127,14 +124,7 @@ class BenchBook:
         BookError
             If the book has an instrument of this name, or cannot be written to.
         """
-        name = name_of(instrument, "the instrument")
-        whole_characters(family + remarks)
-        with self._store.writing("book add") as connection:
-            _refuse_double(connection, name)
-            instrument_id = book_writing.insert_instrument(connection, uuids=[book_writing.new_uuid()])
-            book_writing.insert_facts(
-                connection, instrument_id, name=name, family=family, remarks=remarks, set_aside=False
-            )
+        add_instrument(self._store, instrument, family=family, remarks=remarks)
 
     @_plainly
     def rename(self, instrument: str, name: str) -> None:
@@ -145,12 +135,7 @@ class BenchBook:
         UnknownNameError, BookError
             As :meth:`add`, and if there is no such instrument.
         """
-        name = name_of(name, "the instrument")
-        with self._store.writing("book rename") as connection:
-            facts = book_reading.find_instrument(connection, instrument)
-            if name_key(name) != name_key(facts.name):
-                _refuse_double(connection, name)
-            _write_facts(connection, facts, name=name)
+        rename_instrument(self._store, instrument, name)
 
     @_plainly
     def set_aside(self, instrument: str, *, session: int | None = None, aside: bool = True) -> None:
@@ -165,17 +150,7 @@ class BenchBook:
         BookError
             If the book cannot be written to.
         """
-        from timbre_match.keep.book_again import session_of
-
-        with self._store.writing("book aside") as connection:
-            facts = book_reading.find_instrument(connection, instrument)
-            if session is None:
-                _write_facts(connection, facts, set_aside=aside)
-                return
-            found = session_of(self.show(instrument), session)
-            book_writing.insert_session_mark(
-                connection, book_reading.session_id_of(connection, found.uuid), set_aside=aside
-            )
+        set_aside(self._store, instrument, session=session, aside=aside)
 
     def log(
         self,
@@ -476,29 +451,3 @@ class BenchBook:
         with plain_errors(self.place):
             shown = book_reading.read_instrument(self._store.connection, facts, self.place.recordings)
         return next(session for stage in shown.stages for session in stage.sessions if session.uuid == uuid)
-
-
-def _refuse_double(connection: sqlite3.Connection, name: str) -> None:
-    present = book_reading.instrument_by_key(connection, name_key(name))
-    if present is not None:
-        aside = ", and is set aside" if present.set_aside else ""
-        raise BookError(
-            f'there is an instrument "{plain(present.name)}" in the bench book already{aside}',
-            cause="it was added before; capitals and spacing make no second name",
-            remedy="choose another name, or bring it back with `book aside INSTRUMENT --back`"
-            if present.set_aside
-            else "log its sessions, or choose another name",
-        )
-
-
-def _write_facts(
-    connection: sqlite3.Connection, facts: Facts, *, name: str | None = None, set_aside: bool | None = None
-) -> None:
-    book_writing.insert_facts(
-        connection,
-        facts.instrument_id,
-        name=facts.name if name is None else name,
-        family=facts.family,
-        remarks=facts.remarks,
-        set_aside=facts.set_aside if set_aside is None else set_aside,
-    )
