@@ -10,6 +10,7 @@ import sys
 import tempfile
 import time
 from collections.abc import Iterator
+from datetime import datetime, tzinfo
 from pathlib import Path
 
 import pytest
@@ -25,7 +26,7 @@ from timbre_match.errors import (
     TimbreMatchError,
     UnknownNameError,
 )
-from timbre_match.keep import book_backup, book_lock
+from timbre_match.keep import book_backup, book_lock, book_writing
 from timbre_match.keep.book_place import place_of
 from timbre_match.keep.book_store import Store
 
@@ -288,6 +289,43 @@ def test_a_back_up_that_fails_leaves_the_session(book: Path, tmp_path: Path, mon
     assert "is in the book" in trouble
     assert os.strerror(errno.ENOSPC) in trouble
     assert session_count(book) == 3
+
+
+def test_a_damaged_book_is_not_backed_up_over_a_good_one(book: Path, tmp_path: Path) -> None:
+    connection = sqlite3.connect(book)
+    connection.execute("DROP TRIGGER profiles_no_delete")
+    connection.execute("DELETE FROM profiles WHERE measurement_id = 1")
+    root = connection.execute("SELECT rootpage FROM sqlite_master WHERE name = 'profiles'").fetchone()[0]
+    connection.commit()
+    connection.close()
+    whole = book.read_bytes()
+    book.write_bytes(whole[: 4096 * (root - 1)] + bytes(4096) + whole[4096 * root :])
+    good = {path: path.read_bytes() for path in place_of(book).backups.iterdir()}
+    with tm.BenchBook.open(book) as opened:
+        checked = opened.check()
+        assert not checked.sound
+        assert checked.last_good in good
+        with pytest.raises(BookDamagedError, match="not whole, and was not kept"):
+            opened.backup(tmp_path / "copy.sqlite")
+    assert not (tmp_path / "copy.sqlite").exists()
+    assert {path: path.read_bytes() for path in place_of(book).backups.iterdir()} == good
+
+
+@pytest.mark.parametrize("seconds_back", [10, 86_400])
+def test_a_clock_that_was_put_back(seconds_back: int, book: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    class Earlier(datetime):
+        @classmethod
+        def now(cls, tz: tzinfo | None = None) -> "Earlier":
+            return cls.fromtimestamp(time.time() - seconds_back, tz)
+
+    monkeypatch.setattr(book_writing, "datetime", Earlier)
+    with tm.BenchBook.open(book) as opened:
+        for name in ("Wren", "Lark"):
+            opened.rename(opened.list()[0].name, name)
+        assert opened.show("Lark").earlier_names == ("Heron 7", "Wren")
+        opened.set_aside("Lark", session=1)
+        opened.set_aside("Lark", session=1, aside=False)
+        assert opened.list()[0].session_count == 2
 
 
 def test_back_ups_are_the_last_three(book: Path) -> None:

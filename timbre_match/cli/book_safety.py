@@ -37,6 +37,7 @@ def check(
                 "book": place,
                 "sound": checked.sound,
                 "damage": checked.damage,
+                "last_good": checked.last_good,
                 "recordings": checked.recordings,
                 "unmeasured": checked.unmeasured,
                 "rows": checked.counts,

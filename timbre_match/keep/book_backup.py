@@ -2,6 +2,7 @@
 
 import os
 import sqlite3
+import time
 from collections.abc import Iterator
 from contextlib import contextmanager
 from pathlib import Path
@@ -52,7 +53,7 @@ def back_up(store: Store, file: Path) -> dict[str, int]:
         checked_counts(target.book)
     if size_of(target.write_ahead):
         raise BookError("this book is open in another program", where=str(file), remedy="name another file")
-    with plain_errors(target), _alone(store, "book backup") as lock:
+    with _alone(store, "book backup") as lock, plain_errors(target):
         # The recordings first, so that where the book is, all that it keeps is.
         _copy_kept(store.connection, store.place, target, lock)
         return copy_database(store.connection, target.book, lock)
@@ -70,7 +71,7 @@ def back_up_of_itself(store: Store, lock: book_lock.Held) -> None:
     """
     made = sorted(store.place.backups.glob("after_*.sqlite"), key=lambda path: path.stat().st_mtime_ns)
     if made and size_of(store.place.book) > _SMALL_BYTES:
-        age_s = store.place.book.stat().st_mtime - made[-1].stat().st_mtime
+        age_s = time.time() - made[-1].stat().st_mtime
         if 0.0 <= age_s < _LARGE_EVERY_S:
             return
     copy_database(store.connection, dated(store.place.backups / "after.sqlite"), lock)

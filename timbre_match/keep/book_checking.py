@@ -8,7 +8,7 @@ from pathlib import Path
 from timbre_match.errors import BookDamagedError
 from timbre_match.keep import book_writing
 from timbre_match.keep.book_audio import AudioFile, audio_file, lying
-from timbre_match.keep.book_copy import damage_in, row_counts
+from timbre_match.keep.book_copy import damage_in, last_good, row_counts
 from timbre_match.keep.book_reading import facts_of, path_of, unpacked
 from timbre_match.keep.book_records import Checked, RecordingState, UnmeasuredTake
 from timbre_match.keep.book_store import Store
@@ -20,12 +20,17 @@ CheckProgress = Callable[[Iterable[object], int], Iterable[object]]
 def check_book(store: Store, look_in: Sequence[Path], progress: CheckProgress | None) -> Checked:
     """Check everything; recordings that were moved into one of the folders get their new place noted."""
     connection = store.connection
-    damage = [*damage_in(connection), *_altered_texts(connection)]
+    damage = damage_in(connection)
+    if damage:
+        # What else is in it cannot be relied upon.
+        return Checked(damage=tuple(damage), last_good=last_good(store.place), recordings=(), unmeasured=(), counts={})
+    damage = _altered_texts(connection)
     states = _states(store, progress)
     if look_in and any(state.lying != "in place" for state in states) and _find_again(store, states, look_in):
         states = _states(store, progress)
     return Checked(
         damage=tuple(damage),
+        last_good=last_good(store.place) if damage else None,
         recordings=tuple(states),
         unmeasured=tuple(_unmeasured(connection)),
         counts=row_counts(connection),

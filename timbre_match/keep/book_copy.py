@@ -63,19 +63,26 @@ def copy_database(source: sqlite3.Connection, target: Path, lock: book_lock.Held
             source.backup(copy)
         finally:
             copy.close()
-        counts = checked_counts(temporary)
+        try:
+            counts = checked_counts(temporary)
+        except BookDamagedError as error:
+            raise _not_whole(target, error.what) from error
         if counts != row_counts(source):
-            raise BookDamagedError(
-                "the copy does not hold the same rows as the book; it was not kept",
-                where=str(target),
-                cause="a failing drive",
-                remedy="choose another place, and try again",
-            )
+            raise _not_whole(target, "it does not hold the same rows")
         with temporary.open("r+b") as file:
             os.fsync(file.fileno())
         temporary.replace(target)
         sync_folder(target.parent)
     return counts
+
+
+def _not_whole(target: Path, fault: str) -> BookDamagedError:
+    return BookDamagedError(
+        f"the copy of the book is not whole, and was not kept: {fault}",
+        where=str(target),
+        cause="the book itself is damaged, or one of the drives is failing",
+        remedy="run `timbre-match book check`; if the book is sound, choose another place for the copy",
+    )
 
 
 @contextmanager
@@ -131,11 +138,17 @@ def checked_counts(path: Path) -> dict[str, int]:
 
 def damage_in(connection: sqlite3.Connection) -> list[str]:
     """All that is wrong with a database: its pages, its indices, and rows that point to rows that are not there."""
-    answers = [str(row[0]) for row in connection.execute("PRAGMA integrity_check(20)")]
-    faults = [] if answers == ["ok"] else answers
-    faults += [
-        f"a row of {row[0]} points to one that is not there" for row in connection.execute("PRAGMA foreign_key_check")
-    ]
+    faults = []
+    try:
+        answers = [str(row[0]) for row in connection.execute("PRAGMA integrity_check(20)")]
+        faults += [] if answers == ["ok"] else answers
+        faults += [
+            f"a row of {row[0]} points to one that is not there"
+            for row in connection.execute("PRAGMA foreign_key_check")
+        ]
+    except sqlite3.DatabaseError as error:
+        # So damaged that the check itself breaks off.
+        faults.append(str(error))
     return faults
 
 

@@ -253,14 +253,17 @@ class Checked:
     ----------
     damage : tuple of str
         What is wrong inside the book itself; empty for a sound one.
+    last_good : Path or None
+        For a damaged book, the latest of its own back-ups that is whole.
     recordings : tuple of RecordingState
-        Every noted place of every recording.
+        Every noted place of every recording; of a damaged book none, as nothing in it can be relied upon.
     unmeasured : tuple of UnmeasuredTake
     counts : dict of str to int
         Rows of each table.
     """
 
     damage: tuple[str, ...]
+    last_good: Path | None
     recordings: tuple[RecordingState, ...]
     unmeasured: tuple[UnmeasuredTake, ...]
     counts: dict[str, int]

@@ -1,6 +1,7 @@
 """Sessions measured, measured again, and written down whole."""
 
 import dataclasses
+import sqlite3
 import uuid as uuids
 from collections.abc import Sequence
 from dataclasses import dataclass
@@ -159,8 +160,8 @@ def write_session(
         lock.note_finished()
         try:
             back_up_of_itself(store, lock)
-        except (TimbreMatchError, OSError) as error:
-            what = error.what if isinstance(error, TimbreMatchError) else error.strerror or str(error)
+        except (TimbreMatchError, OSError, sqlite3.Error) as error:
+            what = getattr(error, "what", None) or getattr(error, "strerror", None) or str(error)
             return session_uuid, (f"The session is in the book, but the back-up after it could not be made: {what}.",)
     return session_uuid, ()
 

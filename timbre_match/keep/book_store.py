@@ -25,8 +25,9 @@ class Store:
         self.place = place
         self.read_only = False
         self._no_room = False
-        if not place.book.exists():
-            _begin(place, create=create)
+        with plain_errors(place):
+            if not place.book.exists():
+                _begin(place, create=create)
         with contextlib.ExitStack() as undo:
             with plain_errors(place):
                 missing = _missing_bytes(place)
@@ -210,9 +211,8 @@ def _begin(place: Place, *, create: bool) -> None:
         )
     if not create:
         raise no_book(place)
-    with plain_errors(place):
-        folder.mkdir(parents=True, exist_ok=True)
-        place.book.touch()
+    folder.mkdir(parents=True, exist_ok=True)
+    place.book.touch()
 
 
 def _checked_version(connection: sqlite3.Connection, place: Place) -> int | None:

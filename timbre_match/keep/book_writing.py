@@ -186,6 +186,11 @@ def insert_measurement(
     measured_at: str | None = None,
 ) -> None:
     """Add the profile of a session's takes, as the text of a profile file; an earlier one stays."""
+    if measured_at is None:
+        latest = connection.execute(
+            "SELECT MAX(measured_at) FROM measurements WHERE session_id = ? AND role = ?", (session_id, role)
+        ).fetchone()[0]
+        measured_at = _after(latest)
     measurement_id = _inserted(
         connection,
         "INSERT INTO measurements "
@@ -195,7 +200,7 @@ def insert_measurement(
             measurement_uuid or new_uuid(),
             session_id,
             role,
-            measured_at or now(),
+            measured_at,
             measured_with,
             instrument,
             note_count,
@@ -219,9 +224,14 @@ def insert_target(
     added_at: str | None = None,
 ) -> None:
     """Add a target, as the text of a target file; an earlier one of the same name stays."""
+    if added_at is None:
+        latest = connection.execute(
+            "SELECT MAX(added_at) FROM targets WHERE name_key = ?", (name_key(name),)
+        ).fetchone()[0]
+        added_at = _after(latest)
     connection.execute(
         "INSERT INTO targets (uuid, added_at, name, name_key, text_sha256, text_zlib) VALUES (?, ?, ?, ?, ?, ?)",
-        (target_uuid or new_uuid(), added_at or now(), name, name_key(name), sha256_of(text), packed(text)),
+        (target_uuid or new_uuid(), added_at, name, name_key(name), sha256_of(text), packed(text)),
     )
 
 

@@ -81,6 +81,9 @@ def check_page(checked: Checked) -> RenderableType:
     parts: list[RenderableType] = []
     if checked.damage:
         parts += [Text("The book is damaged", "bold"), *(_item(plain(each, 300)) for each in checked.damage[:_LISTED])]
+        if checked.last_good is not None:
+            good = plain(str(checked.last_good), 700)
+            parts.append(Text(f'`timbre-match book restore "{good}"` puts the last good back-up in its place.'))
     else:
         rows = counted(checked.counts["sessions"], "session")
         parts.append(Text(f"The book is whole: {counted(checked.counts['instruments'], 'instrument')}, {rows}."))
