@@ -93,7 +93,9 @@ def compare_and_advise(
 
 
 def write_figures(folder: Path, profile: Profile, target: Target, comparison: Comparison) -> tuple[Path, ...]:
-    """Draw the recipes, the differences and the body curve, each as PNG and SVG, into a folder (made if missing).
+    """Draw recipes, differences and body curve, each as PNG and SVG, into a folder (made if missing).
+
+    Of ringing notes the decay times too.
 
     Raises
     ------
@@ -101,7 +103,7 @@ def write_figures(folder: Path, profile: Profile, target: Target, comparison: Co
         If the folder cannot be made or a file cannot be written.
     """
     from timbre_match.keep.writing import make_folder, write_whole
-    from timbre_match.show.figures import body_curve_figure, differences_figure, recipe_figure, render
+    from timbre_match.show.figures import body_curve_figure, differences_figure, recipe_figure, render, sustain_figure
 
     make_folder(folder)
     drawn = {
@@ -109,6 +111,8 @@ def write_figures(folder: Path, profile: Profile, target: Target, comparison: Co
         "differences": differences_figure(comparison),
         "body_curve": body_curve_figure(comparison),
     }
+    if comparison.sustain is not None:
+        drawn["sustain"] = sustain_figure(profile, target, comparison)
     kinds: tuple[Literal["png", "svg"], ...] = ("png", "svg")
     written = []
     for name, figure in drawn.items():

@@ -12,7 +12,18 @@ from hypothesis import strategies as st
 from tests.show import invented
 from timbre_match.advise.suggestions import Suggestion, ear_weight, suggest
 from timbre_match.advise.workshop import Practice, families, workshop_family
-from timbre_match.compare.records import Comparison, CurvePoint, HarmonicDifference, Interval, Region, Verdict
+from timbre_match.compare.records import (
+    Comparison,
+    CurvePoint,
+    HarmonicDifference,
+    Interval,
+    Region,
+    StringNote,
+    Strings,
+    Sustain,
+    SustainRegion,
+    Verdict,
+)
 from timbre_match.show.marks import VERDICTS
 
 PRACTICES = {
@@ -213,7 +224,7 @@ def test_a_single_take_on_either_side_leaves_out_what_cannot_be_undone(family: s
                 assert all(move.reversible for move in moves)
                 assert any("rests on a single take" in move.text for move in moves) == bool(irreversible)
             said += len(irreversible)
-    assert said > 0 or family in ("", "flute", "trumpet")
+    assert said > 0 or family in ("", "flute", "harp", "trumpet")
 
 
 def test_no_more_than_the_five_best() -> None:
@@ -294,3 +305,70 @@ def test_a_region_that_grows_never_falls_in_rank(given_comparison: Comparison, f
     after_comparison = replace(given_comparison, regions=(grown, *given_comparison.regions[1:]))
     after = next(one.rank for one in suggest(after_comparison) if one.region is grown)
     assert after <= before
+
+
+def sustained(ratio: Interval, *, family: str = "classical guitar", strings: Strings | None = None) -> Comparison:
+    """A comparison whose only differing stretch is one of sustain, from 180 to 220 Hz."""
+    longer = ratio.value > 1.0
+    region = SustainRegion(
+        low_hz=180.0,
+        high_hz=220.0,
+        ratio=ratio,
+        verdict="longer" if longer else "shorter",
+        harmonics=8,
+        notes=5,
+    )
+    sustain = Sustain(source="both", harmonics=(), notes=(), curve=(), regions=(region,), apart=())
+    return replace(comparison(family=family), sustain=sustain, strings=strings)
+
+
+SHORTER = Interval(value=0.5, low=0.4, high=0.62)
+LONGER = Interval(value=2.0, low=1.6, high=2.5)
+OTHER_STRINGS = Strings(
+    notes=(
+        StringNote(
+            note="E4", b=6e-5, target_b=4e-5, ratio=Interval(value=1.5, low=1.3, high=1.7), p=1e-6, differs=True
+        ),
+    ),
+    dull_from_hz=None,
+)
+
+
+def test_sustain_is_advised_on_from_its_own_rows() -> None:
+    row = next(row for row in workshop_family("classical guitar").sustain if row.low_hz <= 200.0 < row.high_hz)
+    (short,) = suggest(sustained(SHORTER))
+    (long,) = suggest(sustained(LONGER))
+    assert short.moves == tuple(practice.move for practice in row.too_weak)
+    assert long.moves == tuple(practice.move for practice in row.too_strong)
+    assert short.evidence.startswith(
+        "Partials between 180 and 220 Hz die 50 % (38 to 60) sooner, seen in 8 partials of 5 notes."
+    )
+    assert "ring 100 % (60 to 150) longer" in long.evidence
+
+
+def test_what_nobody_hears_of_sustain_is_no_suggestion() -> None:
+    assert suggest(sustained(Interval(value=0.85, low=0.8, high=0.9))) == ()
+    assert suggest(sustained(Interval(value=1.2, low=1.1, high=1.3))) == ()
+    empty = Sustain(source="both", harmonics=(), notes=(), curve=(), regions=(), apart=())
+    assert suggest(replace(comparison(), sustain=empty)) == ()
+
+
+def test_suspect_strings_come_first_and_hold_back_what_cannot_be_undone() -> None:
+    first, second = suggest(sustained(LONGER, strings=OTHER_STRINGS))
+    assert (first.rank, second.rank) == (1, 2)
+    assert "first suspects" in first.evidence
+    assert "1.50 times the target's" in first.evidence
+    assert all(move.reversible for one in (first, second) for move in one.moves)
+    assert any("strings are suspect" in move.text for move in second.moves)
+    assert any("eyes" in caution for caution in first.cautions)
+    assert any(not move.reversible for one in suggest(sustained(LONGER)) for move in one.moves)
+    dull = Strings(notes=(), dull_from_hz=2500.0)
+    assert "above 2500 Hz" in suggest(sustained(LONGER, strings=dull))[0].evidence
+    assert suggest(replace(comparison(), strings=Strings(notes=(), dull_from_hz=None))) == ()
+
+
+@pytest.mark.parametrize("family", ["", "guitar", "violin"])
+def test_sustain_without_rows_of_its_own_gets_reversible_or_general_advice(family: str) -> None:
+    (only,) = suggest(sustained(SHORTER, family=family))
+    assert only.moves
+    assert only.cautions

@@ -16,11 +16,16 @@ from timbre_match.advise.workshop import (
     workshop_family,
 )
 from timbre_match.errors import SavedFileError, UnknownNameError
+from timbre_match.intake.families import kind_of_family
 
 NAMES = (*families(), "")
 ROWS = [
-    pytest.param(row, id=f"{name or 'general'}-{row.low_hz:g}") for name in NAMES for row in workshop_family(name).rows
+    pytest.param(row, id=f"{name or 'general'}-{kind}-{row.low_hz:g}")
+    for name in NAMES
+    for kind, rows in (("level", workshop_family(name).rows), ("sustain", workshop_family(name).sustain))
+    for row in rows
 ]
+RINGING = [name for name in NAMES if workshop_family(name).sustain]
 
 
 def test_the_families_of_the_design_are_there() -> None:
@@ -41,6 +46,24 @@ def test_the_families_of_the_design_are_there() -> None:
 @given(freq_hz=st.floats(20.0, 20000.0, exclude_max=True))
 def test_every_audible_frequency_lies_in_exactly_one_row(name: str, freq_hz: float) -> None:
     assert sum(row.low_hz <= freq_hz < row.high_hz for row in workshop_family(name).rows) == 1
+
+
+@pytest.mark.parametrize("name", RINGING)
+@given(freq_hz=st.floats(20.0, 20000.0, exclude_max=True))
+def test_every_audible_frequency_lies_in_exactly_one_row_of_sustain(name: str, freq_hz: float) -> None:
+    assert sum(row.low_hz <= freq_hz < row.high_hz for row in workshop_family(name).sustain) == 1
+
+
+def test_instruments_that_ring_have_rows_of_sustain_and_only_they() -> None:
+    assert {kind_of_family(name) for name in RINGING} == {"ringing"}
+    assert all(workshop_family(name).sustain for name in families() if kind_of_family(name) == "ringing")
+
+
+@pytest.mark.parametrize("name", RINGING)
+def test_strings_are_the_first_suspects_of_sustain(name: str) -> None:
+    for row in workshop_family(name).sustain:
+        levers = [practice.lever for practice in row.too_weak]
+        assert levers[0] in ("string age", "unison tuning")
 
 
 @pytest.mark.parametrize("row", ROWS)
@@ -149,7 +172,8 @@ def test_every_written_move_is_used() -> None:
     data = files("timbre_match") / "advise" / "data"
     cautions = {key: key for key in ("strings", "dust", "glue", "heat", "knife", "removed")}
     written = read_moves((data / "moves.toml").read_text(encoding="utf-8"), "moves.toml", cautions)
-    used = {p.move.text for name in NAMES for row in workshop_family(name).rows for p in row.too_strong + row.too_weak}
+    found = [workshop_family(name) for name in NAMES]
+    used = {p.move.text for one in found for row in one.rows + one.sustain for p in row.too_strong + row.too_weak}
     assert {practice.move.text for practice in written.values()} == used
 
 

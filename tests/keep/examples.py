@@ -15,8 +15,18 @@ from timbre_match.compare.records import (
     CurvePoint,
     HarmonicDifference,
     Interval,
+    PluckNote,
+    PluckPoint,
     Region,
     Repeatability,
+    SetApart,
+    StringNote,
+    Strings,
+    Sustain,
+    SustainHarmonic,
+    SustainNote,
+    SustainPoint,
+    SustainRegion,
 )
 from timbre_match.intake.notes import NoteKind
 from timbre_match.measure.profile import Profile, Session, Source, Take
@@ -137,6 +147,44 @@ COMPARISON = Comparison(
     ),
     regions=(REGION,),
     remarks=("One take only: the scatter is that of other instruments.",),
+)
+
+_RATIO = Interval(value=0.65, low=0.52, high=0.8)
+
+RINGING_COMPARISON = dataclasses.replace(
+    COMPARISON,
+    family="guitar",
+    sustain=Sustain(
+        source="both",
+        harmonics=(SustainHarmonic(note="E4", k=2, freq_hz=660.5, ratio=_RATIO, p=1.5e-9, verdict="shorter"),),
+        notes=(SustainNote(note="E4", ratio=_RATIO, p=0.004, verdict="unsettled", harmonics=9),),
+        curve=(SustainPoint(freq_hz=500.0, ratio=_RATIO, simultaneous_low=0.5, simultaneous_high=0.9),),
+        regions=(SustainRegion(low_hz=300.0, high_hz=500.0, ratio=_RATIO, verdict="shorter", harmonics=8, notes=5),),
+        apart=(SetApart(note="E4", k=3, freq_hz=991.0, instrument="beating", target="plain"),),
+    ),
+    pluck=(
+        PluckNote(
+            note="E4",
+            instrument=(PluckPoint(beta=0.125, se=0.003), None),
+            target=(PluckPoint(beta=0.2, se=0.004),),
+            differs=True,
+            taken_out=False,
+            set_aside=(5, 8),
+        ),
+    ),
+    strings=Strings(
+        notes=(
+            StringNote(
+                note="E4",
+                b=4.4e-5,
+                target_b=3.1e-5,
+                ratio=Interval(value=1.4, low=1.2, high=1.7),
+                p=0.001,
+                differs=True,
+            ),
+        ),
+        dull_from_hz=2500.0,
+    ),
 )
 
 SUGGESTIONS = (

@@ -8,11 +8,15 @@ Regions come first. Their order is by the product of three things:
 * the ear's keenness at the region's middle: the A-weighting of IEC 61672-1 turned from level into loudness with
   Stevens's exponent of 0.3 on intensity, 10^(0.03 A), about 1 from 1 to 5 kHz, 0.6 at 300 Hz and 0.3 at 100 Hz.
 
+Stretches of sustain stand among the regions: what is sure of a ratio of decay times is counted in margins of what
+listeners did not hear, and a margin counts like 3 dB. Where no more than that margin is possible, nothing is suggested.
+
 Single harmonics follow, and only those that differ, that no region covers, and whose interval leaves the body curve
 at their frequency, that is, which stand out of their neighbours.
 
-Two rules guard the instrument. What rests on one harmonic of one note asks for that note again and for nothing else.
-And where one side of the comparison rests on a single take, no move appears that cannot be undone.
+Three rules guard the instrument. What rests on one harmonic of one note asks for that note again and for nothing else.
+Where one side of the comparison rests on a single take, no move appears that cannot be undone. And where the strings
+are suspect, they come first, before anything that the ear would rank, and again no move appears that cannot be undone.
 """
 
 import math
@@ -21,17 +25,28 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from timbre_match.advise.wording import counted, hertz
+from timbre_match.advise.wording import counted, hertz, sustain_in_words
 from timbre_match.advise.workshop import (
     Family,
     Move,
     Practice,
     WorkshopRow,
     gather_cautions,
+    strings_first,
     workshop_family,
 )
 from timbre_match.compare.colour import LOUDNESS_EXPONENT, erb_number
-from timbre_match.compare.records import Comparison, HarmonicDifference, Interval, Region, Verdict
+from timbre_match.compare.records import (
+    Comparison,
+    HarmonicDifference,
+    Interval,
+    Region,
+    Strings,
+    SustainRegion,
+    SustainVerdict,
+    Verdict,
+)
+from timbre_match.compare.sustain import INAUDIBLE
 from timbre_match.errors import UnknownNameError
 
 __all__ = ["Move", "Suggestion", "ear_weight", "suggest"]
@@ -46,13 +61,21 @@ _ONE_TAKE = Move(
     reversible=True,
     basis=_MEASUREMENT,
 )
+_STRINGS_FIRST = Move(
+    text="Moves that cannot be undone are left out, because the strings are suspect: exchange them and compare again "
+    "first.",
+    reversible=True,
+    basis=_MEASUREMENT,
+)
+_MARGIN_DB = 3.0
+"""What a margin of decay times counts like."""
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class Suggestion:
     """One ranked suggestion: the region it is about, its evidence in a sentence, moves (reversible first), cautions.
 
-    `region` is None where the evidence is single harmonics outside every region.
+    `region` is None where the evidence is no region of levels: single harmonics outside every region, sustain, strings.
     """
 
     rank: int
@@ -68,22 +91,24 @@ class _Finding:
 
     region: Region | None
     row: WorkshopRow
-    verdict: Verdict
+    verdict: Verdict | SustainVerdict
     evidence: str
     weight: float
+    pooled: bool
+    """Whether it is a stretch of frequency rather than single harmonics."""
     lone_note: str = ""
     """What to play again where the evidence is one harmonic of one note; empty where it is more."""
 
     @property
     def practices(self) -> tuple[Practice, ...]:
-        return self.row.too_strong if self.verdict == "stronger" else self.row.too_weak
+        return self.row.too_strong if self.verdict in ("stronger", "longer") else self.row.too_weak
 
     def opposes(self, other: "_Finding") -> bool:
         """Whether both lie in one row with opposite directions.
 
         A single harmonic has no voice here, and several outside regions do not outvote a region.
         """
-        heard_out = not self.lone_note and not other.lone_note and (self.region is None or other.region is not None)
+        heard_out = not self.lone_note and not other.lone_note and (not self.pooled or other.pooled)
         return heard_out and self.row == other.row and self.verdict != other.verdict
 
 
@@ -104,15 +129,16 @@ def suggest(comparison: Comparison) -> tuple[Suggestion, ...]:
     """
     family = _family_or_general(comparison.family)
     findings = _region_findings(comparison, family.rows) + _harmonic_findings(comparison, family.rows)
-    findings.sort(key=lambda finding: (finding.region is None, -finding.weight))
-    scatter = comparison.repeatability
-    one_take = min(scatter.takes, scatter.target_takes) < _FEWEST_TAKES
+    findings += _sustain_findings(comparison, family.sustain or family.rows)
+    findings.sort(key=lambda finding: (not finding.pooled, -finding.weight))
+    suspicion = _strings_suggestion(comparison.strings, family)
+    hold_back = _hold_back(comparison, suspicion)
     accepted: list[tuple[int, Practice]] = []
     named: set[str] = set()
-    suggestions: list[Suggestion] = []
+    suggestions: list[Suggestion] = [] if suspicion is None else [suspicion]
     for finding in findings:
         opposing = [other for other in findings if finding.opposes(other)]
-        kept, moves = _moves(finding, opposing, accepted, one_take=one_take)
+        kept, moves = _moves(finding, opposing, accepted, hold_back)
         if named.issuperset(move.text for move in moves):
             continue
         rank = len(suggestions) + 1
@@ -133,20 +159,60 @@ def suggest(comparison: Comparison) -> tuple[Suggestion, ...]:
 
 
 def _moves(
-    finding: _Finding, opposing: list[_Finding], accepted: list[tuple[int, Practice]], *, one_take: bool
+    finding: _Finding, opposing: list[_Finding], accepted: list[tuple[int, Practice]], hold_back: Move | None
 ) -> tuple[list[Practice], list[Move]]:
-    """Choose the practices that stand, and all moves that the suggestion names."""
+    """Choose the practices that stand, and all moves that the suggestion names.
+
+    `hold_back` says why moves that cannot be undone are left out, where they are.
+    """
     if finding.lone_note:
         return [], [_again(finding.lone_note)]
     if opposing:
         kept = [one for one in finding.practices if one.way == "check" and one.move.reversible]
         return kept, [_both_ways(finding.row), *(one.move for one in kept)]
-    allowed = tuple(one for one in finding.practices if one.move.reversible or not one_take)
+    allowed = tuple(one for one in finding.practices if one.move.reversible or hold_back is None)
     kept = [one for one in allowed if not any(one.contradicts(other) for _, other in accepted)]
     moves = [one.move for one in kept] + _left_out(allowed, accepted)
-    if len(allowed) < len(finding.practices):
-        moves.append(_ONE_TAKE)
+    if hold_back is not None and len(allowed) < len(finding.practices):
+        moves.append(hold_back)
     return kept, moves
+
+
+def _hold_back(comparison: Comparison, suspicion: Suggestion | None) -> Move | None:
+    scatter = comparison.repeatability
+    if min(scatter.takes, scatter.target_takes) < _FEWEST_TAKES:
+        return _ONE_TAKE
+    return None if suspicion is None else _STRINGS_FIRST
+
+
+def _strings_suggestion(strings: Strings | None, family: Family) -> Suggestion | None:
+    """Strings before everything else, where inharmonicity differs or high partials alone are lost."""
+    if strings is None:
+        return None
+    evidence = []
+    differing = [one for one in strings.notes if one.differs]
+    if differing:
+        most = max(differing, key=lambda one: abs(math.log(one.ratio.value)))
+        evidence.append(
+            f"Inharmonicity, which the strings make and not the body, differs in {len(differing)} of "
+            f"{counted(len(strings.notes), 'note')}, most in {most.note}: {most.ratio.value:.2f} times the target's "
+            f"({most.ratio.low:.2f} to {most.ratio.high:.2f})"
+        )
+    if strings.dull_from_hz is not None:
+        evidence.append(
+            f"Only partials above {hertz(strings.dull_from_hz)} Hz are weaker or die sooner, up to the highest, as of "
+            "strings that have grown old"
+        )
+    if not evidence:
+        return None
+    practice = strings_first()
+    return Suggestion(
+        rank=1,
+        region=None,
+        evidence=". ".join(evidence) + ". The strings are the first suspects.",
+        moves=(practice.move,),
+        cautions=(family.remark, *gather_cautions((practice,))),
+    )
 
 
 def _again(note: str) -> Move:
@@ -213,6 +279,7 @@ def _region_findings(comparison: Comparison, rows: tuple[WorkshopRow, ...]) -> l
                 evidence=f"{stretch} is {region.verdict} than the target by "
                 f"{_size(size)}, seen in {counted(region.harmonics, 'harmonic')} of {counted(region.notes, 'note')}",
                 weight=max(size.low, 0.0) * width_erb * ear_weight(middle_hz),
+                pooled=True,
                 lone_note=f"the note with a harmonic at {stretch}" if region.harmonics == 1 else "",
             )
         )
@@ -243,10 +310,43 @@ def _harmonic_findings(comparison: Comparison, rows: tuple[WorkshopRow, ...]) ->
                 evidence=f"{kind} {verdict} than the target, out of step with the neighbours in frequency: "
                 + ", ".join(named),
                 weight=sum(max(sizes[id(harmonic)].low, 0.0) * ear_weight(harmonic.freq_hz) for harmonic in harmonics),
+                pooled=False,
                 lone_note=harmonics[0].note if len(harmonics) == 1 else "",
             )
         )
     return findings
+
+
+def _sustain_findings(comparison: Comparison, rows: tuple[WorkshopRow, ...]) -> list[_Finding]:
+    findings = []
+    for region in () if comparison.sustain is None else comparison.sustain.regions:
+        margins = _sure_margins(region)
+        if margins is None:
+            continue
+        width_erb = float(erb_number(region.high_hz) - erb_number(region.low_hz))
+        middle_hz = math.sqrt(region.low_hz * region.high_hz)
+        findings.append(
+            _Finding(
+                region=None,
+                row=_row_of(region, rows),
+                verdict=region.verdict,
+                evidence=sustain_in_words(region),
+                weight=_MARGIN_DB * margins * width_erb * ear_weight(middle_hz),
+                pooled=True,
+            )
+        )
+    return findings
+
+
+def _sure_margins(region: SustainRegion) -> float | None:
+    """How many margins of audibility the decay times differ by for certain; None where one is more than possible."""
+    if region.verdict == "longer":
+        sure, possible, margin = region.ratio.low, region.ratio.high, INAUDIBLE[1]
+    elif region.verdict == "shorter":
+        sure, possible, margin = region.ratio.high, region.ratio.low, INAUDIBLE[0]
+    else:
+        return None
+    return max(math.log(sure) / math.log(margin), 0.0) if math.log(possible) / math.log(margin) > 1.0 else None
 
 
 def _stands_out(harmonic: HarmonicDifference, comparison: Comparison) -> bool:
@@ -284,7 +384,7 @@ def _left_out(practices: tuple[Practice, ...], accepted: list[tuple[int, Practic
     ]
 
 
-def _row_of(region: Region, rows: tuple[WorkshopRow, ...]) -> WorkshopRow:
+def _row_of(region: Region | SustainRegion, rows: tuple[WorkshopRow, ...]) -> WorkshopRow:
     """Find the row that shares the widest stretch with the region, in ERB; the region's middle settles a draw."""
     middle_hz = math.sqrt(region.low_hz * region.high_hz)
 

@@ -3,7 +3,8 @@
 The table is data, in ``advise/data``: ``moves.toml`` holds every move once, ``cautions.toml`` the cautions, and
 ``families/*.toml`` one file per family that names moves by their keys. A family is added by adding a file. The rows of
 a family cover the audible range from 20 Hz to 20 kHz without a gap, so that every difference finds a row; the file
-without a family name is the general advice for instruments that have no file of their own.
+without a family name is the general advice for instruments that have no file of their own. Families whose notes ring
+may have a second set of rows, of sustain, which say what is tried where partials ring too long or die too soon.
 
 Each move turns one *lever* (a part or property) one *way*: ``more``, ``less``, or ``check`` where it only looks or
 restores. Two moves contradict each other when they turn one lever opposite ways.
@@ -67,7 +68,8 @@ class WorkshopRow:
     basis : str
         Where `name` and `about` come from: a published source, or "common practice, no source".
     too_strong, too_weak : tuple of Practice
-        What the trade tries when the instrument has too much or too little here, reversible moves first.
+        What the trade tries when the instrument has too much or too little here, reversible moves first; in a row of
+        sustain, when it rings too long or not long enough.
     """
 
     family: str
@@ -87,12 +89,16 @@ class WorkshopRow:
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class Family:
-    """A family's file: its name, other names for it, a remark that holds for all rows, and the rows by frequency."""
+    """A family's file: its name, other names for it, a remark that holds for all rows, and the rows by frequency.
+
+    `sustain` are the rows of sustain, empty where there are none.
+    """
 
     name: str
     aliases: tuple[str, ...]
     remark: str
     rows: tuple[WorkshopRow, ...]
+    sustain: tuple[WorkshopRow, ...]
 
 
 def families() -> tuple[str, ...]:
@@ -175,36 +181,53 @@ def read_family(text: str, file: str, moves: dict[str, Practice]) -> Family:
         or the moves of one direction contradict each other or are those of the other direction.
     """
     entry = _parsed(text, file)
-    _check_keys(entry, required={"family", "aliases", "remark", "region"}, optional=set(), where=file)
+    _check_keys(entry, required={"family", "aliases", "remark", "region"}, optional={"sustain"}, where=file)
     name = entry["family"]
     if not isinstance(name, str):
         raise _broken(file, f"family is {name!r}", "write a name in quotes")
-    regions = entry["region"]
+    return Family(
+        name=name,
+        aliases=_names(entry, "aliases", file),
+        remark=_words(entry, "remark", file),
+        rows=_rows(entry["region"], "region", ("too_strong", "too_weak"), name, file, moves),
+        sustain=_rows(entry["sustain"], "sustain", ("too_long", "too_short"), name, file, moves)
+        if "sustain" in entry
+        else (),
+    )
+
+
+def strings_first() -> Practice:
+    """The move that comes before all others where the strings are suspected."""
+    return _moves()["fresh strings of the target's set"]
+
+
+def _rows(
+    regions: object, kind: str, directions: tuple[str, str], family: str, file: str, moves: dict[str, Practice]
+) -> tuple[WorkshopRow, ...]:
     if not isinstance(regions, list) or not regions:
-        raise _broken(file, "there is no region", "add at least one [[region]]")
-    rows = tuple(_row(region, name, f"{file}, region {n}", moves) for n, region in enumerate(regions, start=1))
+        raise _broken(file, f"there is no {kind}", f"add at least one [[{kind}]]")
+    rows = tuple(_row(one, family, f"{file}, {kind} {n}", moves, directions) for n, one in enumerate(regions, start=1))
     edges = [AUDIBLE_LOW_HZ, *(row.high_hz for row in rows)]
     for n, (row, edge) in enumerate(zip(rows, edges, strict=False), start=1):
         if row.low_hz != edge or not row.high_hz > row.low_hz:
             raise _broken(
-                f"{file}, region {n}",
+                f"{file}, {kind} {n}",
                 f"it runs from {row.low_hz:g} to {row.high_hz:g} Hz, but the one before ends at {edge:g} Hz",
-                "let each region start where the one before ends; the first starts at 20 Hz",
+                f"let each {kind} start where the one before ends; the first starts at 20 Hz",
             )
     if edges[-1] != AUDIBLE_HIGH_HZ:
-        raise _broken(file, f"the last region ends at {edges[-1]:g} Hz", "let it end at 20000 Hz")
-    return Family(name=name, aliases=_names(entry, "aliases", file), remark=_words(entry, "remark", file), rows=rows)
+        raise _broken(file, f"the last {kind} ends at {edges[-1]:g} Hz", "let it end at 20000 Hz")
+    return rows
 
 
-def _row(region: object, family: str, where: str, moves: dict[str, Practice]) -> WorkshopRow:
+def _row(
+    region: object, family: str, where: str, moves: dict[str, Practice], directions: tuple[str, str]
+) -> WorkshopRow:
     entry = _check_keys(
-        region,
-        required={"low_hz", "high_hz", "name", "about", "basis", "too_strong", "too_weak"},
-        optional=set(),
-        where=where,
+        region, required={"low_hz", "high_hz", "name", "about", "basis", *directions}, optional=set(), where=where
     )
-    directions = {}
-    for direction in ("too_strong", "too_weak"):
+    found = []
+    for direction in directions:
         place = f"{where}, {direction}"
         practices = tuple(_named(moves, key, "move", place) for key in _names(entry, direction, where))
         if not practices:
@@ -214,10 +237,11 @@ def _row(region: object, family: str, where: str, moves: dict[str, Practice]) ->
             raise _broken(place, "a move that cannot be taken back comes before one that can", "put it last")
         if any(one.contradicts(other) for one in practices for other in practices):
             raise _broken(place, "two moves turn the same lever opposite ways", "drop one of them")
-        directions[direction] = practices
-    turned = {practice for practice in directions["too_strong"] if practice.way != "check"}
-    if turned.intersection(directions["too_weak"]):
-        raise _broken(where, "the same move is given for too strong and for too weak", "drop one of them")
+        found.append(practices)
+    more, less = found
+    if {practice for practice in more if practice.way != "check"}.intersection(less):
+        much, little = (direction.replace("_", " ") for direction in directions)
+        raise _broken(where, f"the same move is given for {much} and for {little}", "drop one of them")
     return WorkshopRow(
         family=family,
         low_hz=_frequency(entry, "low_hz", where),
@@ -225,22 +249,25 @@ def _row(region: object, family: str, where: str, moves: dict[str, Practice]) ->
         name=_words(entry, "name", where),
         about=_words(entry, "about", where),
         basis=_words(entry, "basis", where),
-        too_strong=directions["too_strong"],
-        too_weak=directions["too_weak"],
+        too_strong=more,
+        too_weak=less,
     )
 
 
 @lru_cache(maxsize=1)
 def _table() -> dict[str, Family]:
-    data = _data()
-    moves = read_moves((data / "moves.toml").read_text(encoding="utf-8"), "moves.toml", _cautions())
-    sources = sorted((data / "families").iterdir(), key=lambda source: source.name)
+    sources = sorted((_data() / "families").iterdir(), key=lambda source: source.name)
     read = [
-        read_family(source.read_text(encoding="utf-8"), source.name, moves)
+        read_family(source.read_text(encoding="utf-8"), source.name, _moves())
         for source in sources
         if source.name.endswith(".toml")
     ]
     return {family.name: family for family in read}
+
+
+@lru_cache(maxsize=1)
+def _moves() -> dict[str, Practice]:
+    return read_moves((_data() / "moves.toml").read_text(encoding="utf-8"), "moves.toml", _cautions())
 
 
 @lru_cache(maxsize=1)

@@ -93,7 +93,8 @@ def compare(
     from timbre_match.show.tables import comparison_summary, suggestions_list
 
     show(comparison_summary(comparison))
-    if suggestions or not comparison.regions:
+    sustained = comparison.sustain is not None and bool(comparison.sustain.regions)
+    if suggestions or not (comparison.regions or sustained):
         show(suggestions_list(suggestions))
     for written in (out, figures):
         if written is not None:

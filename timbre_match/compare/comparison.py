@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 from timbre_match.compare import body_curve, colour, model, sampling, verdicts
 from timbre_match.compare.estimates import Estimates, estimate
 from timbre_match.compare.playing import Evidence, gather
+from timbre_match.compare.pluck import compare_plucks
 from timbre_match.compare.records import (
     ColourDistance,
     Comparison,
@@ -21,6 +22,8 @@ from timbre_match.compare.records import (
 )
 from timbre_match.compare.same_recordings import same_recording_remarks
 from timbre_match.compare.sessions import session_remarks
+from timbre_match.compare.strings import compare_strings
+from timbre_match.compare.sustain import compare_sustain
 from timbre_match.compare.target import Target, as_target
 from timbre_match.measure.profile import Profile
 from timbre_match.threads import single_threaded
@@ -42,6 +45,10 @@ Array = NDArray[np.float64]
 
 DEFAULT_MARGIN_DB = 3.0
 
+_WITHOUT_CONTROL = (
+    "sustain, pluck points and inharmonicity are compared without the control: microphone and room hardly change them, "
+    "other strings do",
+)
 _SEED = 20261
 _Z95 = 1.959963984540054
 
@@ -77,7 +84,9 @@ def compare(
     -------
     Comparison
         All differences are instrument minus target, from the reference level that
-        :mod:`timbre_match.compare.body_curve` describes.
+        :mod:`timbre_match.compare.body_curve` describes. Where both sides have ringing notes in common, with
+        `sustain`, `pluck` and `strings`; different pluck points are taken out of the differences where they can be
+        told. Controls have no part in these.
 
     Raises
     ------
@@ -96,13 +105,17 @@ def compare(
     generator = np.random.default_rng(_SEED) if rng is None else rng
     whole = as_target(target)
     control = None if control_now is None or control_then is None else (control_now, control_then)
-    evidence = gather(profile, whole, control)
+    plucks = compare_plucks(profile, whole)
+    evidence = gather(plucks.profile, plucks.target, control)
     grid_hz, estimates = _estimated(evidence, generator)
     distance, close = _distance_and_closeness(evidence, estimates, margin_db)
     own = colour.distance_between_takes(
         evidence.note_index, evidence.freq_hz, evidence.instrument_db, evidence.instrument_takes_db
     )
     harmonics = _harmonics(evidence, estimates, margin_db)
+    curve, regions = _curve(grid_hz, estimates), _regions(evidence, estimates, grid_hz)
+    sustain, sustain_remarks = compare_sustain(profile, whole, generator)
+    strings, string_remarks = compare_strings(profile, whole, regions, curve, sustain)
     return Comparison(
         instrument=profile.instrument,
         stage=profile.stage,
@@ -117,13 +130,20 @@ def compare(
             target_takes=sum(len(member.takes) for member in whole.members),
         ),
         harmonics=harmonics,
-        body_curve=_curve(grid_hz, estimates),
-        regions=_regions(evidence, estimates, grid_hz),
+        body_curve=curve,
+        regions=regions,
         remarks=(session_remarks(profile, whole) if control is None else ())
         + same_recording_remarks(profile, whole)
         + evidence.remarks
         + _family_remarks(whole, distance)
-        + _remarks(harmonics),
+        + _remarks(harmonics)
+        + string_remarks
+        + plucks.remarks
+        + sustain_remarks
+        + (_WITHOUT_CONTROL if control is not None and sustain is not None else ()),
+        sustain=sustain,
+        pluck=plucks.notes,
+        strings=strings,
     )
 
 

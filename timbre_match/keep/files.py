@@ -27,6 +27,7 @@ from timbre_match.errors import OutputError
 from timbre_match.keep import layout
 from timbre_match.keep.checking import check, first_fault, read_saved, read_saved_text, refuse_format
 from timbre_match.keep.recipes import Json, read_recipe, recipe_body, rounded
+from timbre_match.keep.ringing import read_pluck, read_strings, read_sustain, ringing_body
 from timbre_match.keep.writing import check_file_place, write_whole
 from timbre_match.measure.profile import Profile, Session, Source, Take
 
@@ -205,6 +206,7 @@ def comparison_to_json(comparison: Comparison, suggestions: tuple[Suggestion, ..
         ],
         "regions": [_region_body(region) for region in comparison.regions],
         "remarks": list(comparison.remarks),
+        **ringing_body(comparison),
         "suggestions": [
             {
                 "rank": suggestion.rank,
@@ -278,6 +280,9 @@ def load_comparison(path: str | Path) -> tuple[Comparison, tuple[Suggestion, ...
         ),
         regions=tuple(_region(region) for region in body.regions),
         remarks=tuple(body.remarks),
+        sustain=read_sustain(body.sustain),
+        pluck=read_pluck(body.pluck),
+        strings=read_strings(body.strings),
     )
     suggestions = tuple(
         Suggestion(

@@ -35,6 +35,7 @@ Count = Annotated[int, Field(ge=1, le=2**53)]
 CountOrZero = Annotated[int, Field(ge=0, le=2**53)]
 Positive = Annotated[FiniteFloat, Field(gt=0.0)]
 Verdict = Literal["stronger", "weaker", "alike", "unsettled"]
+SustainVerdict = Literal["longer", "shorter", "alike", "unsettled"]
 
 
 class Layout(BaseModel):
@@ -251,6 +252,109 @@ class RegionLayout(Layout):
     notes: CountOrZero
 
 
+class SustainHarmonicLayout(NoteName):
+    """The decay time of one harmonic, instrument over target."""
+
+    k: Count
+    freq_hz: Frequency
+    ratio: Positive
+    low: NotNegative
+    high: Positive
+    p: Share
+    verdict: SustainVerdict
+
+
+class SustainNoteLayout(NoteName):
+    """The decay time of one note."""
+
+    ratio: Positive
+    low: NotNegative
+    high: Positive
+    p: Share
+    verdict: SustainVerdict
+    harmonics: CountOrZero
+
+
+class SustainPointLayout(Layout):
+    """The curve of decay times at one frequency."""
+
+    freq_hz: Frequency
+    ratio: Positive
+    low: NotNegative
+    high: Positive
+    simultaneous_low: NotNegative
+    simultaneous_high: Positive
+
+
+class SustainRegionLayout(Layout):
+    """A stretch of frequency whose decay times differ."""
+
+    low_hz: Frequency
+    high_hz: Frequency
+    ratio: Positive
+    low: NotNegative
+    high: Positive
+    verdict: SustainVerdict
+    harmonics: CountOrZero
+    notes: CountOrZero
+
+
+class SetApartLayout(NoteName):
+    """A harmonic whose decay has no single time."""
+
+    k: Count
+    freq_hz: Frequency
+    instrument: DecayShape
+    target: DecayShape
+
+
+class SustainLayout(Layout):
+    """How decay times differ."""
+
+    source: Literal["prior", "both"]
+    harmonics: list[SustainHarmonicLayout]
+    notes: list[SustainNoteLayout]
+    curve: list[SustainPointLayout]
+    regions: list[SustainRegionLayout]
+    apart: list[SetApartLayout]
+
+
+class PluckPointLayout(Layout):
+    """Where a string was plucked, as a share of its length."""
+
+    beta: Annotated[FiniteFloat, Field(gt=0.0, le=0.5)]
+    se: NotNegative
+
+
+class PluckNoteLayout(NoteName):
+    """The pluck points of one note; null where a take does not tell."""
+
+    instrument: list[PluckPointLayout | None]
+    target: list[PluckPointLayout | None]
+    differs: bool
+    taken_out: bool
+    set_aside: list[Count]
+
+
+class StringNoteLayout(NoteName):
+    """The inharmonicity of one note on both sides."""
+
+    b: Positive
+    target_b: Positive
+    ratio: Positive
+    low: NotNegative
+    high: Positive
+    p: Share
+    differs: bool
+
+
+class StringsLayout(Layout):
+    """What speaks of the strings."""
+
+    notes: list[StringNoteLayout]
+    dull_from_hz: Frequency | None
+
+
 class MoveLayout(Layout):
     """Something that makers try."""
 
@@ -284,4 +388,8 @@ class ComparisonBody(Layout):
     body_curve: list[CurvePointLayout]
     regions: list[RegionLayout]
     remarks: list[Text]
+    # These three are there for ringing notes alone, and missing in files that were written before.
+    sustain: SustainLayout | None = None
+    pluck: list[PluckNoteLayout] = []
+    strings: StringsLayout | None = None
     suggestions: list[SuggestionLayout]

@@ -6,6 +6,8 @@ from numpy.typing import NDArray
 
 from timbre_match.intake.notes import HeldNote
 
+ONSET_SE_S = 0.00014
+"""How well the onset of a sudden note is known: it is read to half a millisecond (uniform: 0.5 ms / sqrt(12))."""
 _FRAME_S = 0.0005
 _SMOOTH = 2
 _BEFORE_S, _AFTER_S = 0.25, 0.05

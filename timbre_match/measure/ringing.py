@@ -15,7 +15,7 @@ from timbre_match.intake.notes import HeldNote
 from timbre_match.intake.recording import Recording
 from timbre_match.intake.spectrum import points_per_cycle
 from timbre_match.measure.glide import common_glide, without_glide
-from timbre_match.measure.onset import onset_of
+from timbre_match.measure.onset import ONSET_SE_S, onset_of
 from timbre_match.measure.partials import Partials, measure_partials, noise_of_bands
 from timbre_match.measure.records import RINGING_ARRAYS, Recipe, Ringing
 from timbre_match.measure.stiffness import StiffString, fit_law, search_partials, stretched_hz
@@ -112,6 +112,10 @@ def _recipe(
     with np.errstate(divide="ignore", invalid="ignore"):
         level_db = np.where(heard, units.power_to_db(share), np.nan)
         se_db = np.where(heard, 10.0 / np.log(10.0) * np.sqrt(variance) / share, np.nan)
+    # An onset that is read too late lowers most what dies fastest.
+    fall_db_per_s = 60.0 / partials.t60_s
+    common_db_per_s = float(np.nansum(share * fall_db_per_s))
+    se_db = np.hypot(se_db, ONSET_SE_S * (fall_db_per_s - common_db_per_s))
     # Where the fundamental is not heard, the lowest that is tells the time origin.
     lowest = int(np.flatnonzero(heard)[0])
     phase = partials.phase_rad - k / k[lowest] * partials.phase_rad[lowest]

@@ -10,7 +10,8 @@ from contextlib import contextmanager
 from functools import lru_cache
 from typing import TYPE_CHECKING, Any, Final, Literal
 
-from timbre_match.compare.records import Verdict
+from timbre_match.advise.wording import hertz
+from timbre_match.compare.records import Region, SustainRegion, SustainVerdict, Verdict
 from timbre_match.show.marks import plain
 from timbre_match.units import note_name, note_to_hz
 
@@ -31,6 +32,12 @@ VERDICT_COLOUR: Final[dict[Verdict, str]] = {
     "weaker": "#0f4c8a",
     "alike": "#5f7d5c",
     "unsettled": "#857b71",
+}
+SUSTAIN_COLOUR: Final[dict[SustainVerdict, str]] = {
+    "longer": VERDICT_COLOUR["stronger"],
+    "shorter": VERDICT_COLOUR["weaker"],
+    "alike": VERDICT_COLOUR["alike"],
+    "unsettled": VERDICT_COLOUR["unsettled"],
 }
 """Orange against blue stays apart in every common kind of colour blindness, and in grey the blue is the darker."""
 
@@ -57,6 +64,9 @@ _RIGHT_IN: Final = 0.85
 _LOWEST_C, _HIGHEST_C = 0, 10
 _ONE_LINE: Final = 6
 _DPI: Final = 120
+_LABEL_STEPS: Final = 3
+_LABEL_ROOM: Final = 2.0
+"""Frequency ratio that keeps two labels apart."""
 
 
 @contextmanager
@@ -132,22 +142,21 @@ def mark(label: str, **style: Any) -> "Line2D":
     return Line2D([], [], **{"linestyle": "none", "color": INK, **style}, label=label)
 
 
-@lru_cache(maxsize=len(VERDICT_COLOUR))
-def verdict_marker(verdict: Verdict) -> "Path | str":
+@lru_cache(maxsize=8)
+def verdict_marker(verdict: Verdict | SustainVerdict) -> "Path | str":
     """Return the shape of a verdict as a marker; the equals sign with room between its strokes, as no font has it."""
     from matplotlib.path import Path
 
     if verdict != "alike":
-        return {"stronger": "^", "weaker": "v", "unsettled": "$?$"}[verdict]
+        return {"stronger": "^", "weaker": "v", "longer": ">", "shorter": "<", "unsettled": "$?$"}[verdict]
     strokes = [[(-0.5, low), (0.5, low), (0.5, low + 0.2), (-0.5, low + 0.2), (-0.5, low)] for low in (-0.4, 0.2)]
     return Path.make_compound_path(*(Path(stroke, closed=True) for stroke in strokes))
 
 
-def verdict_mark(verdict: Verdict, label: str) -> "Line2D":
+def verdict_mark(verdict: Verdict | SustainVerdict, label: str) -> "Line2D":
     """Return the legend entry of a verdict, in its shape and colour."""
-    return mark(
-        label, marker=verdict_marker(verdict), color=VERDICT_COLOUR[verdict], markersize=10, markeredgewidth=0.4
-    )
+    colour = (VERDICT_COLOUR | SUSTAIN_COLOUR)[verdict]
+    return mark(label, marker=verdict_marker(verdict), color=colour, markersize=10, markeredgewidth=0.4)
 
 
 def frequency_axis(panel: "Axes", low_hz: float, high_hz: float, *, labelled: bool) -> None:
@@ -227,3 +236,24 @@ def named(instrument: str, stage: str) -> str:
     """Name an instrument and its stage, as drawable text."""
     name = drawable(instrument, 40) or "Unnamed instrument"
     return f"{name}, {drawable(stage, 40)}" if stage.strip() else name
+
+
+def label_heights(regions: Sequence[Region] | Sequence[SustainRegion]) -> list[float]:
+    """Heights of the regions' labels in a panel: lower by a step where the label before it would be touched."""
+    heights = [0.0] * len(regions)
+    step, last_middle_hz = 0, 0.0
+    for place in sorted(range(len(regions)), key=lambda place: regions[place].low_hz):
+        middle_hz = math.sqrt(regions[place].low_hz * regions[place].high_hz)
+        step = (step + 1) % _LABEL_STEPS if middle_hz < last_middle_hz * _LABEL_ROOM else 0
+        last_middle_hz = middle_hz
+        heights[place] = 0.985 - 0.115 * step
+    return heights
+
+
+def region_label(panel: "Axes", low_hz: float, high_hz: float, height: float, size: str, colour: str) -> None:
+    """Write size and stretch over a region."""
+    panel.text(
+        math.sqrt(low_hz * high_hz), height, f"{size}\n{hertz(low_hz)}–{hertz(high_hz)} Hz",
+        transform=panel.get_xaxis_transform(), ha="center", va="top", fontsize=11, fontweight="bold",
+        color=colour, linespacing=1.15, zorder=5, label="region",
+    )  # fmt: skip

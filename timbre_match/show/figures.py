@@ -10,27 +10,24 @@ from typing import TYPE_CHECKING, Final
 
 import numpy as np
 
-from timbre_match.advise.wording import hertz
-from timbre_match.compare.records import Comparison, HarmonicDifference, Region
+from timbre_match.compare.records import Comparison, HarmonicDifference
 from timbre_match.show import drawing
 from timbre_match.show.drawing import BAND, INK, QUIET, STEM, VERDICT_COLOUR, render
 from timbre_match.show.marks import SIGN, VERDICTS
 from timbre_match.show.recipes import recipe_figure
+from timbre_match.show.sustain import sustain_figure
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
     from matplotlib.lines import Line2D
 
-__all__ = ["body_curve_figure", "differences_figure", "recipe_figure", "render"]
+__all__ = ["body_curve_figure", "differences_figure", "recipe_figure", "render", "sustain_figure"]
 
 _LARGEST_SHOWN_DB: Final = 20.0
 _FULL_SIZE_DB: Final = 12.0
 _LEAST_CELL, _LARGEST_CELL = 7.0, 26.0
 _LEAST_ROOM, _LARGEST_ROOM = 3.0, 11.0
-_LABEL_STEPS: Final = 3
-_LABEL_ROOM: Final = 2.0
-"""Frequency ratio that keeps two labels apart."""
 
 
 def differences_figure(comparison: Comparison) -> "Figure":
@@ -84,7 +81,11 @@ def body_curve_figure(comparison: Comparison) -> "Figure":
         drawing.frequency_axis(upper, *limits, labelled=False)
         drawing.frequency_axis(lower, *limits, labelled=True)
         drawing.note_names_above(upper)
-        _name_regions(lower, comparison.regions)
+        for region, height in zip(comparison.regions, drawing.label_heights(comparison.regions), strict=True):
+            drawing.region_label(
+                lower, region.low_hz, region.high_hz, height,
+                f"{SIGN[region.verdict]} {abs(region.difference_db.value):.1f} dB", VERDICT_COLOUR[region.verdict],
+            )  # fmt: skip
         drawing.title(
             figure,
             drawing.named(comparison.instrument, comparison.stage),
@@ -192,22 +193,6 @@ def _draw_body_curve(panel: "Axes", comparison: Comparison) -> None:
     panel.set_ylabel("← weaker      dB      stronger →")
     if not curve:
         panel.text(0.5, 0.8, "no body curve", transform=panel.transAxes, ha="center")
-
-
-def _name_regions(panel: "Axes", regions: Sequence[Region]) -> None:
-    """Write size and stretch over each region, lower by a step where the label before it would be touched."""
-    step, last_middle_hz = 0, 0.0
-    for region in sorted(regions, key=lambda region: region.low_hz):
-        middle_hz = math.sqrt(region.low_hz * region.high_hz)
-        step = (step + 1) % _LABEL_STEPS if middle_hz < last_middle_hz * _LABEL_ROOM else 0
-        last_middle_hz = middle_hz
-        panel.text(
-            middle_hz, 0.985 - 0.115 * step,
-            f"{SIGN[region.verdict]} {abs(region.difference_db.value):.1f} dB"
-            f"\n{hertz(region.low_hz)}–{hertz(region.high_hz)} Hz",
-            transform=panel.get_xaxis_transform(), ha="center", va="top", fontsize=11, fontweight="bold",
-            color=VERDICT_COLOUR[region.verdict], linespacing=1.15, zorder=5, label="region",
-        )  # fmt: skip
 
 
 def _shown_reach(comparison: Comparison) -> float:

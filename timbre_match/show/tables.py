@@ -16,20 +16,37 @@ from rich.padding import Padding
 from rich.text import Text
 
 from timbre_match.advise.suggestions import Suggestion
-from timbre_match.advise.wording import counted, hertz
-from timbre_match.compare.records import Comparison, Verdict
+from timbre_match.advise.wording import counted, hertz, sustain_in_words
+from timbre_match.compare.records import Comparison, Sustain, SustainVerdict, Verdict
 from timbre_match.intake.notes import HeldNote
 from timbre_match.intake.recording import Recording
 from timbre_match.measure.profile import Profile
 from timbre_match.measure.recipe import Recipe
-from timbre_match.show.marks import SIGN, VERDICTS, plain, signed_interval
+from timbre_match.show.marks import (
+    SIGN,
+    SUSTAIN_SIGN,
+    SUSTAIN_VERDICTS,
+    VERDICTS,
+    plain,
+    ratio_interval,
+    signed_interval,
+)
 from timbre_match.show.pages import frameless_table, heading, remarks
 
 _COLOUR: Final[dict[Verdict, str]] = {"stronger": "yellow", "weaker": "cyan", "alike": "green", "unsettled": "default"}
+_SUSTAIN_COLOUR: Final[dict[SustainVerdict, str]] = {
+    "longer": "yellow",
+    "shorter": "cyan",
+    "alike": "green",
+    "unsettled": "default",
+}
 _LISTED_HARMONICS: Final = 12
 _RELATIVE: Final = (
     "All differences are relative: zero is the level on which most of what is heard agrees. Where much of the range "
     "differs, what the zero is becomes unsure, and the intervals say so."
+)
+_INAUDIBLE: Final = (
+    "Alike means no more than 25 % shorter or 40 % longer, which listeners did not hear in a published test."
 )
 _SOURCE_WORDS: Final = {
     "takes": "the takes themselves",
@@ -89,7 +106,9 @@ def profile_summary(profile: Profile, warnings: Sequence[str] = ()) -> Renderabl
         files = ", ".join(plain(source.file, 40) for source in take.recordings[:3])
         more = f" and {len(take.recordings) - 3} more" if len(take.recordings) > 3 else ""
         parts.append(heading(f"Take {number}", files + more))
-        table = frameless_table("note", "Hz", "cents", "cycles", "heard", "error dB", left=("note",))
+        rings = any(recipe.ringing is not None for recipe in take.notes)
+        ringing = ("rings s", "B") if rings else ()
+        table = frameless_table("note", "Hz", "cents", "cycles", "heard", "error dB", *ringing, left=("note",))
         for recipe in take.notes:
             table.add_row(
                 Text(plain(recipe.note, 8)),
@@ -98,9 +117,13 @@ def profile_summary(profile: Profile, warnings: Sequence[str] = ()) -> Renderabl
                 str(recipe.cycles),
                 f"{int(recipe.heard.sum())} of {recipe.k.size}",
                 _typical_error(recipe),
+                *(_ringing_cells(recipe) if rings else ()),
             )
         parts.append(table)
-    parts.append(Text("heard: harmonics above the noise. error: the middle standard error of their levels.", "dim"))
+    legend = "heard: harmonics above the noise. error: the middle standard error of their levels."
+    if any(recipe.ringing is not None for take in profile.takes for recipe in take.notes):
+        legend += " rings: time in which the strongest partial falls by 60 dB. B: inharmonicity, in millionths."
+    parts.append(Text(legend, "dim"))
     return Group(*parts, *remarks(warnings))
 
 
@@ -117,6 +140,7 @@ def comparison_summary(comparison: Comparison) -> RenderableType:
         *_regions(comparison),
         *_differing_harmonics(comparison),
         *_verdict_counts(comparison),
+        *_sustain(comparison.sustain),
     ]
     return Group(*parts, *remarks(comparison.remarks))
 
@@ -233,10 +257,39 @@ def _verdict_counts(comparison: Comparison) -> list[RenderableType]:
     return [Text(), Text("Harmonics of each note, instrument against target", "bold"), table]
 
 
+def _sustain(sustain: Sustain | None) -> list[RenderableType]:
+    """Say in words where notes ring longer or shorter, then show it note by note."""
+    if sustain is None:
+        return []
+    parts: list[RenderableType] = [Text(), Text("Sustain: how long partials ring, against the target", "bold")]
+    for region in sorted(sustain.regions, key=lambda region: region.low_hz):
+        parts.append(Text.assemble(_sustain_sign(region.verdict), f" {sustain_in_words(region)}."))
+    if not sustain.regions:
+        parts.append(Text("No stretch of frequency is known to ring longer or shorter."))
+    counts = Counter(one.verdict for one in sustain.harmonics)
+    told = ", ".join(f"{counts[verdict]} {verdict}" for verdict in SUSTAIN_VERDICTS)
+    parts.append(Text(f"{counted(len(sustain.harmonics), 'single partial')}: {told}. {_INAUDIBLE}"))
+    table = frameless_table("", "note", "decay time, times the target's", "partials", left=("", "note"))
+    for note in sustain.notes:
+        table.add_row(
+            _sustain_sign(note.verdict), Text(plain(note.note, 8)), ratio_interval(note.ratio), str(note.harmonics)
+        )
+    return [*parts, Text(), Text("Sustain of each note", "bold"), table]
+
+
 def _typical_error(recipe: Recipe) -> str:
     errors = recipe.se_db[recipe.heard]
     middle = float(np.median(errors)) if errors.size else math.nan
     return f"{middle:.2f}" if math.isfinite(middle) else "·"
+
+
+def _ringing_cells(recipe: Recipe) -> tuple[str, str]:
+    """Decay time of the strongest partial, and inharmonicity; dots where there is none."""
+    ringing = recipe.ringing
+    if ringing is None or not recipe.heard.any():
+        return "·", "·"
+    time_s = float(ringing.t60_s[int(np.nanargmax(recipe.level_db))])
+    return f"{time_s:.1f}" if math.isfinite(time_s) else "·", f"{1e6 * ringing.inharmonicity_b:.0f}"
 
 
 def _cautions_once(suggestions: Sequence[Suggestion]) -> list[str]:
@@ -248,3 +301,7 @@ def _cautions_once(suggestions: Sequence[Suggestion]) -> list[str]:
 
 def _sign(verdict: Verdict) -> Text:
     return Text(SIGN[verdict], _COLOUR[verdict])
+
+
+def _sustain_sign(verdict: SustainVerdict) -> Text:
+    return Text(SUSTAIN_SIGN[verdict], _SUSTAIN_COLOUR[verdict])
