@@ -21,6 +21,8 @@ if TYPE_CHECKING:
     from timbre_match.intake.cycles import Cycles, cut_cycles
     from timbre_match.intake.notes import HeldNote, held_notes
     from timbre_match.intake.recording import Recording, read_recording
+    from timbre_match.keep.bench_book import BenchBook
+    from timbre_match.keep.book_records import Conditions
     from timbre_match.keep.files import (
         load_comparison,
         load_profile,
@@ -36,7 +38,9 @@ if TYPE_CHECKING:
     from timbre_match.pipeline import compare_and_advise, measure_profile
 
 _HOME = {
+    "BenchBook": "keep.bench_book",
     "Comparison": "compare.records",
+    "Conditions": "keep.book_records",
     "Cycles": "intake.cycles",
     "HeldNote": "intake.notes",
     "Profile": "measure.profile",
@@ -64,7 +68,9 @@ _HOME = {
 }
 
 __all__ = [
+    "BenchBook",
     "Comparison",
+    "Conditions",
     "Cycles",
     "HeldNote",
     "Profile",

@@ -70,7 +70,22 @@ class UnknownNameError(TimbreMatchError):
     """A note name, family or option value that this package does not know."""
 
 
+class BookError(TimbreMatchError):
+    """The bench book cannot be opened, read or written: no such file, a full disk, a drive that is not there."""
+
+
+class BookDamagedError(BookError):
+    """The bench book is damaged, or something in it is not what was written."""
+
+
+class BookInUseError(BookError):
+    """Another program has been writing to the bench book for longer than this one waits."""
+
+
 __all__ = [
+    "BookDamagedError",
+    "BookError",
+    "BookInUseError",
     "ComparisonError",
     "ControlError",
     "FileVersionError",

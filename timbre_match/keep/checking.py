@@ -52,7 +52,15 @@ def read_saved(path: str | Path) -> tuple[str, object]:
         If it has a later (or an unknown) version.
     """
     where = str(path)
-    content = _parse(_read(Path(path), where), where)
+    return _headed(_parse(_read(Path(path), where), where), where)
+
+
+def read_saved_text(text: str, where: str) -> tuple[str, object]:
+    """Check the head of a saved file's text, which errors speak of as `where`; for the rest as :func:`read_saved`."""
+    return _headed(_parse(text.encode(), where), where)
+
+
+def _headed(content: object, where: str) -> tuple[str, object]:
     head = check(Head, content, where)
     if head.version != VERSION and head.format.startswith("timbre-match/"):
         raise FileVersionError(

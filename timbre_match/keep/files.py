@@ -25,7 +25,7 @@ from timbre_match.compare.records import (
 from timbre_match.compare.target import Target, as_target
 from timbre_match.errors import OutputError
 from timbre_match.keep import layout
-from timbre_match.keep.checking import check, first_fault, read_saved, refuse_format
+from timbre_match.keep.checking import check, first_fault, read_saved, read_saved_text, refuse_format
 from timbre_match.keep.recipes import Json, read_recipe, recipe_body, rounded
 from timbre_match.keep.ringing import read_pluck, read_strings, read_sustain, ringing_body
 from timbre_match.keep.writing import check_file_place, write_whole
@@ -102,22 +102,41 @@ def load_profile(path: str | Path) -> Profile:
     FileVersionError
         If it has an unknown version.
     """
-    found, content = read_saved(path)
-    if found != layout.PROFILE_FORMAT:
-        refuse_format(found, layout.PROFILE_FORMAT, str(path))
-    return _profile(check(layout.ProfileBody, content, str(path)))
+    return _profile_in(*read_saved(path), str(path))
 
 
-def save_target(target: Target, path: str | Path) -> None:
-    """Write a target file, with its member profiles whole.
+def profile_from_json(text: str, *, where: str) -> Profile:
+    """Read the text of a profile file, which errors speak of as `where`.
+
+    Raises
+    ------
+    SavedFileError, FileVersionError
+        As :func:`load_profile`.
+    """
+    return _profile_in(*read_saved_text(text, where), where)
+
+
+def target_to_json(target: Target) -> str:
+    """Text of a target file, with its member profiles whole.
 
     Raises
     ------
     OutputError
-        If the target holds something that a target file cannot hold, or `path` cannot be written.
+        If the target holds something that a target file cannot hold.
     """
     body: Json = {"name": target.name, "members": [_profile_body(member) for member in target.members]}
-    write_whole(path, _text(layout.TARGET_FORMAT, layout.TargetBody, body).encode())
+    return _text(layout.TARGET_FORMAT, layout.TargetBody, body)
+
+
+def save_target(target: Target, path: str | Path) -> None:
+    """Write a target file, whole or not at all.
+
+    Raises
+    ------
+    OutputError
+        As :func:`target_to_json`, and if `path` cannot be written.
+    """
+    write_whole(path, target_to_json(target).encode())
 
 
 def load_target(path: str | Path) -> Target:
@@ -128,13 +147,18 @@ def load_target(path: str | Path) -> Target:
     SavedFileError, FileVersionError
         As :func:`load_profile`.
     """
-    found, content = read_saved(path)
-    if found == layout.PROFILE_FORMAT:
-        return as_target(_profile(check(layout.ProfileBody, content, str(path))))
-    if found != layout.TARGET_FORMAT:
-        refuse_format(found, f"{layout.TARGET_FORMAT} or {layout.PROFILE_FORMAT}", str(path))
-    body = check(layout.TargetBody, content, str(path))
-    return Target(name=body.name, members=tuple(_profile(member) for member in body.members))
+    return _target_in(*read_saved(path), str(path))
+
+
+def target_from_json(text: str, *, where: str) -> Target:
+    """Read the text of a target or profile file, which errors speak of as `where`.
+
+    Raises
+    ------
+    SavedFileError, FileVersionError
+        As :func:`load_profile`.
+    """
+    return _target_in(*read_saved_text(text, where), where)
 
 
 def comparison_to_json(comparison: Comparison, suggestions: tuple[Suggestion, ...]) -> str:
@@ -271,6 +295,21 @@ def load_comparison(path: str | Path) -> tuple[Comparison, tuple[Suggestion, ...
         for row in body.suggestions
     )
     return comparison, suggestions
+
+
+def _profile_in(found: str, content: object, where: str) -> Profile:
+    if found != layout.PROFILE_FORMAT:
+        refuse_format(found, layout.PROFILE_FORMAT, where)
+    return _profile(check(layout.ProfileBody, content, where))
+
+
+def _target_in(found: str, content: object, where: str) -> Target:
+    if found == layout.PROFILE_FORMAT:
+        return as_target(_profile(check(layout.ProfileBody, content, where)))
+    if found != layout.TARGET_FORMAT:
+        refuse_format(found, f"{layout.TARGET_FORMAT} or {layout.PROFILE_FORMAT}", where)
+    body = check(layout.TargetBody, content, where)
+    return Target(name=body.name, members=tuple(_profile(member) for member in body.members))
 
 
 def _text(name: str, body_layout: type[layout.Layout], body: Json) -> str:

@@ -31,15 +31,15 @@ def write_whole(path: str | Path, data: bytes) -> None:
         existing file is left as it was, and no temporary file is left behind.
     """
     path = Path(path)
-    with _plain_errors(path):
+    with plain_write_errors(path):
         place = _place_of_file(path)
-        temporary = _temporary_beside(place)
+        temporary = temporary_beside(place)
         try:
             _write_synced(temporary, data)
             if place.exists():
                 shutil.copymode(place, temporary)
             temporary.replace(place)
-            _sync_folder(place.parent)
+            sync_folder(place.parent)
         finally:
             temporary.unlink(missing_ok=True)
 
@@ -53,7 +53,7 @@ def check_file_place(path: str | Path) -> None:
         If the folder is missing, or `path` is a folder or a device.
     """
     path = Path(path)
-    with _plain_errors(path):
+    with plain_write_errors(path):
         # The dot asks for a folder: a file in its place is an error of its own.
         os.stat(os.path.join(_place_of_file(path).parent, "."))  # noqa: PTH116, PTH118 (a path drops the dot)
 
@@ -66,7 +66,7 @@ def check_folder_place(folder: str | Path) -> None:
     OutputError
     """
     folder = Path(folder)
-    with _plain_errors(folder):
+    with plain_write_errors(folder):
         if folder.exists() and not folder.is_dir():
             raise OutputError(
                 "this is a file, so no folder can be made here", where=str(folder), remedy="name another folder"
@@ -85,7 +85,7 @@ def write_folder_whole(folder: str | Path, files: Mapping[str, bytes]) -> None:
         As :func:`write_whole`, and if `folder` holds files already or is a file.
     """
     folder = Path(folder)
-    with _plain_errors(folder):
+    with plain_write_errors(folder):
         place = Path(os.path.realpath(folder))
         check_folder_place(folder)
         if place.exists() and any(place.iterdir()):
@@ -94,16 +94,16 @@ def write_folder_whole(folder: str | Path, files: Mapping[str, bytes]) -> None:
                 where=str(folder),
                 remedy="name a new folder, or empty this one first",
             )
-        temporary = _temporary_beside(place)
+        temporary = temporary_beside(place)
         try:
             temporary.mkdir()
             for name, data in files.items():
                 _write_synced(temporary / name, data)
-            _sync_folder(temporary)
+            sync_folder(temporary)
             if place.exists():
                 place.rmdir()
             temporary.rename(place)
-            _sync_folder(place.parent)
+            sync_folder(place.parent)
         finally:
             shutil.rmtree(temporary, ignore_errors=True)
 
@@ -118,7 +118,7 @@ def make_folder(folder: str | Path) -> None:
     """
     folder = Path(folder)
     check_folder_place(folder)
-    with _plain_errors(folder):
+    with plain_write_errors(folder):
         folder.mkdir(parents=True, exist_ok=True)
 
 
@@ -134,7 +134,7 @@ def _place_of_file(path: Path) -> Path:
     return place
 
 
-def _temporary_beside(place: Path) -> Path:
+def temporary_beside(place: Path) -> Path:
     """Give a name in the same folder, since only within one file system can a move be done in one step."""
     return place.parent / f".timbre-match-{secrets.token_hex(8)}.part"
 
@@ -146,7 +146,7 @@ def _write_synced(path: Path, data: bytes) -> None:
         os.fsync(file.fileno())
 
 
-def _sync_folder(folder: Path) -> None:
+def sync_folder(folder: Path) -> None:
     """Force the folder's list of names to the disk, where the system can do that (Windows cannot)."""
     with contextlib.suppress(OSError):
         handle = os.open(folder, os.O_RDONLY)
@@ -169,7 +169,8 @@ _CAUSES = {
 
 
 @contextlib.contextmanager
-def _plain_errors(path: Path) -> Iterator[None]:
+def plain_write_errors(path: Path) -> Iterator[None]:
+    """Turn what the system says about a write that failed into an :class:`OutputError` in plain words."""
     try:
         yield
     except (OSError, ValueError) as error:

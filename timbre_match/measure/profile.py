@@ -2,9 +2,12 @@
 
 import datetime
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
 from timbre_match.errors import UnknownNameError
-from timbre_match.measure.recipe import Recipe
+
+if TYPE_CHECKING:
+    from timbre_match.measure.records import Recipe
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -54,7 +57,7 @@ class Take:
     """One run through the notes: its recordings, and the recipes measured in them, in order of playing."""
 
     recordings: tuple[Source, ...]
-    notes: tuple[Recipe, ...]
+    notes: "tuple[Recipe, ...]"
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)

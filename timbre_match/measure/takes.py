@@ -168,7 +168,7 @@ def recordings_of_take(place: Path) -> list[Path]:
 
 
 def measure_takes(
-    takes: Sequence[Path],
+    takes: Sequence[Path | Sequence[Path]],
     listening: Listening,
     *,
     instrument: str = "",
@@ -178,7 +178,7 @@ def measure_takes(
     jobs: int = 1,
     progress: Progress | None = None,
 ) -> Measured:
-    """Measure takes, each a recording or a folder whose recordings together are one take.
+    """Measure takes, each a recording, a folder whose recordings together are one take, or a list of such recordings.
 
     What can be used is measured; what cannot is listed. The family decides whether its notes are held or ring, where
     its name tells.
@@ -194,7 +194,7 @@ def measure_takes(
     parts: list[list[Path]] = []
     for place in takes:
         try:
-            parts.append(recordings_of_take(place))
+            parts.append(recordings_of_take(place) if isinstance(place, Path) else list(place))
         except TimbreMatchError as error:
             failures.append(error)
     results = listen_to_all([path for part in parts for path in part], listening, jobs=jobs, progress=progress)

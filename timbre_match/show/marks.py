@@ -1,8 +1,8 @@
 """How a verdict and a user's text look, the same in tables and figures."""
 
-import unicodedata
 from typing import Final
 
+from timbre_match.advise.wording import plain as plain
 from timbre_match.compare.records import Interval, SustainVerdict, Verdict
 
 SIGN: Final[dict[Verdict, str]] = {"stronger": "▲", "weaker": "▼", "alike": "=", "unsettled": "?"}
@@ -11,17 +11,6 @@ SUSTAIN_SIGN: Final[dict[SustainVerdict, str]] = {"longer": "▶", "shorter": "�
 
 VERDICTS: Final[tuple[Verdict, ...]] = ("stronger", "weaker", "alike", "unsettled")
 SUSTAIN_VERDICTS: Final[tuple[SustainVerdict, ...]] = ("longer", "shorter", "alike", "unsettled")
-
-
-def plain(text: str, longest: int = 60) -> str:
-    """Return text from outside as one safe line of at most `longest` characters.
-
-    Control characters, line breaks and the invisible signs that turn the direction of writing become spaces, so that a
-    name can neither steer a terminal nor reorder the words around it.
-    """
-    spaced = "".join(" " if unicodedata.category(sign)[0] in "CZ" else sign for sign in text)
-    line = " ".join(spaced.split())
-    return line if len(line) <= longest else line[: longest - 1] + "…"
 
 
 def signed(difference_db: float) -> str:

@@ -13,7 +13,6 @@ from typing import Final
 import numpy as np
 from rich.console import Console, Group, RenderableType
 from rich.padding import Padding
-from rich.table import Table
 from rich.text import Text
 
 from timbre_match.advise.suggestions import Suggestion
@@ -32,6 +31,7 @@ from timbre_match.show.marks import (
     ratio_interval,
     signed_interval,
 )
+from timbre_match.show.pages import frameless_table, heading, remarks
 
 _COLOUR: Final[dict[Verdict, str]] = {"stronger": "yellow", "weaker": "cyan", "alike": "green", "unsettled": "default"}
 _SUSTAIN_COLOUR: Final[dict[SustainVerdict, str]] = {
@@ -67,13 +67,13 @@ def as_text(contents: Iterable[RenderableType], width: int = 100) -> str:
 def held_notes_table(recording: Recording, notes: Sequence[HeldNote]) -> RenderableType:
     """Show the held notes of one recording, with its faults."""
     parts: list[RenderableType] = [
-        _heading(
+        heading(
             plain(recording.file),
             f"{recording.sample_rate_hz / 1000:g} kHz, channel {recording.channel} of {recording.channel_count}",
         )
     ]
     if notes:
-        table = _table("note", "Hz", "cents", "from s", "to s", "cycles", "kind", left=("note", "kind"))
+        table = frameless_table("note", "Hz", "cents", "from s", "to s", "cycles", "kind", left=("note", "kind"))
         for held in notes:
             table.add_row(
                 Text(plain(held.note, 8)),
@@ -87,7 +87,7 @@ def held_notes_table(recording: Recording, notes: Sequence[HeldNote]) -> Rendera
         parts.append(table)
     else:
         parts.append(Text("No held note."))
-    return Group(*parts, *_remarks(recording.warnings))
+    return Group(*parts, *remarks(recording.warnings))
 
 
 def profile_summary(profile: Profile, warnings: Sequence[str] = ()) -> RenderableType:
@@ -101,7 +101,7 @@ def profile_summary(profile: Profile, warnings: Sequence[str] = ()) -> Renderabl
     """
     name = plain(profile.instrument) or "Unnamed instrument"
     details = [plain(profile.stage), plain(profile.family), counted(len(profile.takes), "take")]
-    parts: list[RenderableType] = [_heading(name, ", ".join(word for word in details if word))]
+    parts: list[RenderableType] = [heading(name, ", ".join(word for word in details if word))]
     session = profile.session
     noted = [plain(word) for word in (session.date, session.room, session.microphone) if word]
     if noted:
@@ -109,10 +109,10 @@ def profile_summary(profile: Profile, warnings: Sequence[str] = ()) -> Renderabl
     for number, take in enumerate(profile.takes, start=1):
         files = ", ".join(plain(source.file, 40) for source in take.recordings[:3])
         more = f" and {len(take.recordings) - 3} more" if len(take.recordings) > 3 else ""
-        parts.append(_heading(f"Take {number}", files + more))
+        parts.append(heading(f"Take {number}", files + more))
         rings = any(recipe.ringing is not None for recipe in take.notes)
         ringing = ("rings s", "B") if rings else ()
-        table = _table("note", "Hz", "cents", "cycles", "heard", "error dB", *ringing, left=("note",))
+        table = frameless_table("note", "Hz", "cents", "cycles", "heard", "error dB", *ringing, left=("note",))
         for recipe in take.notes:
             table.add_row(
                 Text(plain(recipe.note, 8)),
@@ -128,7 +128,7 @@ def profile_summary(profile: Profile, warnings: Sequence[str] = ()) -> Renderabl
     if any(recipe.ringing is not None for take in profile.takes for recipe in take.notes):
         legend += " rings: time in which the strongest partial falls by 60 dB. B: inharmonicity, in millionths."
     parts.append(Text(legend, "dim"))
-    return Group(*parts, *_remarks(warnings))
+    return Group(*parts, *remarks(warnings))
 
 
 def comparison_summary(comparison: Comparison) -> RenderableType:
@@ -136,7 +136,7 @@ def comparison_summary(comparison: Comparison) -> RenderableType:
     name = plain(comparison.instrument) or "Unnamed instrument"
     stage = f", {plain(comparison.stage)}" if plain(comparison.stage) else ""
     parts: list[RenderableType] = [
-        _heading(f"{name}{stage}", f"against {plain(comparison.target) or 'the target'}"),
+        heading(f"{name}{stage}", f"against {plain(comparison.target) or 'the target'}"),
         Text(_colour_sentence(comparison)),
         Text(_RELATIVE),
         Text(_closeness_sentence(comparison)),
@@ -146,7 +146,7 @@ def comparison_summary(comparison: Comparison) -> RenderableType:
         *_verdict_counts(comparison),
         *_sustain(comparison.sustain),
     ]
-    return Group(*parts, *_remarks(comparison.remarks))
+    return Group(*parts, *remarks(comparison.remarks))
 
 
 def suggestions_list(suggestions: Sequence[Suggestion]) -> RenderableType:
@@ -214,7 +214,7 @@ def _scatter_sentence(comparison: Comparison) -> str:
 def _regions(comparison: Comparison) -> list[RenderableType]:
     if not comparison.regions:
         return [Text(), Text("No stretch of frequency is known to differ.", "bold")]
-    table = _table("", "from", "to", "difference dB", "harmonics", "notes", left=("",))
+    table = frameless_table("", "from", "to", "difference dB", "harmonics", "notes", left=("",))
     for region in sorted(comparison.regions, key=lambda region: region.low_hz):
         table.add_row(
             _sign(region.verdict),
@@ -232,7 +232,7 @@ def _differing_harmonics(comparison: Comparison) -> list[RenderableType]:
     if not differing:
         return [Text(), Text("No single harmonic is known to differ.", "bold")]
     differing.sort(key=lambda harmonic: -abs(harmonic.difference_db.value))
-    table = _table("", "note", "harmonic", "at", "difference dB", left=("", "note"))
+    table = frameless_table("", "note", "harmonic", "at", "difference dB", left=("", "note"))
     for harmonic in differing[:_LISTED_HARMONICS]:
         table.add_row(
             _sign(harmonic.verdict),
@@ -255,7 +255,7 @@ def _verdict_counts(comparison: Comparison) -> list[RenderableType]:
     by_note: dict[str, Counter[Verdict]] = {}
     for harmonic in comparison.harmonics:
         by_note.setdefault(harmonic.note, Counter())[harmonic.verdict] += 1
-    table = _table("note", *(f"{SIGN[verdict]} {verdict}" for verdict in VERDICTS), left=("note",))
+    table = frameless_table("note", *(f"{SIGN[verdict]} {verdict}" for verdict in VERDICTS), left=("note",))
     for note, counts in by_note.items():
         table.add_row(Text(plain(note, 8)), *(str(counts[verdict]) if counts[verdict] else "·" for verdict in VERDICTS))
     return [Text(), Text("Harmonics of each note, instrument against target", "bold"), table]
@@ -273,7 +273,7 @@ def _sustain(sustain: Sustain | None) -> list[RenderableType]:
     counts = Counter(one.verdict for one in sustain.harmonics)
     told = ", ".join(f"{counts[verdict]} {verdict}" for verdict in SUSTAIN_VERDICTS)
     parts.append(Text(f"{counted(len(sustain.harmonics), 'single partial')}: {told}. {_INAUDIBLE}"))
-    table = _table("", "note", "decay time, times the target's", "partials", left=("", "note"))
+    table = frameless_table("", "note", "decay time, times the target's", "partials", left=("", "note"))
     for note in sustain.notes:
         table.add_row(
             _sustain_sign(note.verdict), Text(plain(note.note, 8)), ratio_interval(note.ratio), str(note.harmonics)
@@ -303,28 +303,9 @@ def _cautions_once(suggestions: Sequence[Suggestion]) -> list[str]:
     return [*others, *closing]
 
 
-def _remarks(remarks: Sequence[str]) -> list[RenderableType]:
-    if not remarks:
-        return []
-    lines = [Padding(Text(f"- {plain(remark, 700)}"), (0, 0, 0, 1), expand=False) for remark in remarks]
-    return [Text(), Text("To keep in mind", "bold"), *lines]
-
-
-def _heading(name: str, detail: str) -> Text:
-    return Text.assemble((name, "bold"), f"  {detail}" if detail else "")
-
-
 def _sign(verdict: Verdict) -> Text:
     return Text(SIGN[verdict], _COLOUR[verdict])
 
 
 def _sustain_sign(verdict: SustainVerdict) -> Text:
     return Text(SUSTAIN_SIGN[verdict], _SUSTAIN_COLOUR[verdict])
-
-
-def _table(*columns: str, left: tuple[str, ...]) -> Table:
-    """Table without frame, so that it stays readable in a narrow window and in a copied text."""
-    table = Table(box=None, pad_edge=False, padding=(0, 2, 0, 0), header_style="dim", show_edge=False)
-    for column in columns:
-        table.add_column(Text(column), justify="left" if column in left else "right", overflow="fold")
-    return table
