@@ -268,7 +268,7 @@ def _curve(grid_hz: Array, estimates: Estimates) -> tuple[CurvePoint, ...]:
     """The curve with its bands; where it is certain on which side of zero it lies, the bands end there.
 
     Whether a curve that is there is wholly inside its band, and whether there is one, are two questions, and the second
-    asks for less: where the curve is further off zero than playing alone would bring it anywhere, in all but three of
+    asks for less: where the curve is further off zero than playing alone would bring it anywhere, in all but four of
     a hundred comparisons, its sign is known, and the simultaneous band, which need not cover both signs, ends at zero
     (Benjamini, Hochberg & Stark 1998, Confidence intervals with more power to determine the sign, *JASA* 93).
     """
