@@ -9,6 +9,7 @@ from timbre_match.units import note_to_hz, parse_notes
 
 # Open strings, and sounding ranges of winds as the players' tutors have them (from memory).
 OPEN_STRINGS = {
+    "mandolin": "G3 D4 A4 E5",
     "violin": "G3 D4 A4 E5",
     "viola": "C3 G3 D4 A4",
     "cello": "C2 G2 D3 A3",

@@ -29,6 +29,7 @@ COMPARISON_CONTRACT = {
 }
 COMPARISON_ADDED = {"instrument", "stage", "family", "target", "margin_db", "remarks"}
 DIFFERENCE_KEYS = {"note", "k", "freq_hz", "difference_db", "low_db", "high_db", "p", "verdict", "takes_needed"}
+RINGING_ADDED = {"sustain", "pluck", "strings"}
 CURVE_KEYS = {"freq_hz", "difference_db", "low_db", "high_db", "simultaneous_low_db", "simultaneous_high_db"}
 REGION_KEYS = {"low_hz", "high_hz", "difference_db", "low_db", "high_db", "verdict", "harmonics", "notes"}
 SUGGESTION_KEYS = {"rank", "region", "evidence", "moves", "cautions"}
@@ -53,8 +54,8 @@ def assert_same(one: object, other: object) -> None:
     assert same
 
 
-def assert_comparison_keys(whole: Any) -> None:
-    assert whole.keys() == COMPARISON_CONTRACT | COMPARISON_ADDED
+def assert_comparison_keys(whole: Any, *, ringing: bool = False) -> None:
+    assert whole.keys() == COMPARISON_CONTRACT | COMPARISON_ADDED | (RINGING_ADDED if ringing else set())
     assert (whole["format"], whole["version"]) == ("timbre-match/comparison", 1)
     assert whole["colour_distance_db"].keys() == {"value", "low", "high", "own"}
     assert whole["closeness_percent"].keys() == {"value", "low", "high"}

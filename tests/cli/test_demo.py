@@ -6,6 +6,7 @@ from typing import Any
 
 import numpy as np
 import pytest
+from scipy import stats
 
 from tests.cli.outputs import assert_comparison_keys, assert_figures, content
 from tests.command_line import Ended, run_process
@@ -97,7 +98,7 @@ def test_demo_measures_the_plucked_instrument_and_compares_its_stages(demo: tupl
     earlier, later = (folder / stage.file_stem for stage in PLUCKED_STAGES)
     assert not (earlier / "comparison.json").exists()
     assert_figures(later)
-    assert_comparison_keys(content(later / "comparison.json"))
+    assert_comparison_keys(content(later / "comparison.json"), ringing=True)
     assert "Finch, after the winter" in ended.out
 
 
@@ -120,10 +121,15 @@ def test_demo_finds_the_sustain_that_the_winter_took(demo: tuple[Ended, Path]) -
     # each end within the sixth of an octave over which the change dies away
     for found_hz, true_hz in ((region.low_hz, change.low_hz), (region.high_hz, change.high_hz)):
         assert abs(math.log2(found_hz / true_hz)) < change.edge_octaves
-    for partial in comparison.sustain.harmonics:
-        if partial.verdict in ("longer", "shorter"):
-            assert partial.verdict == "shorter"
-            assert true_sustain_factor(FINCH_AFTER_THE_WINTER, partial.freq_hz) < 0.8
+    called = [one for one in comparison.sustain.harmonics if one.verdict in ("longer", "shorter")]
+    false = [
+        one
+        for one in called
+        if one.verdict == "longer" or true_sustain_factor(FINCH_AFTER_THE_WINTER, one.freq_hz) > 0.99
+    ]
+    # one in twenty of the verdicts may be false on average (Benjamini & Hochberg 1995), so more than one may be here
+    assert len(false) <= stats.binom.ppf(0.999, len(called), 0.05)
+    assert len(called) - len(false) >= 14
     low, high = (
         np.array([getattr(point, name) for point in comparison.sustain.curve])
         for name in ("simultaneous_low", "simultaneous_high")

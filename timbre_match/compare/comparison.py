@@ -268,8 +268,8 @@ def _curve(grid_hz: Array, estimates: Estimates) -> tuple[CurvePoint, ...]:
     """The curve with its bands; where it is certain on which side of zero it lies, the bands end there.
 
     Whether a curve that is there is wholly inside its band, and whether there is one, are two questions, and the second
-    asks for less: where the curve is further off zero than playing alone would bring it anywhere, in all but four of
-    a hundred comparisons, its sign is known, and the simultaneous band, which need not cover both signs, ends at zero
+    asks for less: where the curve is further off zero than playing alone would bring it anywhere, in all but one of
+    twenty comparisons, its sign is known, and the simultaneous band, which need not cover both signs, ends at zero
     (Benjamini, Hochberg & Stark 1998, Confidence intervals with more power to determine the sign, *JASA* 93).
     """
     centre, sd = estimates.curve_db, estimates.curve_sd_db

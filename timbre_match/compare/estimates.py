@@ -13,11 +13,8 @@ from timbre_match.compare.model import Row, Solution
 
 Array = NDArray[np.float64]
 
-_PLAYED_DRAWS = 2000
-
-FALSE_CURVE_RATE = 0.04
-"""How often, as far as the model knows the playing, a curve is said to differ somewhere where nothing does. The rest up
-to one in twenty is left for what it does not know."""
+FALSE_CURVE_RATE = 0.05
+"""How often a curve is said to differ somewhere where nothing does, as far as the model knows the playing."""
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
@@ -31,7 +28,7 @@ class Estimates:
     curve_db, curve_sd_db : arrays, shape (g,)
     curve_significance : float
         How many of its standard deviations a curve must be off zero somewhere to differ from none at all: the playing
-        alone reaches that in four comparisons of a hundred.
+        alone reaches that in one comparison of twenty.
     harmonic_draws_db, curve_draws_db : arrays, shape (n_draws, n) and (n_draws, g)
         Joint draws of both.
     curve_at_harmonics_db : array, shape (n_draws, n)
@@ -88,8 +85,7 @@ def estimate(
     curve_part = slice(row.shared.curve_first, row.shared.curve_last)
     grid = np.column_stack([grid_octave, grid_smooth])
     reached = row.shared.matrix[:harmonics, curve_part]
-    draws, curve_draws, reached_draws = [], [], []
-    root_of_played = np.zeros((row.shared.group.size, row.shared.group.size))
+    draws, curve_draws, reached_draws, played_curves = [], [], [], []
     for solution in solutions:
         shared = _shared_draws(solution, rng, draws_per_solution)
         curve = shared[:, curve_part] @ grid.T
@@ -97,14 +93,11 @@ def estimate(
         curve_draws.append(curve - level)
         reached_draws.append(shared[:, curve_part] @ reached.T - level)
         draws.append(_harmonic_draws(solution, row, shared, rng)[:, :harmonics] - level)
-        root_of_played += _root_of_played(solution, row) / len(solutions)
+        played = _played_effects(solution, row, rng, draws_per_solution)[:, curve_part] @ grid.T
+        played_curves.append(played - reference_level(played, grid_loudness)[:, None])
     harmonic, curve = np.concatenate(draws), np.concatenate(curve_draws)
     curve_sd_db = np.std(curve, axis=0)
-    # The same playing moves the estimates of all solutions alike, and the curve is their mean.
-    played = rng.standard_normal((_PLAYED_DRAWS, len(root_of_played))) @ root_of_played
-    played_curve = played[:, curve_part] @ grid.T
-    played_curve -= reference_level(played_curve, grid_loudness)[:, None]
-    farthest = np.max(np.abs(played_curve) / curve_sd_db, axis=1)
+    farthest = np.max(np.abs(np.concatenate(played_curves)) / curve_sd_db, axis=1)
     mine = slice(harmonics)
     own_part = np.mean([(solution.shrinkage * solution.noise_variance)[mine] for solution in solutions], axis=0)
     return Estimates(
@@ -130,8 +123,8 @@ def _shared_draws(solution: Solution, rng: np.random.Generator, count: int) -> A
     return np.asarray(solution.shared + rng.standard_normal((count, solution.shared.size)) @ root.T)
 
 
-def _root_of_played(solution: Solution, row: Row) -> Array:
-    """Symmetric root of the covariance of what the shared effects are estimated to be where there is no body curve.
+def _played_effects(solution: Solution, row: Row, rng: np.random.Generator, count: int) -> Array:
+    """What the shared effects are estimated to be, shape (count, p), where there is playing and no body curve.
 
     With information F = C^-1 - V^-1 (C the posterior covariance, V the prior variances) the estimate is C r, and r has
     the covariance F + F V0 F, V0 being V without the curve's part (Robinson 1991, *Statistical Science* 6).
@@ -142,7 +135,8 @@ def _root_of_played(solution: Solution, row: Row) -> Array:
     played[row.shared.curve_first : row.shared.curve_last] = 0.0
     spread = covariance @ (information + information @ (played[:, None] * information)) @ covariance
     values, vectors = np.linalg.eigh(0.5 * (spread + spread.T))
-    return np.asarray((vectors * np.sqrt(np.maximum(values, 0.0))) @ vectors.T)
+    root = vectors * np.sqrt(np.maximum(values, 0.0))
+    return np.asarray(rng.standard_normal((count, values.size)) @ root.T)
 
 
 def _harmonic_draws(solution: Solution, row: Row, shared: Array, rng: np.random.Generator) -> Array:
