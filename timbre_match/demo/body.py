@@ -114,15 +114,22 @@ class Body:
         return total
 
 
+def spread_modes(
+    draws: Draws, between_hz: tuple[float, float], spacing_hz: float, spacing_share: float
+) -> NDArray[np.float64]:
+    """Draw the frequencies of a body's many upper modes, Hz: `spacing_hz` apart, or a share of their own frequency."""
+    places = [between_hz[0]]
+    while places[-1] < between_hz[1]:
+        # further apart where each mode is broad enough to reach its neighbours
+        step_hz = max(spacing_hz, spacing_share * places[-1])
+        places.append(places[-1] + step_hz * draws.between(0.6, 1.4))
+    return np.array(places)
+
+
 def violin_body() -> Body:
     """Build the body that every instrument of the workshop is modelled on; the same at each call."""
     draws = Draws(_BODY_SEED)
-    places = [_BAND_LOWEST_HZ]
-    while places[-1] < _BAND_HIGHEST_HZ:
-        # further apart where each mode is broad enough to reach its neighbours
-        spacing_hz = max(_BAND_SPACING_HZ, _BAND_SPACING_SHARE * places[-1])
-        places.append(places[-1] + spacing_hz * draws.between(0.6, 1.4))
-    band_hz = np.array(places)
+    band_hz = spread_modes(draws, (_BAND_LOWEST_HZ, _BAND_HIGHEST_HZ), _BAND_SPACING_HZ, _BAND_SPACING_SHARE)
     count = len(band_hz)
     band_q = 25.0 + 15.0 * draws.uniform(count)
     # neighbours of random sign: no long stretch in which all modes cancel between their peaks

@@ -14,7 +14,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from timbre_match.demo.body import Body
+from timbre_match.demo.body import Body, spread_modes
 from timbre_match.demo.draws import Draws
 
 _BODY_SEED = 2
@@ -69,11 +69,7 @@ class PluckedBody:
 def small_guitar_body() -> PluckedBody:
     """Build the small guitar's body; the same at each call."""
     draws = Draws(_BODY_SEED)
-    places = [_BAND_LOWEST_HZ]
-    while places[-1] < _BAND_HIGHEST_HZ:
-        spacing_hz = max(_BAND_SPACING_HZ, _BAND_SPACING_SHARE * places[-1])
-        places.append(places[-1] + spacing_hz * draws.between(0.6, 1.4))
-    band_hz = np.array(places)
+    band_hz = spread_modes(draws, (_BAND_LOWEST_HZ, _BAND_HIGHEST_HZ), _BAND_SPACING_HZ, _BAND_SPACING_SHARE)
     count = len(band_hz)
     band_q = 22.0 + 14.0 * draws.uniform(count)
     sign = np.where(draws.uniform(count) < 0.5, -1.0, 1.0)
